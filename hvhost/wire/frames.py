@@ -1,0 +1,427 @@
+"""Typed frames, and the one table from a line's first word to its class, its fields and their ranges.
+
+A body is ``verb field field ... [key=value ...]`` with single spaces.  The fields of a verb stand in a fixed order;
+optional ones follow as ``key=value`` in any order, unknown keys are skipped.  See PROTOCOL.md sections 3 to 8.
+"""
+
+import struct
+from binascii import Error as Base64Error
+from binascii import a2b_base64, b2a_base64
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+from hvhost.wire.settings import TIGHTENABLE
+from hvhost.words.errors import WireFault
+
+U32 = 0xFFFFFFFF
+I32 = 0x7FFFFFFF
+PAIRS_MAX = 64
+SNAP_PAIRS = 40  # pairs in one answer to `snap`
+
+
+# ---------------------------------------------------------------- host -> MCU
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Hello:
+    """Opens a session: 32-bit random session number, protocol version, lease in ms."""
+
+    n: int
+    session: int
+    version: int
+    lease_ms: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Info:
+    """Asks for one page of the greeting (0 identity, 1 converters, 2 timing, 3 state)."""
+
+    n: int
+    session: int
+    page: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Get:
+    """Asks for one page of the settings: ``settings.PAGE`` values in table order."""
+
+    n: int
+    session: int
+    page: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Put:
+    """Stages one setting; nothing changes until `Save`."""
+
+    n: int
+    session: int
+    key: str
+    value: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Save:
+    """Writes the staged settings whole to EEPROM if their checksum is this one (interlock open)."""
+
+    n: int
+    session: int
+    checksum: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Arm:
+    """Asks for permission to energise one run.
+
+    ``pause`` is (count, rest_ms, window_ms) or None for *latch*; ``tighter`` holds settings made stricter for this
+    arm only.
+    """
+
+    n: int
+    session: int
+    arm: int
+    tag: int
+    settings: int
+    event: int
+    pause: tuple[int, int, int] | None = None
+    tighter: Mapping[str, int] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Segment:
+    """Queues a segment: target words of both channels and the ticks to get there; ``arc`` only after a pause."""
+
+    n: int
+    session: int
+    v: int
+    i: int
+    ticks: int
+    arc: int | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Renew:
+    """Renews the lease by the index of the last sample judged (low 32 bits); never answered."""
+
+    session: int
+    index: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Lower:
+    """Asks for a ramp to zero and then a cut; ``n`` is a stop number."""
+
+    n: int
+    session: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ArcSeen:
+    """Tells that the host judged a breakdown at this sample index; ``n`` is a stop number."""
+
+    n: int
+    session: int
+    index: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Cut:
+    """Cuts now; needs no session; ``n`` is a stop number; ``rule`` 0 for an operator, else the HostRule."""
+
+    n: int
+    rule: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Reset:
+    """Clears the latch if ``causes`` is the whole latched set; ``grounded`` 1 declares 'grounded by hand'."""
+
+    n: int
+    session: int
+    causes: int
+    grounded: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Again:
+    """Asks for the events from this number on (the last 16 are kept)."""
+
+    n: int
+    session: int
+    event: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Snap:
+    """Asks for the part of the waiting snapshot that begins at this pair."""
+
+    n: int
+    session: int
+    offset: int
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Stored:
+    """Confirms that the snapshot with this id is safely stored."""
+
+    n: int
+    session: int
+    snapshot: int
+
+
+# ---------------------------------------------------------------- MCU -> host
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Ok:
+    """The answer to request (or stop) ``n``; ``words`` are the verb's positional results, ``pairs`` its options."""
+
+    n: int
+    verb: str
+    words: tuple[str, ...] = ()
+    pairs: Mapping[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Refusal:
+    """The error answer to request ``n``: a code of ``vocabulary.Err`` (kept as text: a newer MCU may know more)."""
+
+    n: int
+    verb: str
+    code: str
+
+
+@dataclass(frozen=True, slots=True)
+class Block:
+    """Up to 64 pairs of monitor codes with what the MCU did and saw at the first pair's tick."""
+
+    index: int  # of the first sample, 32 bit, wraps
+    tick: int  # of the first sample, 32 bit, wraps
+    v_word: int  # words applied at that tick
+    i_word: int
+    state: int  # McuState
+    latched: int  # 0 or 1
+    inputs: int  # Inputs
+    missed: int  # conversions missed since boot, 32 bit, wraps
+    event: int  # number of the last event
+    arc: int  # number of the last arc of this arm
+    codes: tuple[int, ...]  # v0, i0, v1, i1, ...
+
+    @property
+    def pairs(self) -> int:
+        """How many pairs the block holds."""
+        return len(self.codes) >> 1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class McuEvent:
+    """A numbered event with its tick and two integers whose meaning belongs to the kind."""
+
+    number: int
+    tick: int
+    kind: str
+    a: int
+    b: int
+
+
+type_of_pack = {"uu": ("H", "H"), "ss": ("h", "h"), "us": ("H", "h"), "su": ("h", "H")}
+
+
+def pack_codes(codes: tuple[int, ...], signs: str) -> bytes:
+    """Base64 of little-endian 16-bit pairs; ``signs`` says per channel whether codes are signed ('s') or not ('u')."""
+    v, i = type_of_pack[signs]
+    return b2a_base64(struct.pack(f"<{(v + i) * (len(codes) >> 1)}", *codes), newline=False)
+
+
+_UNPACK = {(signs, n): struct.Struct(f"<{(v + i) * n}") for signs, (v, i) in type_of_pack.items()
+           for n in range(PAIRS_MAX + 1)}
+
+
+def unpack_codes(text: bytes, signs: str, pairs: int) -> tuple[int, ...]:
+    """Return the codes of ``pairs`` pairs, or raise `WireFault`."""
+    try:
+        return _UNPACK[signs, pairs].unpack(a2b_base64(text, strict_mode=True))
+    except (Base64Error, struct.error, KeyError):
+        raise WireFault(f"base64 of {pairs} pairs", f"{len(text)} characters", "block") from None
+
+
+# ---------------------------------------------------------------- the codec
+
+
+def _integer(low: int, high: int) -> Callable[[str], int]:
+    def read(text: str) -> int:
+        digits = text[1:] if text[:1] == "-" else text
+        if not (digits.isascii() and digits.isdigit()) or len(digits) > 10 or text == "-0":
+            raise WireFault("a decimal integer", repr(text))
+        if digits[0] == "0" and len(digits) > 1:
+            raise WireFault("no leading zero", repr(text))
+        value = int(text)
+        if not low <= value <= high:
+            raise WireFault(f"{low} to {high}", text)
+        return value
+
+    return read
+
+
+def _hex(text: str) -> int:
+    if len(text) != 8 or not set(text) <= set("0123456789ABCDEF"):
+        raise WireFault("eight upper-case hexadecimal digits", repr(text))
+    return int(text, 16)
+
+
+def _word(text: str) -> str:
+    if not text.isascii() or not text.isalnum() or not text.islower():
+        raise WireFault("a lower-case word", repr(text))
+    return text
+
+
+u32, i32, u16, flag = _integer(0, U32), _integer(-I32 - 1, I32), _integer(0, 65535), _integer(0, 1)
+
+
+def _dec(value: Any) -> str:
+    return str(value)
+
+
+def _hex8(value: Any) -> str:
+    return f"{value:08X}"
+
+
+Kind = tuple[Callable[[str], Any], Callable[[Any], str]]
+NUMBER: Kind = (u32, _dec)
+SIGNED: Kind = (i32, _dec)
+CODE: Kind = (u16, _dec)
+FLAG: Kind = (flag, _dec)
+HEX8: Kind = (_hex, _hex8)
+WORD: Kind = (_word, _dec)
+
+
+@dataclass(frozen=True, slots=True)
+class Verb:
+    """How one request is written: its class and its positional fields in order."""
+
+    frame: type
+    fields: tuple[tuple[str, Kind], ...]
+
+
+_N: tuple[tuple[str, Kind], ...] = (("n", NUMBER), ("session", HEX8))
+
+REQUESTS: dict[str, Verb] = {
+    "hello": Verb(Hello, (*_N, ("version", NUMBER), ("lease_ms", NUMBER))),
+    "info": Verb(Info, (*_N, ("page", NUMBER))),
+    "get": Verb(Get, (*_N, ("page", NUMBER))),
+    "put": Verb(Put, (*_N, ("key", WORD), ("value", (_integer(-U32, U32), _dec)))),
+    "save": Verb(Save, (*_N, ("checksum", HEX8))),
+    "arm": Verb(Arm, (*_N, ("arm", NUMBER), ("tag", HEX8), ("settings", HEX8), ("event", NUMBER))),
+    "seg": Verb(Segment, (*_N, ("v", CODE), ("i", CODE), ("ticks", NUMBER))),
+    "renew": Verb(Renew, (("session", HEX8), ("index", NUMBER))),
+    "lower": Verb(Lower, _N),
+    "arc": Verb(ArcSeen, (*_N, ("index", NUMBER))),
+    "cut": Verb(Cut, (("n", NUMBER), ("rule", NUMBER))),
+    "reset": Verb(Reset, (*_N, ("causes", HEX8), ("grounded", FLAG))),
+    "again": Verb(Again, (*_N, ("event", NUMBER))),
+    "snap": Verb(Snap, (*_N, ("offset", NUMBER))),
+    "stored": Verb(Stored, (*_N, ("snapshot", NUMBER))),
+}
+VERB_OF: dict[type, str] = {verb.frame: word for word, verb in REQUESTS.items()}
+STOPS = frozenset({"cut", "lower", "arc"})
+
+Request = (Hello | Info | Get | Put | Save | Arm | Segment | Renew | Lower | ArcSeen | Cut | Reset | Again | Snap
+           | Stored)
+Received = Ok | Refusal | Block | McuEvent
+
+
+def encode_request(frame: Request) -> bytes:
+    """Return the body of a request."""
+    word = VERB_OF[type(frame)]
+    parts = [word, *(write(getattr(frame, name)) for name, (_, write) in REQUESTS[word].fields)]
+    if isinstance(frame, Arm):
+        if frame.pause is not None:
+            parts.append("pause=" + ",".join(map(str, frame.pause)))
+        parts += [f"{key}={value}" for key, value in frame.tighter.items()]
+    if isinstance(frame, Segment) and frame.arc is not None:
+        parts.append(f"arc={frame.arc}")
+    return " ".join(parts).encode("ascii")
+
+
+def split_body(body: bytes) -> tuple[str, list[str], dict[str, str]]:
+    """Return verb, positional words and ``key=value`` pairs of a body; malformed ones raise `WireFault`."""
+    verb, *rest = body.decode("ascii").split(" ")
+    words: list[str] = []
+    pairs: dict[str, str] = {}
+    for part in rest:
+        key, equals, value = part.partition("=")
+        if not equals and not pairs:
+            words.append(part)
+        elif not equals or not key or not value:
+            raise WireFault("fields, then key=value", repr(part), verb)
+        elif key in pairs:
+            raise WireFault("each key once", repr(key), verb)
+        else:
+            pairs[key] = value
+    return verb, words, pairs
+
+
+def decode_request(body: bytes) -> Request:
+    """Return the typed request, or raise `WireFault` (its ``where`` is the verb, 'unknown' when it is not ours)."""
+    verb, words, pairs = split_body(body)
+    if verb not in REQUESTS:
+        raise WireFault("a request of the table", repr(verb), "unknown")
+    spec = REQUESTS[verb]
+    if len(words) != len(spec.fields):
+        raise WireFault(f"{len(spec.fields)} fields", str(len(words)), verb)
+    values: dict[str, Any] = {name: read(text) for (name, (read, _)), text in zip(spec.fields, words, strict=True)}
+    if verb == "arm":
+        values["tighter"] = {key: u32(pairs[key]) for key in TIGHTENABLE if key in pairs}
+        if "pause" in pairs:
+            numbers = tuple(u32(text) for text in pairs["pause"].split(","))
+            if len(numbers) != 3:
+                raise WireFault("count,rest,window", pairs["pause"], verb)
+            values["pause"] = numbers
+    if verb == "seg" and "arc" in pairs:
+        values["arc"] = u32(pairs["arc"])
+    frame: Request = spec.frame(**values)
+    return frame
+
+
+def encode_block(block: Block, signs: str) -> bytes:
+    """Return the body of a block."""
+    return b"b %d %d %d %d %d %d %X %d %d %d %d %b" % (
+        block.index, block.tick, block.v_word, block.i_word, block.state, block.latched, block.inputs, block.missed,
+        block.event, block.arc, block.pairs, pack_codes(block.codes, signs))
+
+
+def decode_block(body: bytes, signs: str) -> Block:
+    """Return the block of a body that begins with ``b`` and a space, or raise `WireFault`; written for speed."""
+    try:
+        (_, index, tick, v_word, i_word, state, latched, inputs, missed, event, arc, pairs,
+         text) = body.split(b" ")[:13]
+        return Block(int(index), int(tick), int(v_word), int(i_word), int(state), int(latched), int(inputs, 16),
+                     int(missed), int(event), int(arc), unpack_codes(text, signs, int(pairs)))
+    except ValueError:
+        raise WireFault("a block", repr(body[:40].decode("ascii")), "block") from None
+
+
+def encode_answer(frame: Ok | Refusal | McuEvent) -> bytes:
+    """Return the body of an answer or event."""
+    if isinstance(frame, McuEvent):
+        return f"ev {frame.number} {frame.tick} {frame.kind} {frame.a} {frame.b}".encode("ascii")
+    if isinstance(frame, Refusal):
+        return f"err {frame.n} {frame.verb} {frame.code}".encode("ascii")
+    parts = ["ok", str(frame.n), frame.verb, *frame.words, *(f"{k}={v}" for k, v in frame.pairs.items())]
+    return " ".join(parts).encode("ascii")
+
+
+def decode_received(body: bytes, signs: str) -> Received:
+    """Return the typed frame of one body from the MCU, or raise `WireFault`."""
+    if body[:2] == b"b ":
+        return decode_block(body, signs)
+    verb, words, pairs = split_body(body)
+    if verb == "ok" and len(words) >= 2:
+        return Ok(n=u32(words[0]), verb=_word(words[1]), words=tuple(words[2:]), pairs=pairs)
+    if verb == "err" and len(words) == 3:
+        return Refusal(n=u32(words[0]), verb=_word(words[1]), code=_word(words[2]))
+    if verb == "ev" and len(words) == 5:
+        return McuEvent(number=u32(words[0]), tick=u32(words[1]), kind=_word(words[2]), a=i32(words[3]),
+                        b=i32(words[4]))
+    raise WireFault("ok, err, ev or b with their fields", repr(body[:40].decode("ascii")), "received line")
