@@ -1,0 +1,151 @@
+"""What the simulated plant is made of: one frozen table per part, two presets, and `key=value` changes.
+
+SI units inside.  The presets are benches of their own; `demo` and `small` match the two example bench files.
+"""
+
+from dataclasses import dataclass, field
+
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Dac:
+    """A unipolar converter that drives one programming input: code 0 is 0 V, the last code is ``full_v``."""
+
+    bits: int
+    full_v: float = 10.0
+
+    @property
+    def volts_per_code(self) -> float:
+        """Volts at the programming input per code."""
+        return self.full_v / ((1 << self.bits) - 1)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SupplyParams:
+    """The bench supply: ``v_full`` and ``i_full`` are what ``program_full_v`` at the programming inputs asks for."""
+
+    v_full: float
+    i_full: float
+    program_full_v: float = 10.0
+    program_tau_s: float = 2e-3  # RC of the programming inputs: the delay before the output follows
+    slew_v_per_s: float = 60e3  # fastest rise of the supply's own reference
+    output_f: float = 1.0e-9
+    bleed_ohm: float = 1.0e9
+    ripple_hz: float = 100.0
+    ripple_v: float = 0.5  # amplitude at no load
+    ripple_v_per_a: float = 1.5e3  # more with load
+    inhibit_s: float = 0.2e-3  # from the inhibit line to the output stage
+    clear_tau_s: float = 0.2e-3  # the clear input discharges the programming filter this fast
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Adc:
+    """One monitor converter: codes from ``low`` to ``high``, ``codes_per_v`` of the signal at its pin."""
+
+    bits: int
+    signed: bool
+    full_v: float = 10.0
+    offset_code: float = 0.0  # code that the bench's own zero gives (levels shifted for a unipolar converter)
+    noise_lsb: float = 0.7  # standard deviation
+
+    @property
+    def low(self) -> int:
+        """Lowest code."""
+        return -(1 << (self.bits - 1)) if self.signed else 0
+
+    @property
+    def high(self) -> int:
+        """Highest code."""
+        return (1 << (self.bits - 1)) - 1 if self.signed else (1 << self.bits) - 1
+
+    @property
+    def codes_per_v(self) -> float:
+        """Codes per volt: ``full_v`` is the highest code."""
+        return self.high / self.full_v
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ChainParams:
+    """The measuring chain: divider and shunt, their RC filters, clamp, errors and converters."""
+
+    polarity: int  # +1 or -1: sign of the output against ground
+    v_sign: int  # sign of the monitor signal for that output
+    i_sign: int
+    high_ohm: float  # divider, upper arm
+    low_ohm: float  # divider, lower arm
+    low_f: float  # capacitor across the lower arm
+    buffer_gain: float = 1.0  # amplifier behind the divider
+    shunt_ohm: float = 1e3
+    shunt_gain: float = 1.0
+    shunt_tau_s: float = 0.3e-3
+    clamp_v: float = 11.0
+    v_gain_error: float = 0.0
+    i_gain_error: float = 0.0
+    v_offset_v: float = 0.0  # at the converter's pin
+    i_offset_v: float = 0.0
+    v_adc: Adc
+    i_adc: Adc
+    at_specimen: bool = False  # behind the tip resistor
+    powered_after_cut: bool = True
+
+    @property
+    def ratio(self) -> float:
+        """Divider ratio (R1 + R2) / R2."""
+        return (self.high_ohm + self.low_ohm) / self.low_ohm
+
+    @property
+    def tau_s(self) -> float:
+        """tau = (R1 || R2) C."""
+        return self.high_ohm * self.low_ohm / (self.high_ohm + self.low_ohm) * self.low_f
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SpecimenParams:
+    """The specimen: capacitance, insulation, absorption branches (R, C), and how it breaks down."""
+
+    capacitance_f: float = 0.5e-9
+    insulation_ohm: float = 50e9
+    branches: tuple[tuple[float, float], ...] = ((10e9, 0.1e-9), (60e9, 0.15e-9), (300e9, 0.2e-9))
+    strength_v: float = 17.5e3  # scale of the Weibull distribution of the breakdown voltage
+    strength_shape: float = 25.0
+    strength_least_v: float = 0.0  # the distribution's location: nothing breaks down below
+    lag_s: float = 0.5  # mean statistical lag at exactly the drawn strength
+    lag_exponent: float = 60.0  # the lag falls with (V / strength) to this power
+    self_restoring: bool = False
+    recovery_s: float = 20e-3  # a gap's strength comes back with this time constant
+    arc_v: float = 60.0  # burning voltage
+    hold_a: float = 0.8e-3  # below this current an arc goes out
+    quench_s: float = 0.1e-3  # mean time it takes to go out
+    punctured_ohm: float = 2e6  # insulation after a puncture
+    punctured_strength: float = 0.05  # part of the strength that a puncture leaves
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ContactParams:
+    """Relay, hard-wired contactor, arm input and what the wiring has."""
+
+    relay_operate_s: float = 8e-3
+    relay_release_s: float = 5e-3
+    contactor_release_s: float = 20e-3
+    bounce_s: float = 3e-3
+    interlock_latches: bool = True
+    arm_input: bool = True
+    ground_ohm: float = 100e3  # resistor of the grounding device
+    auxiliary_back_s: float = 50e-3
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlantParams:
+    """The whole plant."""
+
+    name: str
+    v_dac: Dac
+    i_dac: Dac
+    supply: SupplyParams
+    chain: ChainParams
+    cable_f: float = 0.5e-9
+    tip_ohm: float = 20e3
+    specimen: SpecimenParams = field(default_factory=SpecimenParams)
+    contacts: ContactParams = field(default_factory=ContactParams)
+    panel_v: float = 1e9  # front panel's own set-points; the lower of panel and programming wins
+    panel_a: float = 1e9
