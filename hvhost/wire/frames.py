@@ -27,8 +27,8 @@ SNAP_PAIRS = 40  # pairs in one answer to `snap`
 class Hello:
     """Opens a session: 32-bit random session number, protocol version, lease in ms."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     version: int
     lease_ms: int
 
@@ -37,8 +37,8 @@ class Hello:
 class Info:
     """Asks for one page of the greeting (0 identity, 1 converters, 2 timing, 3 state)."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     page: int
 
 
@@ -46,8 +46,8 @@ class Info:
 class Get:
     """Asks for one page of the settings: ``settings.PAGE`` values in table order."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     page: int
 
 
@@ -55,8 +55,8 @@ class Get:
 class Put:
     """Stages one setting; nothing changes until `Save`."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     key: str
     value: int
 
@@ -65,8 +65,8 @@ class Put:
 class Save:
     """Writes the staged settings whole to EEPROM if their checksum is this one (interlock open)."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     checksum: int
 
 
@@ -78,8 +78,8 @@ class Arm:
     arm only.
     """
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     arm: int
     tag: int
     settings: int
@@ -92,8 +92,8 @@ class Arm:
 class Segment:
     """Queues a segment: target words of both channels and the ticks to get there; ``arc`` only after a pause."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     v: int
     i: int
     ticks: int
@@ -104,7 +104,7 @@ class Segment:
 class Renew:
     """Renews the lease by the index of the last sample judged (low 32 bits); never answered."""
 
-    session: int
+    session: int = 0
     index: int
 
 
@@ -112,16 +112,16 @@ class Renew:
 class Lower:
     """Asks for a ramp to zero and then a cut; ``n`` is a stop number."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ArcSeen:
     """Tells that the host judged a breakdown at this sample index; ``n`` is a stop number."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     index: int
 
 
@@ -129,7 +129,7 @@ class ArcSeen:
 class Cut:
     """Cuts now; needs no session; ``n`` is a stop number; ``rule`` 0 for an operator, else the HostRule."""
 
-    n: int
+    n: int = 0
     rule: int
 
 
@@ -137,8 +137,8 @@ class Cut:
 class Reset:
     """Clears the latch if ``causes`` is the whole latched set; ``grounded`` 1 declares 'grounded by hand'."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     causes: int
     grounded: int
 
@@ -147,8 +147,8 @@ class Reset:
 class Again:
     """Asks for the events from this number on (the last 16 are kept)."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     event: int
 
 
@@ -156,8 +156,8 @@ class Again:
 class Snap:
     """Asks for the part of the waiting snapshot that begins at this pair."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     offset: int
 
 
@@ -165,8 +165,8 @@ class Snap:
 class Stored:
     """Confirms that the snapshot with this id is safely stored."""
 
-    n: int
-    session: int
+    n: int = 0
+    session: int = 0
     snapshot: int
 
 
@@ -326,8 +326,8 @@ REQUESTS: dict[str, Verb] = {
 VERB_OF: dict[type, str] = {verb.frame: word for word, verb in REQUESTS.items()}
 STOPS = frozenset({"cut", "lower", "arc"})
 
-Request = (Hello | Info | Get | Put | Save | Arm | Segment | Renew | Lower | ArcSeen | Cut | Reset | Again | Snap
-           | Stored)
+Asked = Hello | Info | Get | Put | Save | Arm | Segment | Reset | Again | Snap | Stored  # numbered, one outstanding
+Request = Asked | Renew | Lower | ArcSeen | Cut
 Received = Ok | Refusal | Block | McuEvent
 
 

@@ -1,0 +1,419 @@
+"""The host's end of the line: a pure machine, bytes and time in, events and bytes out.
+
+One `Link` is one session.  It greets by itself (hello, four information pages, the settings), then carries requests
+one at a time, renewals of the lease, and the three stops.  When it tells `Ended`, the caller makes another one with
+another session number and ``first_stop=old.next_stop``; a cut still leaves from an ended link.
+
+The order of use in a read callback is: ``receive(data, now_s)``, judge each `BlockIn`, ``cut``/``lower``/``arc`` or
+``renew``, write ``take_output(now_s)``; and at ``deadline()``: ``timer(now_s)``, write ``take_output(now_s)``.
+Where the port took only a part of the output, ``unsent(rest)`` hands the rest back.
+
+Nothing here waits, logs or opens anything.
+"""
+
+from dataclasses import replace
+
+from hvhost.wire.events import (
+    Answered,
+    BlockIn,
+    CutConfirmed,
+    CutState,
+    Dropped,
+    DropWhy,
+    Ended,
+    EndWhy,
+    Escalated,
+    EventIn,
+    Fault,
+    GarbledIn,
+    Greeted,
+    LinkEvent,
+    LinkState,
+    Silent,
+    StopAnswered,
+)
+from hvhost.wire.frames import (
+    STOPS,
+    VERB_OF,
+    Arm,
+    Asked,
+    Block,
+    Get,
+    Hello,
+    Info,
+    McuEvent,
+    Ok,
+    Refusal,
+    Renew,
+    Segment,
+    decode_block,
+    decode_received,
+    decode_request,
+    encode_request,
+)
+from hvhost.wire.greeting import INFO_PAGES, Greeting, info_of, read_page, read_settings_page, settings_of_pages
+from hvhost.wire.lines import Garbled, LineReader, seal
+from hvhost.wire.requests import Requests, Waiting
+from hvhost.wire.settings import PAGES, Settings
+from hvhost.wire.stops import WRAP, Stops
+from hvhost.wire.vocabulary import PROTOCOL_VERSION, Err, EventKind, Fitted, HostRule
+from hvhost.words.errors import CommandRefused, WireFault
+
+__all__ = [
+    "Answered", "BlockIn", "CutConfirmed", "CutState", "DropWhy", "Dropped", "EndWhy", "Ended", "Escalated",
+    "EventIn", "Fault", "GarbledIn", "Greeted", "Link", "LinkEvent", "LinkState", "Silent", "StopAnswered",
+]
+
+HELLO_TRIES = 8  # with 250 ms each: a board that starts when its port is opened has 2 s
+HELLO_BIT = 1 << 31  # the number of a hello has this bit, so that it is never the number of a later request
+RENEWALS_PER_LEASE = 8
+
+
+class Link:
+    """One session with one MCU; see the module's docstring for the order of use."""
+
+    __slots__ = ("_blocks_before", "_ended_text", "_fields", "_fitted", "_garbled", "_good", "_heard_s", "_hello",
+                 "_last_s", "_notices", "_reader", "_renewal", "_renewed_s", "_requests", "_silent", "_stops", "_tail",
+                 "_ticket", "_torn", "_values", "greeting", "last_event", "lease_s", "session", "state")
+
+    def __init__(self, now_s: float, *, session: int, lease_ms: int, first_stop: int = 1) -> None:
+        if not 1 <= session < WRAP:
+            raise CommandRefused("a session number from 1 to 4294967295", str(session), "link")
+        self.session, self.lease_s = session, lease_ms / 1000
+        self.state = LinkState.GREETING
+        self.greeting: Greeting | None = None
+        self.last_event = 0  # highest event number seen
+        self._reader, self._stops, self._requests = LineReader(), Stops(session, first_stop), Requests(session)
+        self._hello = Hello(version=PROTOCOL_VERSION, lease_ms=lease_ms)
+        self._requests.hello(session | HELLO_BIT, self._hello, HELLO_TRIES)
+        self._fields: dict[str, str | int] = {}
+        self._values: tuple[int, ...] = ()
+        self._fitted: Fitted | None = None
+        self._notices: list[LinkEvent] = []
+        self._good = self._garbled = self._blocks_before = self._ticket = 0
+        self._heard_s = self._last_s = now_s
+        self._renewed_s: float | None = None
+        self._renewal = self._tail = b""
+        self._silent = self._torn = False
+        self._ended_text = ""
+
+    # ------------------------------------------------------------ what the caller may ask
+
+    @property
+    def cut_state(self) -> CutState:
+        """How far the last cut has got: none, sent, answered, confirmed."""
+        return self._stops.cut_state
+
+    @property
+    def stop_confirmed(self) -> bool:
+        """True when the last cut is confirmed (S7)."""
+        return self._stops.cut_state is CutState.CONFIRMED
+
+    @property
+    def stopping(self) -> bool:
+        """True while a stop waits for its answer or a cut for its confirmation."""
+        return self._stops.cutting or self._stops.waiting
+
+    @property
+    def next_stop(self) -> int:
+        """The ``first_stop`` of the link that follows this one."""
+        return self._stops.next_number
+
+    @property
+    def waiting_requests(self) -> int:
+        """Requests that wait or are outstanding."""
+        return len(self._requests.waiting) + (self._requests.out is not None)
+
+    @property
+    def counters(self) -> dict[str, int]:
+        """Good lines, garbled lines, and blocks that came before the greeting told how to read them."""
+        return {"good": self._good, "garbled": self._garbled, "blocks_before_greeting": self._blocks_before}
+
+    # ------------------------------------------------------------ bytes in
+
+    def receive(self, data: bytes, now_s: float) -> list[LinkEvent]:
+        """Take bytes from the port and return what they say, in order."""
+        events = self._begin(now_s)
+        for body in self._reader.feed(data):
+            if isinstance(body, Garbled):
+                self._garbled += 1
+                events.append(GarbledIn(body))
+                continue
+            self._good += 1
+            self._heard_s, self._silent = now_s, False
+            greeting = self.greeting
+            if body[:2] == b"b ":
+                if greeting is None:
+                    self._blocks_before += 1
+                    continue
+                try:
+                    block = decode_block(body, greeting.info.signs)
+                except WireFault as fault:
+                    events.append(Fault(str(fault)))
+                    continue
+                events.append(BlockIn(block))
+                if self._stops.cut_state is CutState.ANSWERED and self._stops.look(block, self._fitted):
+                    events.append(CutConfirmed(self._stops.cut_number))
+            else:
+                self._other(body, now_s, events)
+        return events
+
+    def _other(self, body: bytes, now_s: float, events: list[LinkEvent]) -> None:
+        try:
+            frame = decode_received(body, "uu")
+        except WireFault as fault:
+            events.append(Fault(str(fault)))
+            return
+        if isinstance(frame, McuEvent):
+            self._event(frame, events)
+        elif not isinstance(frame, Block):
+            if frame.verb in STOPS:
+                self._stop_answer(frame, now_s, events)
+            else:
+                self._answer(frame, events)
+
+    def _event(self, event: McuEvent, events: list[LinkEvent]) -> None:
+        events.append(EventIn(event))
+        self._stops.event(event)
+        fresh = event.number > self.last_event
+        self.last_event = max(self.last_event, event.number)
+        greeting = self.greeting
+        if greeting is None or self.state is not LinkState.GREETED:
+            return
+        if event.kind == EventKind.BOOT and event.b % WRAP != greeting.info.boot:
+            self._end(EndWhy.REBOOTED, f"boot counter {event.b % WRAP}, was {greeting.info.boot}", events)
+        elif event.kind == EventKind.SESSION and fresh and event.a % WRAP != self.session:
+            self._end(EndWhy.SESSION, f"session {event.a % WRAP:08X} was opened", events)
+
+    def _stop_answer(self, frame: Ok | Refusal, now_s: float, events: list[LinkEvent]) -> None:
+        if not self._stops.answer(frame):
+            return  # the answer to a repeat, or to a stop that a cut has overtaken
+        events.append(StopAnswered(frame.verb, frame.n, frame))
+        if isinstance(frame, Refusal) and frame.verb != "cut":
+            events.append(Escalated(frame.verb, frame.n, self.cut(HostRule.UNCONFIRMED, now_s)))
+            self._flush_notices(events)
+
+    def _answer(self, frame: Ok | Refusal, events: list[LinkEvent]) -> None:
+        done = self._requests.answer(frame)
+        if done is None:
+            if not self._requests.expected(frame):
+                events.append(Fault(f"answer to a request that was not made: {frame.verb} {frame.n}"))
+            return
+        if done.ticket:
+            events.append(Answered(done.ticket, done.frame, frame))
+        else:
+            self._greet(done, frame, events)
+        if isinstance(frame, Refusal) and self.state is not LinkState.ENDED:
+            if frame.code == Err.SESSION:
+                self._end(EndWhy.SESSION, "the MCU does not know this session", events)
+            elif frame.code == Err.NUMBER:
+                self._end(EndWhy.NUMBER, f"request {frame.n} refused", events)
+
+    # ------------------------------------------------------------ the greeting
+
+    def _greet(self, done: Waiting, answer: Ok | Refusal, events: list[LinkEvent]) -> None:
+        if isinstance(answer, Refusal):
+            why = EndWhy.VERSION if answer.code == Err.VERSION else EndWhy.REFUSED
+            self._end(why, f"{answer.verb}: {answer.code}", events)
+            return
+        try:
+            self._greet_step(done, answer, events)
+        except WireFault as fault:
+            self._end(EndWhy.MALFORMED, str(fault), events)
+
+    def _greet_step(self, done: Waiting, answer: Ok, events: list[LinkEvent]) -> None:
+        frame, requests = done.frame, self._requests
+        if isinstance(frame, Hello):
+            if answer.words[:1] != (str(PROTOCOL_VERSION),):
+                self._end(EndWhy.VERSION, f"expected {PROTOCOL_VERSION}, found {' '.join(answer.words)}", events)
+                return
+            if answer.words[1:2] != (str(frame.lease_ms),):
+                raise WireFault(f"a lease of {frame.lease_ms} ms", " ".join(answer.words[1:]), "hello")
+            requests.restart()
+            for page in range(INFO_PAGES):
+                requests.add(0, Info(page=page))
+        elif isinstance(frame, Info):
+            self._fields |= read_page(answer)
+            if answer.words != (str(frame.page),):
+                raise WireFault(f"page {frame.page}", answer.words[0], "info")
+            if frame.page == INFO_PAGES - 1:
+                self._after_info(events)
+        elif isinstance(frame, Get):
+            self._values += read_settings_page(answer, frame.page)
+            if frame.page == PAGES - 1:
+                self._after_settings(events)
+
+    def _after_info(self, events: list[LinkEvent]) -> None:
+        if int(self._fields["proto"]) != PROTOCOL_VERSION:
+            self._end(EndWhy.VERSION, f"expected {PROTOCOL_VERSION}, found {self._fields['proto']}", events)
+        elif self._fields["blank"]:
+            self._greeted(None, "the settings are blank or damaged", events)
+        else:
+            for page in range(PAGES):
+                self._requests.add(0, Get(page=page))
+
+    def _after_settings(self, events: list[LinkEvent]) -> None:
+        try:
+            settings = settings_of_pages(self._values, int(self._fields["settings"]))
+        except WireFault as fault:
+            events.append(Fault(str(fault)))
+            self._greeted(None, str(fault), events)
+        else:
+            self._greeted(settings, "", events)
+
+    def _greeted(self, settings: Settings | None, why_none: str, events: list[LinkEvent]) -> None:
+        greeting = Greeting(session=self.session, lease_s=self.lease_s, info=info_of(self._fields), settings=settings,
+                            why_none=why_none)
+        self.greeting, self._fitted, self.state = greeting, greeting.fitted, LinkState.GREETED
+        self.last_event = max(self.last_event, greeting.info.event)
+        events.append(Greeted(greeting))
+
+    # ------------------------------------------------------------ requests and renewals
+
+    def request(self, frame: Asked) -> int:
+        """Queue a request (its ``n`` and ``session`` are filled in here); return its ticket.
+
+        Raises `CommandRefused`: not greeted, ended, queue full, a field out of range, or an arm or segment while a
+        stop is under way.  Each ticket comes back once, as `Answered` or as `Dropped`.
+        """
+        verb = VERB_OF[type(frame)]
+        if isinstance(frame, Hello):
+            raise CommandRefused("any request but hello, which opens another session", verb, "link", "make a new link")
+        if self.state is not LinkState.GREETED:
+            raise CommandRefused("a greeted link", f"{self.state} {self._ended_text}".rstrip(), "link", "relink")
+        if self.stopping and isinstance(frame, Arm | Segment):
+            raise CommandRefused("no stop under way", f"cut {self.cut_state}" if self._stops.cutting else "a stop",
+                                 verb, "wait until the stop is answered and a cut confirmed")
+        try:
+            whole = replace(frame, session=self.session)
+            if decode_request(encode_request(whole)) != whole:
+                raise WireFault("fields that the grammar can carry", repr(frame), verb)
+        except WireFault as fault:
+            raise CommandRefused(fault.expected, fault.found, verb) from None
+        self._ticket += 1
+        self._requests.add(self._ticket, frame)
+        return self._ticket
+
+    def renew(self, index: int, now_s: float) -> bool:
+        """Renew the lease by the last sample judged; only the protective chain may call this, after it judged.
+
+        False where nothing is sent: not greeted, a cut not yet confirmed, or sooner than lease/8 after the last one.
+        """
+        if self.state is not LinkState.GREETED or self._stops.cutting or self._tail:
+            return False
+        if self._renewed_s is not None and now_s - self._renewed_s < self.lease_s / RENEWALS_PER_LEASE:
+            return False
+        self._renewed_s = now_s
+        self._renewal = seal(encode_request(Renew(session=self.session, index=index % WRAP)))
+        return True
+
+    # ------------------------------------------------------------ stops
+
+    def cut(self, rule: int, now_s: float) -> int:
+        """Decide to cut (``rule`` 0 for an operator, else a `HostRule`); works in every state; returns its number."""
+        number = self._stops.cut(rule, now_s)
+        self._renewal = b""
+        self._drop(DropWhy.STOP)
+        return number
+
+    def lower(self, now_s: float) -> int:
+        """Decide to lower; where no session is open it is a cut; returns its number."""
+        if self.state is not LinkState.GREETED:
+            return self.cut(HostRule.OPERATOR, now_s)
+        number = self._stops.lower(now_s)
+        self._drop(DropWhy.STOP)
+        return number
+
+    def arc(self, index: int, now_s: float) -> int:
+        """Tell of a breakdown judged at this sample index; where no session is open it is a cut; returns its number."""
+        if self.state is not LinkState.GREETED:
+            return self.cut(HostRule.BREAKDOWN, now_s)
+        number = self._stops.arc(index, now_s)
+        self._drop(DropWhy.STOP)
+        return number
+
+    def _drop(self, why: DropWhy) -> None:
+        gone = self._requests.drop(all_of_them=why is DropWhy.ENDED)
+        self._notices += [Dropped(one.ticket, one.frame, why, one.sent) for one in gone if one.ticket]
+
+    # ------------------------------------------------------------ time
+
+    def timer(self, now_s: float) -> list[LinkEvent]:
+        """Do what is due by time alone and return what it says."""
+        events = self._begin(now_s)
+        late = self._stops.overdue(now_s)
+        if late is not None:
+            events.append(Escalated(*late, self.cut(HostRule.UNCONFIRMED, now_s)))
+        gone = self._requests.expired(now_s)
+        if gone is not None and gone.ticket:
+            events.append(Dropped(gone.ticket, gone.frame, DropWhy.UNANSWERED, True))
+        elif gone is not None and self.state is LinkState.GREETING:
+            self._no_greeting(gone, events)
+        if self.state is LinkState.GREETED and not self._silent and now_s - self._heard_s >= self.lease_s:
+            self._silent = True
+            events.append(Silent(now_s - self._heard_s))
+        self._flush_notices(events)
+        return events
+
+    def _no_greeting(self, gone: Waiting, events: list[LinkEvent]) -> None:
+        if self._garbled and not self._good:
+            self._end(EndWhy.NOT_OURS, f"{self._garbled} lines, none of them in this protocol", events)
+        else:
+            self._end(EndWhy.SILENT, f"no answer to {VERB_OF[type(gone.frame)]} after {gone.tries} tries", events)
+
+    def deadline(self) -> float | None:
+        """When `timer` and `take_output` next have something to do without new bytes."""
+        times = [self._stops.deadline()]
+        if self.state is not LinkState.ENDED:
+            times.append(self._requests.deadline(self._last_s))
+        if self.state is LinkState.GREETED and not self._silent:
+            times.append(self._heard_s + self.lease_s)
+        if self._renewal or self._tail:
+            times.append(self._last_s)
+        return min((t for t in times if t is not None), default=None)
+
+    def _begin(self, now_s: float) -> list[LinkEvent]:
+        """Note the time; after a stall longer than the lease no arm, segment or half-sent line may leave any more."""
+        if now_s - self._last_s > self.lease_s and self.state is LinkState.GREETED:
+            self._drop(DropWhy.STALL)
+            self._renewal = b""
+            self._torn, self._tail = self._torn or bool(self._tail), b""
+        self._last_s = now_s
+        events: list[LinkEvent] = []
+        if self._notices:
+            self._flush_notices(events)
+        return events
+
+    def _flush_notices(self, events: list[LinkEvent]) -> None:
+        events += self._notices
+        self._notices = []
+
+    def _end(self, why: EndWhy, text: str, events: list[LinkEvent]) -> None:
+        self.state, self._ended_text, self._renewal = LinkState.ENDED, str(why), b""
+        self._drop(DropWhy.ENDED)
+        self._flush_notices(events)
+        events.append(Ended(why, text))
+
+    # ------------------------------------------------------------ bytes out
+
+    def take_output(self, now_s: float) -> bytes:
+        """Return all that is due now, stops first; what the port does not take comes back through `unsent`."""
+        if now_s - self._last_s > self.lease_s:
+            self._notices = self._begin(now_s)
+        out = self._stops.due(now_s)
+        if out:
+            self._tail, self._torn = b"", False  # a stop begins with LF and waits behind nothing
+        elif self._tail:
+            out, self._tail = self._tail, b""
+            return out
+        elif self._torn:
+            out, self._torn = b"\n", False
+        if self._renewal:
+            out, self._renewal = out + self._renewal, b""
+        if self.state is not LinkState.ENDED:
+            out += self._requests.due(now_s)
+        return out
+
+    def unsent(self, rest: bytes) -> None:
+        """Take back what the port did not accept; it leaves before anything new, but never before a stop."""
+        self._tail = rest
