@@ -271,7 +271,7 @@ class Snapshot:
 
     def to_json(self) -> dict[str, Any]:
         """Return plain values; not-finite numbers become None."""
-        return {field.name: _plain(getattr(self, field.name)) for field in fields(self)}
+        return {field.name: plain(getattr(self, field.name)) for field in fields(self)}
 
     @classmethod
     def from_json(cls, data: object) -> Self:
@@ -285,15 +285,16 @@ def _hints(kind: type) -> dict[str, Any]:
     return typing.get_type_hints(kind)
 
 
-def _plain(value: Any) -> Any:
+def plain(value: Any) -> Any:
+    """Return a field's value as plain JSON values; not-finite numbers become None."""
     if isinstance(value, StrEnum):
         return str(value)
     if isinstance(value, float):
         return value if math.isfinite(value) else None
     if isinstance(value, tuple):
-        return [_plain(item) for item in value]
+        return [plain(item) for item in value]
     if is_dataclass(value):
-        return {field.name: _plain(getattr(value, field.name)) for field in fields(value)}
+        return {field.name: plain(getattr(value, field.name)) for field in fields(value)}
     return value
 
 
