@@ -6,9 +6,9 @@ from hvhost.cli import exits
 from hvhost.cli.stopping import stop_all
 
 HELP = "cut the output at once, by every means the bench has"
-ABOUT = """Cuts at once: inhibit, clear, zero words, power relay - whichever the bench has.  It needs no seat, waits behind
-nothing, and is confirmed only by the board's answer and a later block with every read-back in its cut position.
-The emergency switching off does not depend on it.
+ABOUT = """Cuts at once: inhibit, clear, zero words, power relay - whichever the bench has.  It needs no seat, waits
+behind nothing, and is confirmed only by the board's answer and a later block with every read-back in its cut
+position.  The emergency switching off does not depend on it.
 Without --socket it goes to every bench whose daemon runs here."""
 
 

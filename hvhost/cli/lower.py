@@ -6,8 +6,8 @@ from hvhost.cli import exits
 from hvhost.cli.stopping import stop_all
 
 HELP = "ramp to zero at the down-slew, then cut"
-ABOUT = """Ramps the output to zero at the bench's down-slew and then cuts (stop category 1 of IEC 60204-1 where the cut removes
-power).  It is no emergency stop, needs no seat, and nothing stops it but a cut.
+ABOUT = """Ramps the output to zero at the bench's down-slew and then cuts (stop category 1 of IEC 60204-1 where the
+cut removes power).  It is no emergency stop, needs no seat, and nothing stops it but a cut.
 Without --socket it goes to every bench whose daemon runs here."""
 
 

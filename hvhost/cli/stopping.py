@@ -38,7 +38,7 @@ def _stop_one(verb: str, path: str, as_json: bool) -> int:
             answer = bench.call(verb)
             stop = _confirmation(bench) if verb == "cut" else ""
     except HvhostError as fault:
-        advice = f"{fault}\n{NOT_CONFIRMED}" if verb == "cut" else f"{fault}\nnot lowered"
+        advice = f"{fault}\n{NOT_CONFIRMED}" if verb == "cut" else f"{fault}\nnot lowered: if in doubt use the emergency switching off"
         return _tell(verb, path, {"error": str(fault)}, advice, fault.exit_code, as_json)
     text = answer.get("text", "") if isinstance(answer, dict) else str(answer or "")
     words = "; ".join(part for part in (text or f"{verb} taken", stop) if part)

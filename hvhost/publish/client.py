@@ -36,7 +36,7 @@ class Client:
         self._buffer = bytearray()
         self._searched = 0
         self._next_id = 1
-        self._notifications: "list[dict[str, Any]]" = []
+        self._notifications: list[dict[str, Any]] = []
 
     @classmethod
     def connect(cls, path: str, timeout_s: float = CONNECT_S) -> "Self":
@@ -161,15 +161,17 @@ def _error(error: "dict[str, Any]") -> HvhostError:
     message = str(error.get("message", "no reason given"))
     if not isinstance(data, dict) or "kind" not in data:
         return CommandRefused(message)
-    parts = [str(data.get(name, "")) for name in ("expected", "found", "where", "remedy")]
+    expected, found, where, remedy = (str(data.get(name, "")) for name in ("expected", "found", "where", "remedy"))
     if data["kind"] == "FileFault":
-        return FileFault(*parts, findings=tuple(data.get("findings", ())))
-    return _KINDS.get(str(data["kind"]), CommandRefused)(*parts)
+        return FileFault(expected, found, where, remedy, tuple(data.get("findings", ())))
+    return _KINDS.get(str(data["kind"]), CommandRefused)(expected, found, where, remedy)
 
 
 def _why(fault: OSError) -> str:
     if isinstance(fault, TimeoutError):
         return "no answer in time"
+    if isinstance(fault, FileNotFoundError | ConnectionRefusedError):
+        return "none"
     return os.strerror(fault.errno) if fault.errno else str(fault)
 
 
