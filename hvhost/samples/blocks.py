@@ -12,6 +12,8 @@ from typing import Protocol
 from hvhost.wire.frames import Block
 from hvhost.wire.settings import Settings
 
+FAR = 1 << 40  # beyond every code
+
 
 class Flags(IntFlag):
     """What is odd about a block; the pairs that are meant are found again by `Orientation`."""
@@ -32,9 +34,9 @@ class ConverterInfo(Protocol):
     @property
     def signs(self) -> str: ...
     @property
-    def vbits(self) -> int: ...
+    def v_bits(self) -> int: ...
     @property
-    def ibits(self) -> int: ...
+    def i_bits(self) -> int: ...
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -55,8 +57,28 @@ class Orientation:
         """Derive the orientation from the settings in force and the greeting's converter page."""
         return cls(v_sign=1 if settings["vmap"] >= 0 else -1, v_zero=settings["vzero"],
                    i_sign=1 if settings["imap"] >= 0 else -1, i_zero=settings["izero"],
-                   v_limits=raw_limits(info.signs[0], info.vbits), i_limits=raw_limits(info.signs[1], info.ibits),
+                   v_limits=raw_limits(info.signs[0], info.v_bits), i_limits=raw_limits(info.signs[1], info.i_bits),
                    v_band=settings["zeroband"], i_band=settings["zeroband"])
+
+    def raw_bounds(self, *, voltage: bool) -> tuple[int, int, int, int]:
+        """Return (low, high, reversed_low, reversed_high) in raw codes of one channel.
+
+        Codes at or beyond ``low`` and ``high`` stand at the converter's limit; codes below ``reversed_low`` or above
+        ``reversed_high`` are reversed.  An end of the converter inside the zero band is no limit: that is where such
+        a chain reads zero (it cannot show a reversed readback at all, which the bench review says).
+        """
+        sign, zero, band = (self.v_sign, self.v_zero, self.v_band) if voltage else (
+            self.i_sign, self.i_zero, self.i_band)
+        low, high = self.v_limits if voltage else self.i_limits
+        low = low if abs(low - zero) > band else low - 1
+        high = high if abs(high - zero) > band else high + 1
+        return (low, high, zero - band, FAR) if sign == 1 else (low, high, -FAR, zero + band)
+
+    def oriented_limits(self, *, voltage: bool) -> tuple[int, int]:
+        """Return the converter's limits of one channel as oriented codes, low and high (see `raw_bounds`)."""
+        low, high, _, _ = self.raw_bounds(voltage=voltage)
+        sign, zero = (self.v_sign, self.v_zero) if voltage else (self.i_sign, self.i_zero)
+        return (low - zero, high - zero) if sign == 1 else (zero - high, zero - low)
 
 
 def raw_limits(sign: str, bits: int) -> tuple[int, int]:
