@@ -6,7 +6,6 @@ SI units inside.  The presets are benches of their own; `demo` and `small` match
 from dataclasses import dataclass, field
 
 
-
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Dac:
     """A unipolar converter that drives one programming input: code 0 is 0 V, the last code is ``full_v``."""
@@ -149,3 +148,27 @@ class PlantParams:
     contacts: ContactParams = field(default_factory=ContactParams)
     panel_v: float = 1e9  # front panel's own set-points; the lower of panel and programming wins
     panel_a: float = 1e9
+
+
+def demo() -> PlantParams:
+    """0-25 kV, 4 mA, positive, 16-bit signed monitors, 1 GΩ divider: 10 V at 25 kV and at 10 mA, full at 32767."""
+    return PlantParams(
+        name="demo", v_dac=Dac(bits=16), i_dac=Dac(bits=16),
+        supply=SupplyParams(v_full=25e3, i_full=4e-3),
+        # 25 kV -> 10 V: R2 = R1 / (25e3 / 10 - 1)
+        chain=ChainParams(polarity=1, v_sign=1, i_sign=1, high_ohm=1e9, low_ohm=1e9 / 2499.0, low_f=2.2e-9,
+                          v_adc=Adc(bits=16, signed=True), i_adc=Adc(bits=16, signed=True)))
+
+
+def small() -> PlantParams:
+    """0-5 kV, 20 mA, negative, 12-bit unipolar converters, no arm input."""
+    return PlantParams(
+        name="small", v_dac=Dac(bits=12), i_dac=Dac(bits=12),
+        supply=SupplyParams(v_full=5e3, i_full=20e-3, slew_v_per_s=20e3, output_f=5e-9, bleed_ohm=100e6),
+        chain=ChainParams(polarity=-1, v_sign=1, i_sign=1, high_ohm=500e6, low_ohm=1e6, low_f=1e-9,
+                          shunt_ohm=500.0, v_adc=Adc(bits=12, signed=False), i_adc=Adc(bits=12, signed=False)),
+        specimen=SpecimenParams(capacitance_f=2e-9, insulation_ohm=10e9, strength_v=4.6e3, hold_a=2e-3),
+        contacts=ContactParams(arm_input=False))
+
+
+PROFILES = {"demo": demo, "small": small}
