@@ -4,19 +4,22 @@ A body is ``verb field field ... [key=value ...]`` with single spaces.  The fiel
 optional ones follow as ``key=value`` in any order, unknown keys are skipped.  See PROTOCOL.md sections 3 to 8.
 """
 
-import struct
-from binascii import Error as Base64Error
-from binascii import a2b_base64, b2a_base64
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from hvhost.wire.blocks import PAIRS_MAX as PAIRS_MAX
+from hvhost.wire.blocks import Block as Block
+from hvhost.wire.blocks import decode_block as decode_block
+from hvhost.wire.blocks import encode_block as encode_block
+from hvhost.wire.blocks import pack_codes as pack_codes
+from hvhost.wire.blocks import type_of_pack as type_of_pack
+from hvhost.wire.blocks import unpack_codes as unpack_codes
 from hvhost.wire.settings import TIGHTENABLE
 from hvhost.words.errors import WireFault
 
 U32 = 0xFFFFFFFF
 I32 = 0x7FFFFFFF
-PAIRS_MAX = 64
 SNAP_PAIRS = 40  # pairs in one answer to `snap`
 
 
@@ -192,28 +195,6 @@ class Refusal:
     code: str
 
 
-@dataclass(frozen=True, slots=True)
-class Block:
-    """Up to 64 pairs of monitor codes with what the MCU did and saw at the first pair's tick."""
-
-    index: int  # of the first sample, 32 bit, wraps
-    tick: int  # of the first sample, 32 bit, wraps
-    v_word: int  # words applied at that tick
-    i_word: int
-    state: int  # McuState
-    latched: int  # 0 or 1
-    inputs: int  # Inputs
-    missed: int  # conversions missed since boot, 32 bit, wraps
-    event: int  # number of the last event
-    arc: int  # number of the last arc of this arm
-    codes: tuple[int, ...]  # v0, i0, v1, i1, ...
-
-    @property
-    def pairs(self) -> int:
-        """How many pairs the block holds."""
-        return len(self.codes) >> 1
-
-
 @dataclass(frozen=True, slots=True, kw_only=True)
 class McuEvent:
     """A numbered event with its tick and two integers whose meaning belongs to the kind."""
@@ -223,27 +204,6 @@ class McuEvent:
     kind: str
     a: int
     b: int
-
-
-type_of_pack = {"uu": ("H", "H"), "ss": ("h", "h"), "us": ("H", "h"), "su": ("h", "H")}
-
-
-def pack_codes(codes: tuple[int, ...], signs: str) -> bytes:
-    """Base64 of little-endian 16-bit pairs; ``signs`` says per channel whether codes are signed ('s') or not ('u')."""
-    v, i = type_of_pack[signs]
-    return b2a_base64(struct.pack(f"<{(v + i) * (len(codes) >> 1)}", *codes), newline=False)
-
-
-_UNPACK = {(signs, n): struct.Struct(f"<{(v + i) * n}") for signs, (v, i) in type_of_pack.items()
-           for n in range(PAIRS_MAX + 1)}
-
-
-def unpack_codes(text: bytes, signs: str, pairs: int) -> tuple[int, ...]:
-    """Return the codes of ``pairs`` pairs, or raise `WireFault`."""
-    try:
-        return _UNPACK[signs, pairs].unpack(a2b_base64(text, strict_mode=True))
-    except (Base64Error, struct.error, KeyError):
-        raise WireFault(f"base64 of {pairs} pairs", f"{len(text)} characters", "block") from None
 
 
 # ---------------------------------------------------------------- the codec
@@ -382,24 +342,6 @@ def decode_request(body: bytes) -> Request:
         values["arc"] = u32(pairs["arc"])
     frame: Request = spec.frame(**values)
     return frame
-
-
-def encode_block(block: Block, signs: str) -> bytes:
-    """Return the body of a block."""
-    return b"b %d %d %d %d %d %d %X %d %d %d %d %b" % (
-        block.index, block.tick, block.v_word, block.i_word, block.state, block.latched, block.inputs, block.missed,
-        block.event, block.arc, block.pairs, pack_codes(block.codes, signs))
-
-
-def decode_block(body: bytes, signs: str) -> Block:
-    """Return the block of a body that begins with ``b`` and a space, or raise `WireFault`; written for speed."""
-    try:
-        (_, index, tick, v_word, i_word, state, latched, inputs, missed, event, arc, pairs,
-         text) = body.split(b" ")[:13]
-        return Block(int(index), int(tick), int(v_word), int(i_word), int(state), int(latched), int(inputs, 16),
-                     int(missed), int(event), int(arc), unpack_codes(text, signs, int(pairs)))
-    except ValueError:
-        raise WireFault("a block", repr(body[:40].decode("ascii")), "block") from None
 
 
 def encode_answer(frame: Ok | Refusal | McuEvent) -> bytes:

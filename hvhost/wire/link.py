@@ -38,9 +38,7 @@ from hvhost.wire.frames import (
     Arm,
     Asked,
     Block,
-    Get,
     Hello,
-    Info,
     McuEvent,
     Ok,
     Refusal,
@@ -51,12 +49,12 @@ from hvhost.wire.frames import (
     decode_request,
     encode_request,
 )
-from hvhost.wire.greeting import INFO_PAGES, Greeting, info_of, read_page, read_settings_page, settings_of_pages
+from hvhost.wire.greeter import Greeter
+from hvhost.wire.greeting import Greeting
 from hvhost.wire.lines import Garbled, LineReader, seal
 from hvhost.wire.requests import Requests, Waiting
-from hvhost.wire.settings import PAGES, Settings
 from hvhost.wire.stops import WRAP, Stops
-from hvhost.wire.vocabulary import PROTOCOL_VERSION, Err, EventKind, Fitted, HostRule
+from hvhost.wire.vocabulary import Err, EventKind, Fitted, HostRule
 from hvhost.words.errors import CommandRefused, WireFault
 
 __all__ = [
@@ -72,9 +70,9 @@ RENEWALS_PER_LEASE = 8
 class Link:
     """One session with one MCU; see the module's docstring for the order of use."""
 
-    __slots__ = ("_blocks_before", "_ended_text", "_fields", "_fitted", "_garbled", "_good", "_heard_s", "_hello",
-                 "_last_s", "_notices", "_reader", "_renewal", "_renewed_s", "_requests", "_silent", "_stops", "_tail",
-                 "_ticket", "_torn", "_values", "greeting", "last_event", "lease_s", "session", "state")
+    __slots__ = ("_blocks_before", "_ended_text", "_fitted", "_garbled", "_good", "_greeter", "_heard_s", "_last_s",
+                 "_notices", "_reader", "_renewal", "_renewed_s", "_requests", "_silent", "_stops", "_tail",
+                 "_ticket", "_torn", "greeting", "last_event", "lease_s", "session", "state")
 
     def __init__(self, now_s: float, *, session: int, lease_ms: int, first_stop: int = 1) -> None:
         if not 1 <= session < WRAP:
@@ -84,10 +82,8 @@ class Link:
         self.greeting: Greeting | None = None
         self.last_event = 0  # highest event number seen
         self._reader, self._stops, self._requests = LineReader(), Stops(session, first_stop), Requests(session)
-        self._hello = Hello(version=PROTOCOL_VERSION, lease_ms=lease_ms)
-        self._requests.hello(session | HELLO_BIT, self._hello, HELLO_TRIES)
-        self._fields: dict[str, str | int] = {}
-        self._values: tuple[int, ...] = ()
+        self._greeter = Greeter(session, lease_ms)
+        self._requests.hello(session | HELLO_BIT, self._greeter.hello(), HELLO_TRIES)
         self._fitted: Fitted | None = None
         self._notices: list[LinkEvent] = []
         self._good = self._garbled = self._blocks_before = self._ticket = 0
@@ -212,61 +208,20 @@ class Link:
     # ------------------------------------------------------------ the greeting
 
     def _greet(self, done: Waiting, answer: Ok | Refusal, events: list[LinkEvent]) -> None:
-        if isinstance(answer, Refusal):
-            why = EndWhy.VERSION if answer.code == Err.VERSION else EndWhy.REFUSED
-            self._end(why, f"{answer.verb}: {answer.code}", events)
-            return
-        try:
-            self._greet_step(done, answer, events)
-        except WireFault as fault:
-            self._end(EndWhy.MALFORMED, str(fault), events)
-
-    def _greet_step(self, done: Waiting, answer: Ok, events: list[LinkEvent]) -> None:
-        frame, requests = done.frame, self._requests
-        if isinstance(frame, Hello):
-            if answer.words[:1] != (str(PROTOCOL_VERSION),):
-                self._end(EndWhy.VERSION, f"expected {PROTOCOL_VERSION}, found {' '.join(answer.words)}", events)
-                return
-            if answer.words[1:2] != (str(frame.lease_ms),):
-                raise WireFault(f"a lease of {frame.lease_ms} ms", " ".join(answer.words[1:]), "hello")
-            requests.restart()
-            for page in range(INFO_PAGES):
-                requests.add(0, Info(page=page))
-        elif isinstance(frame, Info):
-            self._fields |= read_page(answer)
-            if answer.words != (str(frame.page),):
-                raise WireFault(f"page {frame.page}", answer.words[0], "info")
-            if frame.page == INFO_PAGES - 1:
-                self._after_info(events)
-        elif isinstance(frame, Get):
-            self._values += read_settings_page(answer, frame.page)
-            if frame.page == PAGES - 1:
-                self._after_settings(events)
-
-    def _after_info(self, events: list[LinkEvent]) -> None:
-        if int(self._fields["proto"]) != PROTOCOL_VERSION:
-            self._end(EndWhy.VERSION, f"expected {PROTOCOL_VERSION}, found {self._fields['proto']}", events)
-        elif self._fields["blank"]:
-            self._greeted(None, "the settings are blank or damaged", events)
+        step = self._greeter.take(done.frame, answer)
+        if isinstance(step, Ended):
+            self._end(step.why, step.text, events)
+        elif isinstance(step, Greeting):
+            self.greeting, self._fitted, self.state = step, step.fitted, LinkState.GREETED
+            self.last_event = max(self.last_event, step.info.event)
+            if step.settings is None and not step.info.blank:
+                events.append(Fault(step.why_none))
+            events.append(Greeted(step))
         else:
-            for page in range(PAGES):
-                self._requests.add(0, Get(page=page))
-
-    def _after_settings(self, events: list[LinkEvent]) -> None:
-        try:
-            settings = settings_of_pages(self._values, int(self._fields["settings"]))
-        except WireFault as fault:
-            events.append(Fault(str(fault)))
-            self._greeted(None, str(fault), events)
-        else:
-            self._greeted(settings, "", events)
-
-    def _greeted(self, settings: Settings | None, why_none: str, events: list[LinkEvent]) -> None:
-        greeting = Greeting(session=self.session, lease_s=self.lease_s, info=info_of(self._fields), settings=settings,
-                            why_none=why_none)
-        self.greeting, self._fitted, self.state = greeting, greeting.fitted, LinkState.GREETED
-        self.last_event = max(self.last_event, greeting.info.event)
-        events.append(Greeted(greeting))
+            if isinstance(done.frame, Hello):
+                self._requests.restart()
+            for frame in step:
+                self._requests.add(0, frame)
 
     # ------------------------------------------------------------ requests and renewals
 
