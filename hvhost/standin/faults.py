@@ -21,6 +21,7 @@ import math
 import re
 from collections.abc import Iterable
 from dataclasses import dataclass
+from difflib import get_close_matches
 from enum import StrEnum
 from random import Random
 
@@ -135,15 +136,21 @@ class FaultSpec:
 _SPEC = re.compile(r"(?P<name>[a-z-]+)(?:=(?P<value>[^@+]+?))?(?:@(?P<when>[^+]+?))?(?:\+(?P<span>.+))?")
 
 
+def _known(name: str) -> Fault:
+    if name not in FAULTS:
+        near = get_close_matches(name, FAULTS, 1)
+        raise UsageFault("a fault of the list in 'hvhost standin --help'", repr(name), "fault",
+                         f"nearest: {near[0]}" if near else "")
+    return FAULTS[name]
+
+
 def parse_fault(text: str) -> FaultSpec:
     """Read ``name[=value][@when][+duration]``; raise `UsageFault` naming the nearest right words."""
     match = _SPEC.fullmatch(text.strip())
     if match is None:
         raise UsageFault("a fault such as 'lead-off', 'v-offset=200@8kV' or 'mains-lost@12s+0.3s'", repr(text), "fault")
     name, value, when, span = match.group("name", "value", "when", "span")
-    if name not in FAULTS:
-        raise UsageFault("a fault of the list in 'hvhost standin --help'", repr(name), "fault")
-    fault = FAULTS[name]
+    fault = _known(name)
     try:
         at_v = parse_quantity(when, Dimension.VOLT) if when and when.endswith("V") else 0.0
         return FaultSpec(name=name, value=parse_quantity(value, fault.dimension) if value else fault.default,
@@ -182,9 +189,8 @@ class FaultBook:
 
     def on(self, name: str, value: float | None = None) -> None:
         """Switch a fault on now."""
-        if name not in FAULTS:
-            raise UsageFault("a fault of the list in 'hvhost standin --help'", repr(name), "fault")
-        self.active[name] = FAULTS[name].default if value is None else value
+        fault = _known(name)
+        self.active[name] = fault.default if value is None else value
         self.version += 1
 
     def off(self, name: str) -> None:

@@ -3,7 +3,13 @@
 SI units inside.  The presets are benches of their own; `demo` and `small` match the two example bench files.
 """
 
-from dataclasses import dataclass, field
+from collections.abc import Iterable
+from dataclasses import dataclass, field, fields, is_dataclass, replace
+from difflib import get_close_matches
+from typing import Any
+
+from hvhost.words.errors import QuantityFault, UsageFault
+from hvhost.words.quantities import Dimension, parse_quantity
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -172,3 +178,47 @@ def small() -> PlantParams:
 
 
 PROFILES = {"demo": demo, "small": small}
+
+_DIMENSIONS = (("_v_per_s", Dimension.VOLT_PER_SECOND), ("_v", Dimension.VOLT), ("_a", Dimension.AMP),
+               ("_f", Dimension.FARAD), ("_ohm", Dimension.OHM), ("_s", Dimension.SECOND), ("_hz", Dimension.HERTZ))
+
+
+def changed(params: PlantParams, changes: Iterable[str]) -> PlantParams:
+    """Return the parameters with ``key=value`` changes, keys as in ``specimen.strength_v=12 kV``.
+
+    Raises `UsageFault` with the nearest right key, or what the value should have been.
+    """
+    for change in changes:
+        key, equals, text = change.partition("=")
+        if not equals:
+            raise UsageFault("key=value such as 'specimen.strength_v=12 kV'", repr(change), "set")
+        params = _replaced(params, key.strip(), key.strip().split("."), text.strip())
+    return params
+
+
+def _replaced(part: Any, key: str, path: list[str], text: str) -> Any:
+    names = [f.name for f in fields(part)]
+    name = path[0]
+    if name not in names or is_dataclass(getattr(part, name)) != (len(path) > 1):
+        near = get_close_matches(name, names, 1)
+        raise UsageFault(f"one of {', '.join(names)}", repr(name), f"set {key}", f"nearest: {near[0]}" if near else "")
+    old = getattr(part, name)
+    new = _replaced(old, key, path[1:], text) if len(path) > 1 else _value(old, key, name, text)
+    return replace(part, **{name: new})
+
+
+def _value(old: object, key: str, name: str, text: str) -> object:
+    if isinstance(old, bool):
+        if text not in ("yes", "no"):
+            raise UsageFault("yes or no", repr(text), f"set {key}")
+        return text == "yes"
+    if isinstance(old, str):
+        return text
+    if isinstance(old, tuple):
+        raise UsageFault("a single value", "a table", f"set {key}", "give a profile of its own for that")
+    dimension = next((dim for end, dim in _DIMENSIONS if name.endswith(end)), Dimension.NUMBER)
+    try:
+        value = parse_quantity(text, Dimension.INTEGER if isinstance(old, int) else dimension)
+    except QuantityFault as fault:
+        raise UsageFault(fault.expected, fault.found, f"set {key}", fault.remedy) from None
+    return int(value) if isinstance(old, int) else value

@@ -45,8 +45,8 @@ class PlantEvent:
 class Plant:
     """See the module's text.  Deterministic from ``seed`` and the calls."""
 
-    __slots__ = ("_c", "_c_inside", "_c_node", "_decay", "_decay_key", "_g", "_g_inside", "_live", "_ripple_v",
-                 "_seen", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params", "specimen",
+    __slots__ = ("_c", "_c_inside", "_c_node", "_decay", "_decay_key", "_g", "_g_inside", "_known", "_live",
+                 "_ripple_v", "_seen", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params", "specimen",
                  "supply", "t_s", "v_node", "v_true")
 
     def __init__(self, params: PlantParams, seed: int, faults: FaultBook | None = None) -> None:
@@ -62,6 +62,7 @@ class Plant:
         self._decay, self._decay_key = 1.0, (0.0, 0.0)
         self._was_power = False
         self._seen = -1
+        self._known: dict[str, float] = {}
         self._settle()
 
     # ------------------------------------------------------------ the MCU's side
@@ -271,6 +272,11 @@ class Plant:
     def _settle(self) -> None:
         """Look at the faults again: something was switched on or off."""
         book = self.faults
+        for name in [*self._known, *book.active]:
+            if self._known.get(name) != book.active.get(name) and not FAULTS[name].once:
+                on = name in book.active
+                self._event("fault on" if on else "fault off", book.active.get(name, 0.0), name)
+        self._known = dict(book.active)
         for name in ("arc", "arc-burst", "dip"):
             value = book.take(name)
             if value is not None:
