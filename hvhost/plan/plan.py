@@ -8,9 +8,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from datetime import date
 
-from hvhost.plan.program import WINDOW_S, CriterionKind, HoldClock, Pause, SpecimenKind, WhenOut
+from hvhost.plan.program import CriterionKind, HoldClock, SpecimenKind, WhenOut
 from hvhost.words.findings import Finding
-from hvhost.words.quantities import Dimension
+from hvhost.words.quantities import Dimension, format_quantity
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -18,15 +18,32 @@ class Value:
     """A value of the plan: a quantity, a declared parameter, or a fraction of one.
 
     It stands for ``factor * parameter``, or for ``factor`` alone where ``parameter`` is empty; SI units.
+    ``dimension`` is that of the value, ``needs`` that of the parameter.  ``low`` and ``high`` are inclusive bounds,
+    ``above`` an exclusive one.
     """
 
     factor: float
     parameter: str = ""
+    dimension: Dimension
+    needs: Dimension
+    low: float | None = None
+    above: float | None = None
+    high: float | None = None
     line: int = 0
 
     def of(self, values: Mapping[str, float]) -> float:
-        """Return the SI value with the parameters filled in."""
+        """Return the SI value with the parameters filled in; raises KeyError for one that is not."""
         return self.factor * values[self.parameter] if self.parameter else self.factor
+
+    def outside(self, value: float) -> str:
+        """Return the bound that a value breaks, in words; '' where it keeps all."""
+        if self.low is not None and value < self.low:
+            return f"at least {format_quantity(self.low, self.dimension)}"
+        if self.above is not None and value <= self.above:
+            return f"more than {format_quantity(self.above, self.dimension)}"
+        if self.high is not None and value > self.high:
+            return f"at most {format_quantity(self.high, self.dimension)}"
+        return ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -75,9 +92,10 @@ class HoldTerms:
     clock: HoldClock = HoldClock.CONTINUOUS
     when_out: WhenOut = WhenOut.FAIL
     tolerance: Value | None = None  # fraction; None: IEC 60060-1 by duration
-    window: Value = Value(factor=WINDOW_S)
+    window: Value | None = None  # s; None: 1 s
     readings: tuple[Value, ...] = ()
     origin: str = ""
+    origin_line: int = 0
     guard_band: bool = False
 
 
@@ -101,9 +119,8 @@ class PlanStaircase:
     start: Value
     to: Value
     step: Value
-    rate: Value
+    rate: Value | None  # None: as fast as the bench may
     terms: HoldTerms
-    until_breakdown: bool
     current_limit: Value | None
     limits: PlanLimits
 
@@ -127,7 +144,15 @@ class PlanRepeat:
     steps: tuple["PlanStep", ...]
 
 
-PlanStep = PlanRamp | PlanHold | PlanStaircase | PlanRest | PlanRepeat
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlanGap:
+    """Stands where a faulty step was told already, so that the steps around it can be checked all the same."""
+
+    line: int
+    name: str = ""
+
+
+PlanStep = PlanRamp | PlanHold | PlanStaircase | PlanRest | PlanRepeat | PlanGap
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -147,7 +172,7 @@ class PlanRetreat:
     rest: Value | None
     back: Value
     back_is_fraction: bool
-    climb: Value
+    climb: Value | None
     series: Value
     line: int
 
@@ -249,7 +274,3 @@ class RunSheet:
     lines: Mapping[str, int] = field(default_factory=dict)
     findings: tuple[Finding, ...] = ()
 
-
-__all__ = ["Confirmations", "Environment", "HoldTerms", "Parameter", "Pause", "Plan", "PlanCriterion", "PlanHold",
-           "PlanLimits", "PlanPause", "PlanRamp", "PlanRepeat", "PlanRest", "PlanRetreat", "PlanStaircase", "PlanStep",
-           "Release", "RunSheet", "Value", "Window"]

@@ -101,7 +101,7 @@ class HoldStep:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RestStep:
-    """Waits ``rest_s`` with the words as the step before left them (at zero after a breakdown or a ramp to zero)."""
+    """Waits ``rest_s`` at zero volts; the words first go there at the bench's down-slew where they stand higher."""
 
     number: int
     name: str
