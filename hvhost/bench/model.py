@@ -91,7 +91,7 @@ class SlowChannel:
     address: str
     query: str
     every_s: float
-    uncertainty: float  # standard, in the SI unit of ``kind`` (relative humidity as a fraction)
+    uncertainty: str  # as its certificate states it: the unit is its own
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -123,6 +123,7 @@ class Bench:
     longest_on_s: float
     output_f: float
     cable_f: float
+    tip_ohm: float
     touch_v: float
     wet: bool
     cut_path: frozenset[str]

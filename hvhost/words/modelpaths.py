@@ -49,7 +49,8 @@ def partial_of(model: type[BaseModel], data: Any) -> Partial:
 @lru_cache(maxsize=1024)
 def _adapter(model: type[BaseModel], name: str) -> TypeAdapter[Any]:
     info: FieldInfo = model.model_fields[name]
-    return TypeAdapter(Annotated[(info.annotation, *info.metadata)] if info.metadata else info.annotation)
+    kind: Any = Annotated[(info.annotation, *info.metadata)] if info.metadata else info.annotation
+    return TypeAdapter(kind)
 
 
 def _only_model(annotation: Any) -> type[BaseModel] | None:

@@ -99,7 +99,7 @@ class _Reader:
 
     def take(self, event: yaml.Event) -> bool:
         """Take one event; False ends the reading."""
-        line = event.start_mark.line + 1
+        line = event.start_mark.line + 1 if event.start_mark else 0
         self._check_extras(event, line)
         if isinstance(event, yaml.DocumentStartEvent):
             return self._document(event, line)
@@ -124,8 +124,9 @@ class _Reader:
             self.fault(line, "alias", "the value written out", f"'*{anchor}'")
         elif anchor:
             self.fault(line, "anchor", "a plain value", f"'&{anchor}'")
-        if getattr(event, "tag", None) and not isinstance(event, yaml.AliasEvent):
-            self.fault(line, "tag", "a plain value", shown(str(event.tag)))
+        tag = getattr(event, "tag", None)
+        if tag:
+            self.fault(line, "tag", "a plain value", shown(str(tag)))
 
     def _document(self, event: yaml.DocumentStartEvent, line: int) -> bool:
         self.documents += 1
