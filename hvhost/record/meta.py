@@ -8,6 +8,9 @@ from dataclasses import dataclass, field, fields, is_dataclass
 from enum import Enum
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from hvhost.record.entries import Json, NoteEntry
 from hvhost.words.errors import RecordFault
 
@@ -24,6 +27,14 @@ class RecordedScale:
     u_zero: float  # V or A
     code_low: int  # a code at or beyond these limits says nothing
     code_high: int
+
+    def values(self, codes: NDArray[np.int32]) -> NDArray[np.float64]:
+        """Oriented volts or amps of raw codes."""
+        return np.asarray(self.gain * (codes.astype(np.float64) - self.zero))
+
+    def off_limits(self, codes: NDArray[np.int32]) -> NDArray[np.bool_]:
+        """Whether each code lies between the converter's limits and not on them."""
+        return np.asarray((codes > self.code_low) & (codes < self.code_high), dtype=np.bool_)
 
     @classmethod
     def of(cls, scale: Any) -> "RecordedScale":

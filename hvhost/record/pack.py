@@ -6,6 +6,7 @@ lines: without the trailer that the body determines.  FORMAT.md, section 6.
 """
 
 import struct
+from contextlib import suppress
 from zlib import compress, decompressobj
 
 from hvhost.record.entries import EntryKind
@@ -22,6 +23,7 @@ from hvhost.wire.lines import seal
 
 FIXED_PACKED = "dIIHHBBHHHHB"  # as FIXED, with 16 bits for missed, event and arc
 FRAME = struct.Struct("<" + FIXED_PACKED + "iBiB")  # and per channel: smallest code, bits per code
+RENEW = struct.Struct("<BII")  # 0 (no line begins with it), session, index
 _FIXED = struct.Struct("<" + FIXED)
 _U16 = 0xFFFF
 _TEXT_AT = {EntryKind.META: 0, EntryKind.END: 0, EntryKind.COMMAND: 8, EntryKind.NOTE: 8}  # where the JSON begins
@@ -33,9 +35,7 @@ def pack_payload(kind: EntryKind, flags: int, payload: bytes) -> tuple[int, byte
     if kind is EntryKind.BLOCK and not flags & AS_TEXT:
         shorter = _pack_block(flags, payload)
     elif kind is EntryKind.SENT:
-        body = payload[8:-13]
-        if payload[8:] == seal(body):
-            shorter = payload[:8] + body
+        shorter = _pack_sent(payload)
     elif kind in _TEXT_AT:
         at = _TEXT_AT[kind]
         shorter = payload[:at] + compress(payload[at:], 9)
@@ -48,13 +48,34 @@ def unpack_payload(kind: EntryKind, flags: int, payload: bytes) -> tuple[int, by
     if kind is EntryKind.BLOCK:
         return flags, _unpack_block(flags, payload)
     if kind is EntryKind.SENT:
-        return flags, payload[:8] + seal(payload[8:])
+        return flags, payload[:8] + seal(_sent_body(payload[8:]))
     at = _TEXT_AT[kind]
     opened = decompressobj()
     text = opened.decompress(payload[at:], LENGTH_MAX)
     if not opened.eof:
         raise ValueError("a whole zlib stream of bounded length")
     return flags, payload[:at] + text
+
+
+def _pack_sent(payload: bytes) -> bytes:
+    """Drop the trailer; renewals, by far the most frequent line, become three fields."""
+    body = payload[8:-13]
+    if payload[8:] != seal(body):
+        return payload
+    verb, *words = body.split(b" ")
+    if verb == b"renew" and len(words) == 2:
+        with suppress(ValueError, struct.error):
+            frame = RENEW.pack(0, int(words[0], 16), int(words[1]))
+            if _sent_body(frame) == body:
+                return payload[:8] + frame
+    return payload[:8] + body
+
+
+def _sent_body(packed: bytes) -> bytes:
+    if packed[:1] != b"\0":
+        return packed
+    _, session, index = RENEW.unpack(packed)
+    return b"renew %08X %d" % (session, index)
 
 
 def _pack_block(flags: int, payload: bytes) -> bytes:
