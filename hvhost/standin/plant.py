@@ -46,8 +46,8 @@ class Plant:
     """See the module's text.  Deterministic from ``seed`` and the calls."""
 
     __slots__ = ("_c", "_c_inside", "_c_node", "_decay", "_decay_key", "_g", "_g_inside", "_known", "_live",
-                 "_ripple_v", "_seen", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params", "specimen",
-                 "supply", "t_s", "v_node", "v_true")
+                 "_ripple_v", "_seen", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params",
+                 "specimen", "supply", "t_s", "v_node", "v_true")
 
     def __init__(self, params: PlantParams, seed: int, faults: FaultBook | None = None) -> None:
         self.params = params
@@ -81,8 +81,8 @@ class Plant:
         codes = self.chain.convert(self.t_s, self._ripple_v, self._was_power)
         if self.faults.active:
             for name in ("v-spike", "i-spike", "v-dip"):
-                if self.faults.take(name) is not None:
-                    self._event(name)
+                if (value := self.faults.take(name)) is not None:
+                    self._event("fault on", value, name)
                     self._settle()
         return codes
 
@@ -292,13 +292,13 @@ class Plant:
         self._contacts_moved()
 
     def _load_fault(self, name: str, value: float) -> None:
-        self._event(name, value)
+        self._event("fault on", value, name)
         if name == "dip":
             self.v_node *= value
             self.v_true = self.v_node
             return
         if name == "arc-burst":
-            self.specimen.burst = max(int(value) - 1, 0)
+            self.specimen.burst = max(int(value), 1)
         self._force_arc()
 
     def _contacts_moved(self) -> None:

@@ -117,8 +117,8 @@ class Specimen:
         """The arc is out: a gap recovers with a strength drawn anew, a solid stays punctured."""
         self.arcing = False
         self.off_s = 0.0
+        self.burst = max(self.burst - 1, 0)
         if self.burst > 0:  # the next one strikes as soon as half of the voltage is back
-            self.burst -= 1
             self.off_s, self.strength_v, self._amount = inf, self.struck_v * 0.5 / HAZARD_FLOOR, 0.0
             return
         self._draw()
