@@ -269,11 +269,12 @@ def check_zero_band(b: BenchFile, say: Say) -> Iterator[Finding]:
 
 def check_bleed(b: BenchFile, say: Say) -> Iterator[Finding]:
     """The bleed times reach the touch threshold: t = tau ln(V0 / V); five leave 135 V of 20 kV."""
-    needed = hazards.bleed_times_to(b.ceilings.voltage, b.touch.threshold)
+    threshold = min(b.touch.threshold, hazards.touch_threshold_v(b.touch.wet))
+    needed = hazards.bleed_times_to(b.ceilings.voltage, threshold)
     if b.bleed.times < needed:
         left = hazards.voltage_after_v(b.ceilings.voltage, 1.0, b.bleed.times)
         yield say(REFUSE, "bleed.times", f"at least {int(needed) + 1}: from {volts(b.ceilings.voltage)} to "
-                  f"{volts(b.touch.threshold)}", f"{b.bleed.times}, which leaves {volts(left)}")
+                  f"{volts(threshold)}", f"{b.bleed.times}, which leaves {volts(left)}")
 
 
 def check_bleed_time(b: BenchFile, say: Say) -> Iterator[Finding]:
@@ -369,10 +370,14 @@ def check_slow_channels(b: BenchFile, say: Say) -> Iterator[Finding]:
     """Auxiliary instruments have names of their own."""
     seen: dict[str, int] = {}
     for at, channel in enumerate(b.slow_channels):
-        if channel.name in seen:
-            yield say(REFUSE, f"slow_channels.{at}.name", "a name of its own",
-                      f"'{channel.name}' again (as number {seen[channel.name]})")
-        seen.setdefault(channel.name, at + 1)
+        try:
+            name = channel.name
+        except Absent:
+            continue
+        if name in seen:
+            yield say(REFUSE, f"slow_channels.{at}.name", "a name of its own", f"'{name}' again (as number "
+                      f"{seen[name]})")
+        seen.setdefault(name, at + 1)
 
 
 CHECKS: tuple[Check, ...] = (
@@ -388,7 +393,8 @@ def cross_findings(reading: Reading[BenchFile]) -> tuple[Finding, ...]:
     """Every check that the right values of the file allow."""
     def say(grade: Grade, place: str, expected: str, found: str, remedy: str = "") -> Finding:
         parts = tuple(int(p) if p.isdigit() else p for p in place.split("."))
-        return Finding(grade=grade, file=reading.file, line=reading.line_of(*parts), what=place, expected=expected,
+        what = ".".join(str(p + 1) if isinstance(p, int) else p for p in parts)  # people count from 1
+        return Finding(grade=grade, file=reading.file, line=reading.line_of(*parts), what=what, expected=expected,
                        found=found, remedy=remedy)
 
     findings: list[Finding] = []

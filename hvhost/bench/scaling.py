@@ -1,11 +1,12 @@
 """Codes to volts or amps and back, with the uncertainty of it (JCGM 100).
 
 The law of both directions is a straight line, ``value = gain * (code - zero)``.  What a later fit finds enters through
-the same four numbers (``Calibration``), so nothing above this file knows whether they came from the bench file or from
+the same numbers (``Calibration``), so nothing above this file knows whether they came from the bench file or from
 a calibration run.  Values are *oriented*: positive in the direction of the bench's polarity; the gain carries the
 monitor's sign.  Integer rules work on codes *above zero*: ``sign * (code - round(zero))``.
 """
 
+import math
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -24,6 +25,7 @@ class Calibration:
     zero: float
     u_gain: float
     u_zero: float
+    r: float = 0.0  # correlation of gain and zero in the fit
     source: str
 
 
@@ -41,6 +43,7 @@ class Scale:
     u_zero: float
     code_low: int
     code_high: int
+    r: float = 0.0  # correlation of the errors of gain and zero; a fit has one, a data sheet does not
     source: str = "bench file"
 
     @property
@@ -88,19 +91,20 @@ class Scale:
         return round((value - self.gain * (self.code_zero - self.zero)) / self.quantum)
 
     def u(self, value: float) -> float:
-        """Combined standard uncertainty at a value: gain, zero and quantisation (JCGM 100 5.1.2)."""
-        # u² = (u_gain · value)² + u_zero² + (q / √12)²
-        square = (self.u_gain * value) ** 2 + self.u_zero**2 + (self.quantum / SQRT12) ** 2
-        return float(square**0.5)
+        """Combined standard uncertainty of one reading: line and quantisation (JCGM 100 5.1.2, 5.2.2)."""
+        # u² = u_line² + (q / √12)²
+        return math.hypot(self.u_mean(value), self.quantum / SQRT12)
 
     def u_mean(self, value: float) -> float:
         """The same for a mean over many samples: gain and zero stay, quantisation averages out."""
-        return float(((self.u_gain * value) ** 2 + self.u_zero**2) ** 0.5)
+        # u_line² = (u_gain · value)² + u_zero² + 2 r (u_gain · value) u_zero
+        slope = self.u_gain * value
+        return math.sqrt(max(0.0, slope * slope + self.u_zero * self.u_zero + 2.0 * self.r * slope * self.u_zero))
 
     def calibrated(self, calibration: Calibration) -> "Scale":
         """The same converter under another straight line."""
         return replace(self, gain=calibration.gain, zero=calibration.zero, u_gain=calibration.u_gain,
-                       u_zero=calibration.u_zero, source=calibration.source)
+                       u_zero=calibration.u_zero, r=calibration.r, source=calibration.source)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

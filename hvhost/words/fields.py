@@ -5,7 +5,7 @@ describes itself in a JSON Schema, so that an editor can check a file while it i
 """
 
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from datetime import date
 from enum import StrEnum
 from typing import Annotated, Any
@@ -15,7 +15,16 @@ from pydantic_core import PydanticCustomError
 
 from hvhost.words.errors import QuantityFault
 from hvhost.words.nearest import nearest_word
-from hvhost.words.quantities import EXAMPLES, UNITS, Dimension, expectation, format_quantity, parse_quantity, shown
+from hvhost.words.quantities import (
+    EXAMPLES,
+    UNITS,
+    Dimension,
+    expectation,
+    format_quantity,
+    parse_quantity,
+    shown,
+    spellings,
+)
 
 _NUMBER_PATTERN = r"[+-]?(0|[1-9][0-9]*)(\.[0-9]+)?([eE][+-]?[0-9]{1,2})?"
 
@@ -66,7 +75,7 @@ def quantity(dimension: Dimension, low: float | None = None, high: float | None 
 
 def schema_of(dimension: Dimension) -> WithJsonSchema:
     """A string with the whitelisted units, and an example."""
-    units = "|".join(re.escape(u) for u in UNITS[dimension] if u)
+    units = "|".join(re.escape(s) for u in UNITS[dimension] if u for s in spellings(u))
     pattern = f"^{_NUMBER_PATTERN} ?({units})$" if units else f"^{_NUMBER_PATTERN}$"
     kinds: list[str] = ["string"] if units else ["string", "number"]
     return WithJsonSchema({"type": kinds, "pattern": pattern, "description": f"{dimension.value}, e.g. "
@@ -95,7 +104,7 @@ def whole(low: int, high: int) -> tuple[BeforeValidator, WithJsonSchema]:
                                               "minimum": low, "maximum": high})
 
 
-def _one_of(words: dict[str, Any]) -> BeforeValidator:
+def _one_of(words: dict[str, Any], meant: Mapping[str, str] | None = None) -> BeforeValidator:
     expected = f"one of {', '.join(words)}" if len(words) > 2 else " or ".join(words)
 
     def validate(value: Any) -> Any:
@@ -104,7 +113,7 @@ def _one_of(words: dict[str, Any]) -> BeforeValidator:
                 return value
             raise fault(expected)
         if value not in words:
-            near = nearest_word(value, words)
+            near = (meant or {}).get(value.casefold()) or nearest_word(value, words)
             raise fault(expected, remedy=f"did you mean '{near}'?" if near else "")
         return words[value]
     return BeforeValidator(validate)
@@ -178,7 +187,8 @@ Fraction = Annotated[float, quantity(Dimension.PERCENT, low=0.0, high=1.0), sche
 PercentPerSecond = Annotated[float, quantity(Dimension.PERCENT_PER_SECOND, above=0.0),
                              schema_of(Dimension.PERCENT_PER_SECOND)]
 Number = Annotated[float, quantity(Dimension.NUMBER), schema_of(Dimension.NUMBER)]
-YesNo = Annotated[bool, _one_of({"yes": True, "no": False}), WithJsonSchema({"type": ["string", "boolean"]})]
+_MEANT = {"true": "yes", "on": "yes", "y": "yes", "false": "no", "off": "no", "n": "no"}
+YesNo = Annotated[bool, _one_of({"yes": True, "no": False}, _MEANT), WithJsonSchema({"type": ["string", "boolean"]})]
 Line = Annotated[str, BeforeValidator(_line(200)), WithJsonSchema({"type": "string", "maxLength": 200})]
 Token = Annotated[str, *matching(r"[A-Za-z0-9][A-Za-z0-9._-]{0,63}",
                                  "a name of letters, digits, '.', '_' and '-', at most 64 characters", 64)]

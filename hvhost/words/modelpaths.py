@@ -9,7 +9,7 @@ from pydantic import BaseModel, TypeAdapter, ValidationError
 from pydantic.fields import FieldInfo
 
 
-class Absent(Exception):  # noqa: N818 - says that a value is not there; nobody's error
+class Absent(Exception):
     """A value of a faulty file was missing or wrong and has been told; what needs it cannot be checked."""
 
 
@@ -40,9 +40,9 @@ def partial_of(model: type[BaseModel], data: Any) -> Partial:
         try:
             values[name] = _adapter(model, name).validate_python(data[key], strict=True)
         except ValidationError:
-            inner = _only_model(info.annotation)
-            if inner is not None:
-                values[name] = partial_of(inner, data[key])
+            rest = _rest_of(info.annotation, data[key])
+            if rest is not None:
+                values[name] = rest
     return Partial(values)
 
 
@@ -53,8 +53,20 @@ def _adapter(model: type[BaseModel], name: str) -> TypeAdapter[Any]:
     return TypeAdapter(kind)
 
 
-def _only_model(annotation: Any) -> type[BaseModel] | None:
-    models = [c for c in _candidates(annotation) if isinstance(c, type) and issubclass(c, BaseModel)]
+def _rest_of(annotation: Any, data: Any) -> Any:
+    """What was right of a faulty block or list of blocks; None for anything else."""
+    inner = _only_model(_candidates(annotation))
+    if inner is not None:
+        return partial_of(inner, data)
+    lists = [c for c in _candidates(annotation) if get_origin(c) is tuple]
+    item = _only_model(_candidates(get_args(lists[0])[0])) if lists else None
+    if item is None or not isinstance(data, tuple):
+        return None
+    return tuple(partial_of(item, entry) for entry in data)
+
+
+def _only_model(candidates: list[Any]) -> type[BaseModel] | None:
+    models = [c for c in candidates if isinstance(c, type) and issubclass(c, BaseModel)]
     return models[0] if len(models) == 1 else None
 
 

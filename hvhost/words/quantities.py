@@ -105,9 +105,16 @@ def _canonical(unit: str) -> str:
     return unit
 
 
+def spellings(unit: str) -> tuple[str, ...]:
+    """Every spelling that means this canonical unit: itself, look-alike symbols, ASCII forms."""
+    others = [unit.replace(ours, other) for other, ours in _SPELLINGS if ours in unit]
+    return (unit, *others, *([f"u{unit[1:]}"] if unit.startswith("µ") else []))
+
+
 def expectation(dimension: Dimension) -> str:
     """What a message says is expected: "a voltage such as '25 kV'"."""
-    return f"a {dimension.value} such as '{EXAMPLES[dimension]}'"
+    article = "an" if dimension is Dimension.JOULE else "a"
+    return f"{article} {dimension.value} such as '{EXAMPLES[dimension]}'"
 
 
 def shown(text: str) -> str:
@@ -157,7 +164,8 @@ def _nearest(text: str, dimension: Dimension) -> str:
 def _number_mended(text: str) -> list[str]:
     """Candidates with a decimal comma, digit grouping or missing digit put right."""
     grouped = re.sub(r"(?<=[0-9])[ _'](?=[0-9]{3}(?![0-9]))", "", text)
-    pointed = re.sub(r"(?<=[0-9]),(?=[0-9])", ".", text)
+    # '20,000' may be twenty or twenty thousand: no suggestion is better than a wrong one.
+    pointed = text if re.search(r",[0-9]{3}(?![0-9])", text) else re.sub(r"(?<=[0-9]),(?=[0-9])", ".", text)
     started = re.sub(r"^([+-]?)\.(?=[0-9])", r"\g<1>0.", text)
     stripped = re.sub(r"^([+-]?)0+(?=[0-9])", r"\1", text)
     ended = re.sub(r"(?<=[0-9])\.(?![0-9])", "", text)
@@ -180,8 +188,9 @@ def _unit_mended(text: str, dimension: Dimension) -> str:
     units = UNITS[dimension]
     if unit not in units:
         folded = [u for u in units if u.casefold() == unit.casefold()]
-        close = folded or (get_close_matches(unit, [u for u in units if u], 1, 0.6) if unit else [])
-        if not close:
+        alike = get_close_matches(unit, [u for u in units if u], 1, 0.6) if len(unit) > 1 else []
+        close = folded or alike
+        if not close or len(folded) > 1:  # 'mv' may be milli or mega
             return ""
         unit = close[0]
     if dimension is Dimension.INTEGER and Fraction(match.group()).denominator != 1:
@@ -221,4 +230,7 @@ def format_quantity(value: float, dimension: Dimension, digits: int = 4) -> str:
             chosen = unit
     if value == 0:
         chosen = next((u for u in units if UNITS[dimension][u] == 1), units[0])
-    return f"{_digits(value / float(UNITS[dimension][chosen]), digits)} {chosen}".strip()
+    scaled = value / float(UNITS[dimension][chosen])
+    if scaled and not 1e-3 <= abs(scaled) < 1e12:
+        return f"{scaled:.{digits}g} {chosen}".strip()
+    return f"{_digits(scaled, digits)} {chosen}".strip()

@@ -34,6 +34,7 @@ class Node:
     line: int
     key_line: int
     text: str | None = None
+    told: bool = False  # a fault of form about this value has been told; no second one is
     items: list["Node"] | None = None
     entries: dict[str, "Node"] | None = None
 
@@ -104,7 +105,7 @@ class _Reader:
         if isinstance(event, yaml.DocumentStartEvent):
             return self._document(event, line)
         if isinstance(event, yaml.AliasEvent):
-            self._add(Node(line, line, text=""), "")
+            self._add(Node(line, line, text="", told=True), "")
         elif isinstance(event, yaml.ScalarEvent):
             self._add(Node(line, line, text=event.value), event.value, plain=event.style is None)
         elif isinstance(event, yaml.MappingStartEvent):
@@ -126,7 +127,7 @@ class _Reader:
             self.fault(line, "anchor", "a plain value", f"'&{anchor}'")
         tag = getattr(event, "tag", None)
         if tag:
-            self.fault(line, "tag", "a plain value", shown(str(tag)))
+            self.fault(line, "tag", "a plain value", shown(str(tag).replace("tag:yaml.org,2002:", "!!")))
 
     def _document(self, event: yaml.DocumentStartEvent, line: int) -> bool:
         self.documents += 1
@@ -183,6 +184,8 @@ def read_yaml(name: str, text: str) -> tuple[Node | None, tuple[Finding, ...]]:
         for event in yaml.parse(text, Loader=yaml.SafeLoader):
             if not reader.take(event):
                 break
+        if len(reader.stack) > DEEPEST:
+            return None, tuple(reader.findings)  # half a tree would be called incomplete
     except yaml.MarkedYAMLError as error:
         _syntax_fault(reader, error)
         return None, tuple(reader.findings)
@@ -222,14 +225,28 @@ def _check_characters(reader: _Reader, text: str) -> None:
             reader.fault(number, "text", "printable characters", f"control character U+{ord(odd):04X}")
 
 
+# The parser's problem -> what is expected, what was found, the remedy.
+_PROBLEMS: dict[str, tuple[str, str, str]] = {
+    "mapping values are not allowed here": (
+        "one 'key: value' on a line, indented like its neighbours", "a second ': ', or a key indented too far",
+        "a text with ': ' in it needs quotes"),
+    "found unexpected end of stream": ("a closing quote", "the end of the file", ""),
+    "could not find expected ':'": ("'key: value'", "a line without ': '", ""),
+    "expected <block end>, but found '<block mapping start>'": (
+        "a key indented like its neighbours", "a key indented otherwise", ""),
+}
+
+
 def _syntax_fault(reader: _Reader, error: yaml.MarkedYAMLError) -> None:
-    mark = error.problem_mark or error.context_mark
+    in_quotes = "quoted scalar" in (error.context or "")  # the place of interest is where the quote began
+    mark = (error.context_mark if in_quotes else None) or error.problem_mark or error.context_mark
     line = mark.line + 1 if mark else 0
     if any(f.line == line for f in reader.findings):
         return  # a tab or control character on this line has been told already
     problem = (error.problem or "a fault of form").replace("\t", "tab")
-    reader.fault(line, "form", "'key: value' lines, indented with spaces", problem,
-                 "a text with ': ' or '#' in it needs quotes" if "mapping values" in problem else "")
+    other = ("'key: value' lines, indented with spaces", problem.removeprefix("found "), "")
+    expected, found, remedy = _PROBLEMS.get(problem, other)
+    reader.fault(line, "form", expected, found, remedy)
 
 
 def read_text(path: Path) -> str:
@@ -300,6 +317,8 @@ def read_model(model: type[M], file: str, text: str) -> Reading[M]:
 def _findings_of(error: ValidationError, model: type[BaseModel], file: str, root: Node) -> Iterator[Finding]:
     for item in error.errors(include_url=False):
         place = tuple(item["loc"])
+        if root.at(place).told:
+            continue
         yield _finding(item, place, model, file, root)
 
 
