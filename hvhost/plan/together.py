@@ -1,4 +1,4 @@
-"""What must fit together in a plan: references, reaction and retreat, names, criteria, and the walk through its steps."""
+"""What must fit together in a plan: references, reaction and retreat, names, criteria, the walk through its steps."""
 
 from collections.abc import Callable
 from dataclasses import fields, is_dataclass, replace
