@@ -11,6 +11,7 @@ asked for nothing but anchors: a step of it starts a new anchor and moves no tic
 """
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 WRAP = 1 << 32
 HALF = 1 << 31
@@ -153,7 +154,7 @@ def envelope(points: list[tuple[int, float]], nominal_s: float) -> tuple[float, 
     if len(hull) == 1:
         return nominal_s, t0, a0
     middle = flat[-1][0] / 2
-    left, right = next((a, b) for a, b in zip(hull, hull[1:], strict=False) if b[0] >= middle)
+    left, right = next((a, b) for a, b in pairwise(hull) if b[0] >= middle)
     tilt = (right[1] - left[1]) / (right[0] - left[0])
     bound = DRIFT_MAX * nominal_s
     slope = max(-bound, min(bound, tilt))
