@@ -17,6 +17,7 @@ CONFIRM_S = 2.0  # a confirmation takes one answer and one block: a hundredth of
 POLL_S = 0.02
 CONFIRMED = "cut confirmed"
 NOT_CONFIRMED = "cut not confirmed: use the emergency switching off"
+NOT_LOWERED = "not lowered: if in doubt use the emergency switching off"
 
 TYPE_CHECKING = False
 if TYPE_CHECKING:
@@ -38,7 +39,7 @@ def _stop_one(verb: str, path: str, as_json: bool) -> int:
             answer = bench.call(verb)
             stop = _confirmation(bench) if verb == "cut" else ""
     except HvhostError as fault:
-        advice = f"{fault}\n{NOT_CONFIRMED}" if verb == "cut" else f"{fault}\nnot lowered: if in doubt use the emergency switching off"
+        advice = f"{fault}\n{NOT_CONFIRMED if verb == 'cut' else NOT_LOWERED}"
         return _tell(verb, path, {"error": str(fault)}, advice, fault.exit_code, as_json)
     text = answer.get("text", "") if isinstance(answer, dict) else str(answer or "")
     words = "; ".join(part for part in (text or f"{verb} taken", stop) if part)

@@ -1,0 +1,207 @@
+"""The words and numbers of the screens: how a value, a time, a state is written, once for every view.
+
+The sign of the bench's polarity is put on here and nowhere before.  A number is shown with the decimals that its
+full scale asks for, so that its point stands still while it changes.
+"""
+
+import math
+from dataclasses import dataclass
+from datetime import datetime, tzinfo
+
+from hvhost.bench import cautions
+from hvhost.publish.snapshot import LinkState, Permission, Phase, Snapshot, StopState, VoltageState
+
+DIGITS = 4  # of the full scale: a bench chain is good for a tenth of a percent
+ENERGISED = frozenset((Permission.RUNNING, Permission.PAUSING, Permission.LOWERING))
+_UNITS = ((1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"))
+
+
+OVERDUE = 2.5  # a snapshot that is late by this many periods no longer shows the present
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class View:
+    """How a client sees a snapshot: seconds since it came, the period it asked for, what it can do itself.
+
+    ``can_stop`` is False for a view without keys; ``note`` is what its last key led to; ``zone`` None is the
+    machine's time zone.
+    """
+
+    since_s: float = 0.0
+    period_s: float = 0.1
+    connected: bool = True
+    can_stop: bool = True
+    note: str = ""
+    zone: tzinfo | None = None
+
+
+class Scale:
+    """Unit and decimals of one quantity, from its full scale: 25 kV -> 'kV' with two decimals."""
+
+    def __init__(self, full: float, unit: str, polarity: int) -> None:
+        usable = full if math.isfinite(full) and full > 0.0 else 1.0
+        self.factor, prefix = next(((f, p) for f, p in _UNITS if usable >= f * 0.9999), _UNITS[-1])
+        self.unit = prefix + unit
+        self.decimals = max(0, DIGITS - 1 - math.floor(math.log10(usable / self.factor) + 1e-9))
+        self.polarity = polarity
+
+    def number(self, value: float, extra: int = 0) -> str:
+        """Return the signed number without its unit; 'extra' decimals more."""
+        text = f"{value * self.polarity / self.factor:.{self.decimals + extra}f}"
+        return text.lstrip("-") if not text.strip("-0.") else text
+
+    def text(self, value: float | None, extra: int = 0) -> str:
+        """Return the signed number with its unit, '--' for nothing."""
+        return "--" if value is None or not math.isfinite(value) else f"{self.number(value, extra)} {self.unit}"
+
+    def size(self, value: float | None) -> str:
+        """Return the magnitude with its unit: for margins and uncertainties, which have no polarity."""
+        return "--" if value is None or not math.isfinite(value) else \
+            f"{abs(value) / self.factor:.{self.decimals}f} {self.unit}"
+
+
+def volts_scale(snapshot: Snapshot) -> Scale:
+    """Return how this bench's volts are written."""
+    return Scale(snapshot.volts_full, "V", snapshot.polarity)
+
+
+def amps_scale(snapshot: Snapshot) -> Scale:
+    """Return how this bench's amps are written."""
+    return Scale(snapshot.amps_full, "A", snapshot.polarity)
+
+
+def fine(value: float | None, unit: str, polarity: int = 1) -> str:
+    """Return four significant digits with the prefix that suits the value itself: 12.34 µA."""
+    if value is None or not math.isfinite(value):
+        return "--"
+    size = abs(value)
+    factor, prefix = next(((f, p) for f, p in _UNITS if size >= f * 0.99995), _UNITS[-1])
+    decimals = max(0, 3 - max(0, math.floor(math.log10(max(size / factor, 1e-3)) + 1e-9)))
+    text = f"{value * polarity / factor:.{decimals}f}"
+    return f"{text.lstrip('-') if not text.strip('-0.') else text} {prefix}{unit}"
+
+
+def span(seconds: float | None) -> str:
+    """Return a span as m:ss or h:mm:ss, '--' for none; whole seconds, rounded down."""
+    if seconds is None or not math.isfinite(seconds):
+        return "--"
+    whole = max(0, int(seconds))
+    hours, rest = divmod(whole, 3600)
+    return f"{hours}:{rest // 60:02d}:{rest % 60:02d}" if hours else f"{rest // 60}:{rest % 60:02d}"
+
+
+def left(seconds: float | None) -> str:
+    """Return a countdown in whole seconds, rounded up: it never says 0 while something is still to come."""
+    return "--" if seconds is None or not math.isfinite(seconds) else f"{max(0, math.ceil(seconds - 1e-6))} s"
+
+
+def local_time(utc_ns: int, zone: tzinfo | None, pattern: str = "%Y-%m-%d %H:%M:%S") -> str:
+    """Return a local time; ``zone`` None is the machine's."""
+    moment = datetime.fromtimestamp(utc_ns / 1e9, tz=zone)
+    return (moment if zone is not None else moment.astimezone()).strftime(pattern)
+
+
+def clock_text(utc_ns: int, zone: tzinfo | None) -> str:
+    """Return local date and time with offset and zone."""
+    moment = datetime.fromtimestamp(utc_ns / 1e9, tz=zone).astimezone(zone)
+    offset = moment.strftime("%z")
+    name = moment.strftime("%Z")
+    return moment.strftime("%Y-%m-%d %H:%M:%S ") + f"{offset[:3]}:{offset[3:5]} {name}"
+
+
+def printable(text: str) -> str:
+    """Return the text with everything that could move a cursor or hide made visible."""
+    return text if text.isprintable() else "".join(c if c.isprintable() else "?" for c in text)
+
+
+def state_words(snapshot: Snapshot) -> str:
+    """Return the state in capitals, latch first: 'TRIPPED', 'RUNNING: HOLD', 'IDLE'."""
+    permission = snapshot.permission
+    words = str(permission).upper()
+    if permission is Permission.RUNNING and snapshot.phase is not Phase.NONE:
+        words = f"{words}: {str(snapshot.phase).upper()}"
+    if snapshot.latched:
+        words = "TRIPPED" if permission is Permission.IDLE else f"TRIPPED, {words}"
+    return words
+
+
+def link_words(snapshot: Snapshot) -> str:
+    """Return the link in words; anything but a greeted one in capitals."""
+    link = str(snapshot.link)
+    return f"link {link}" if snapshot.link is LinkState.GREETED else f"LINK {link.upper()}"
+
+
+def voltage_words(snapshot: Snapshot) -> str:
+    """Return what is known of the voltage, with the daemon's explanation."""
+    words = f"VOLTAGE {str(snapshot.voltage).upper()}"
+    extra = snapshot.voltage_text
+    return f"{words} ({printable(extra)})" if extra and extra.lower() != str(snapshot.voltage) else words
+
+
+def alerts(snapshot: Snapshot, view: View) -> list[str]:
+    """Return what must be seen first, most urgent first."""
+    found, age_s = [], view.since_s
+    if not view.connected:
+        found.append(f"DAEMON GONE: {cautions.OUTPUT_UNKNOWN}")
+    elif output_unknown(snapshot, view):
+        found.append(cautions.OUTPUT_UNKNOWN.upper())
+    if snapshot.stop is StopState.CUT_NOT_CONFIRMED:
+        found.append(str(snapshot.stop).upper())
+    if snapshot.pause_s is not None:
+        found.append(cautions.WILL_RE_ENERGISE.format(seconds=max(0, math.ceil(snapshot.pause_s - age_s))))
+    if snapshot.warning_s is not None:
+        found.append(f"WARNING: energises in {left(snapshot.warning_s - age_s)}")
+    if snapshot.arm is not None:
+        found.append(_request_words(snapshot, age_s))
+    if snapshot.latched:
+        found.append(f"TRIPPED: {', '.join(map(printable, snapshot.latched))}")
+    if not snapshot.record.ok:
+        found.append(f"RECORD FAILED: {printable(snapshot.record.text)}")
+    if snapshot.power_words == cautions.PROGRAMMED_TO_ZERO:
+        found.append(cautions.PROGRAMMED_TO_ZERO.upper())
+    return found
+
+
+def _request_words(snapshot: Snapshot, age_s: float) -> str:
+    arm = snapshot.arm
+    assert arm is not None
+    within = f"within {left(arm.expires_s - age_s)}"
+    if not arm.press_needed:
+        typed = f": type '{printable(arm.typed_name)}' to arm" if arm.typed_name else ""
+        return f"REQUESTED {within}{typed} ({cautions.NO_ARM_INPUT})"
+    return f"REQUESTED: PRESS THE ARM INPUT AT THE BENCH {within}"
+
+
+def output_unknown(snapshot: Snapshot, view: View) -> bool:
+    """Whether the readback is older than the lease, or there is none: then it is not shown (S13).
+
+    The time since the snapshot came counts too, where it is more than the screen's own period explains.
+    """
+    reading = snapshot.reading
+    if reading is None or reading.volts is None or snapshot.link in (LinkState.NONE, LinkState.LOST):
+        return True
+    longest_s = max(snapshot.lease_s, OVERDUE * view.period_s)
+    return not view.connected or reading.age_s > snapshot.lease_s or reading.age_s + view.since_s > longest_s
+
+
+def reading_old(snapshot: Snapshot, view: View) -> bool:
+    """Whether the readback is older than two blocks, or its snapshot overdue: then it is shown as old (S13)."""
+    two_blocks_s = 2.0 * snapshot.block_s
+    return snapshot.reading is not None and (
+        snapshot.reading.age_s > two_blocks_s or view.since_s > max(two_blocks_s, OVERDUE * view.period_s))
+
+
+def caution(snapshot: Snapshot) -> str:
+    """Return what must be read before anyone goes in; '' only while something is energised or about to be."""
+    if snapshot.permission not in (Permission.IDLE, Permission.LOWERING):
+        return ""
+    parts = []
+    if snapshot.bleeds_passed is not None:
+        parts.append(f"{snapshot.bleeds_passed:.1f} bleed times since the cut.")
+    if snapshot.discharge_text:
+        parts.append(printable(snapshot.discharge_text))
+    if snapshot.voltage is VoltageState.GROUNDED:
+        parts.append(cautions.GROUNDED_IS_A_CONTACT)
+    if cautions.BEFORE_TOUCHING not in snapshot.discharge_text:
+        parts.append(cautions.BEFORE_TOUCHING)
+    return " ".join(parts)
