@@ -38,8 +38,9 @@ class SupplyParams:
     bleed_ohm: float = 1.0e9
     ripple_hz: float = 100.0
     ripple_v: float = 0.5  # amplitude at no load
-    ripple_v_per_a: float = 1.5e3  # more with load
+    ripple_v_per_a: float = 1.1e3  # more with load
     inhibit_s: float = 0.2e-3  # from the inhibit line to the output stage
+    clear_input: bool = True
     clear_tau_s: float = 0.2e-3  # the clear input discharges the programming filter this fast
 
 
@@ -109,7 +110,7 @@ class SpecimenParams:
     """The specimen: capacitance, insulation, absorption branches (R, C), and how it breaks down."""
 
     capacitance_f: float = 0.5e-9
-    insulation_ohm: float = 50e9
+    insulation_ohm: float = 2e9
     branches: tuple[tuple[float, float], ...] = ((10e9, 0.1e-9), (60e9, 0.15e-9), (300e9, 0.2e-9))
     strength_v: float = 17.5e3  # scale of the Weibull distribution of the breakdown voltage
     strength_shape: float = 25.0
@@ -157,23 +158,25 @@ class PlantParams:
 
 
 def demo() -> PlantParams:
-    """0-25 kV, 4 mA, positive, 16-bit signed monitors, 1 GΩ divider: 10 V at 25 kV and at 10 mA, full at 32767."""
+    """0-25 kV, 4 mA, positive, 16-bit signed monitors, 10 V at 25 kV and at 10 mA; measured at the specimen."""
     return PlantParams(
         name="demo", v_dac=Dac(bits=16), i_dac=Dac(bits=16),
         supply=SupplyParams(v_full=25e3, i_full=4e-3),
         # 25 kV -> 10 V: R2 = R1 / (25e3 / 10 - 1)
         chain=ChainParams(polarity=1, v_sign=1, i_sign=1, high_ohm=1e9, low_ohm=1e9 / 2499.0, low_f=2.2e-9,
-                          v_adc=Adc(bits=16, signed=True), i_adc=Adc(bits=16, signed=True)))
+                          at_specimen=True, v_adc=Adc(bits=16, signed=True), i_adc=Adc(bits=16, signed=True)))
 
 
 def small() -> PlantParams:
-    """0-5 kV, 20 mA, negative, 12-bit unipolar converters, no arm input."""
+    """0-5 kV, 20 mA, negative, 12-bit unipolar converters, no arm input, no clear input."""
     return PlantParams(
         name="small", v_dac=Dac(bits=12), i_dac=Dac(bits=12),
-        supply=SupplyParams(v_full=5e3, i_full=20e-3, slew_v_per_s=20e3, output_f=5e-9, bleed_ohm=100e6),
-        chain=ChainParams(polarity=-1, v_sign=1, i_sign=1, high_ohm=500e6, low_ohm=1e6, low_f=1e-9,
-                          shunt_ohm=500.0, v_adc=Adc(bits=12, signed=False), i_adc=Adc(bits=12, signed=False)),
-        specimen=SpecimenParams(capacitance_f=2e-9, insulation_ohm=10e9, strength_v=4.6e3, hold_a=2e-3),
+        supply=SupplyParams(v_full=5e3, i_full=20e-3, slew_v_per_s=20e3, output_f=5e-9, bleed_ohm=95.2e6,
+                            ripple_v=1.0, ripple_v_per_a=700.0, clear_input=False),
+        chain=ChainParams(polarity=-1, v_sign=1, i_sign=1, high_ohm=500e6, low_ohm=1e6, low_f=1e-9, shunt_ohm=500.0,
+                          at_specimen=True, v_adc=Adc(bits=12, signed=False), i_adc=Adc(bits=12, signed=False)),
+        specimen=SpecimenParams(capacitance_f=2e-9, insulation_ohm=50e6, strength_v=4.6e3, hold_a=2e-3,
+                                branches=((250e6, 4e-9), (1.5e9, 6e-9), (7.5e9, 8e-9))),
         contacts=ContactParams(arm_input=False))
 
 

@@ -153,7 +153,7 @@ class Plant:
     def _flow(self, dt_s: float, v_cmd: float, i_cmd: float) -> None:
         live = self._live
         supply, specimen = self.supply, self.specimen
-        supply.step(dt_s, v_cmd, i_cmd, live, self.contacts.clear)
+        supply.step(dt_s, v_cmd, i_cmd, live, self.contacts.clear and self.params.supply.clear_input)
         v0 = self.v_node
         if not live and -DEAD_V < v0 < DEAD_V and not any(specimen.u):
             self.v_node = self.v_true = self.i_true = 0.0

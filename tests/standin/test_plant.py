@@ -17,7 +17,8 @@ from tests.standin.benches import MS, cut, fragile, kinds, live, run, tough
 def bare(capacitance_f: float, ohm: float) -> Plant:
     """A plant whose node is one capacitor and one resistor: nothing absorbs, nothing else leaks."""
     params = tough(output_f=capacitance_f, bleed_ohm=ohm, slew_v_per_s=1e9)
-    return live(replace(params, cable_f=1e-18, chain=replace(params.chain, high_ohm=1e18, low_ohm=4e14, low_f=1e-18)),
+    return live(replace(params, cable_f=1e-18, chain=replace(params.chain, high_ohm=1e18, low_ohm=4e14, low_f=1e-18,
+                                                               at_specimen=False)),
                 1, "lead-off")
 
 
@@ -86,11 +87,11 @@ def test_steps_of_any_size_give_the_same_discharge() -> None:
 
 def test_one_quadrant_supply_cannot_pull_the_load_down() -> None:
     """With the set-point at zero and the output stage live the voltage only bleeds away."""
-    plant = live()
+    plant = live(tough(), 1, "lead-off")
     run(plant, 1.0, 10e3)
     run(plant, 0.1, 0.0)
-    # 2 nF on 1 GΩ of bleed beside 1 GΩ of divider: tau = 1 s, and the filters' few ms before
-    assert plant.v_true == pytest.approx(10e3 * exp(-0.1), rel=0.02)
+    # 1.5 nF on 1 GΩ of bleed beside 1 GΩ of divider: tau = 0.75 s
+    assert plant.v_true == pytest.approx(10e3 * exp(-0.1 / 0.75), rel=0.01)
 
 
 @pytest.mark.parametrize(("remote_v", "panel_v", "won_v"), [(8e3, 5e3, 5e3), (3e3, 5e3, 3e3)])
@@ -141,7 +142,7 @@ def test_leakage_falls_during_a_hold() -> None:
     early_a = plant.i_true
     run(plant, 60.0, 10e3, dt_s=10 * MS)
     assert plant.i_true < early_a
-    assert plant.i_true > 10e3 / 50e9
+    assert plant.i_true > 10e3 / 2e9
 
 
 def test_power_needs_relay_and_contactor() -> None:

@@ -108,4 +108,4 @@ def test_leak_and_short_lie_across_it() -> None:
     """Resistances across the specimen add as conductances."""
     specimen = Specimen(PARAMS, 1)
     specimen.settle({"leak": 50e6, "short": 1e3})
-    assert specimen.conductance_s == pytest.approx(1.0 / 50e9 + 1.0 / 50e6 + 1e-3)
+    assert specimen.conductance_s == pytest.approx(1.0 / 2e9 + 1.0 / 50e6 + 1e-3)
