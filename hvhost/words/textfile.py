@@ -327,6 +327,8 @@ def _finding(item: Mapping[str, Any], place: Place, model: type[BaseModel], file
     node = root.at(place)
     what = _named(place)
     expected, found, remedy = _EXPECTED.get(kind, _other)(item, context, node)
+    if place[-1:] == ("[key]",):  # a key that the file chose is wrong, not what stands under it
+        what, found = _named(place[:-1]), shown(str(place[-2]))
     if kind == "extra_forbidden":
         keys = known_keys(model, place[:-1])
         word = str(place[-1])
