@@ -180,6 +180,9 @@ class StepBlock(Block):
     repeat: RepeatBlock | None = None
 
 
+RepeatBlock.model_rebuild()
+
+
 class ArcBlock(Block):
     """The arc reaction."""
 

@@ -52,11 +52,16 @@ class Case:
         return (step for step in self.program.steps if not isinstance(step, RestStep))
 
     def withstand_holds(self) -> tuple[HoldStep, ...]:
-        """Return the holds that decide over withstand: those of a level criterion, or all with 'no breakdown'."""
+        """Return the holds that decide over withstand.
+
+        Those of a level criterion; without one, and with 'no breakdown' asked, those at which nothing is read.
+        """
         levels = {c.hold for c in self.program.acceptance if c.kind is CriterionKind.LEVEL_HELD}
-        if not levels and not any(c.kind is CriterionKind.NO_BREAKDOWN for c in self.program.acceptance):
+        if levels:
+            return tuple(hold for hold in self.program.holds() if hold.name in levels)
+        if not any(c.kind is CriterionKind.NO_BREAKDOWN for c in self.program.acceptance):
             return ()
-        return tuple(hold for hold in self.program.holds() if not levels or hold.name in levels)
+        return tuple(hold for hold in self.program.holds() if not hold.readings_s)
 
 
 Check = Callable[[Case], Iterator[Finding]]

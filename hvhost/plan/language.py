@@ -5,13 +5,12 @@ a faulty step leaves a gap around which the rest is checked.  What depends on a 
 plan only if it holds at both ends of every parameter's bounds; otherwise the run sheet's values decide.
 """
 
-from collections.abc import Mapping
 from contextlib import suppress
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from hvhost.plan.blocks import CriterionBlock, PlanBlock, parse_value
+from hvhost.plan.blocks import CriterionBlock, ParameterBlock, PlanBlock, parse_value
 from hvhost.plan.criteria import CRITERION_LIMITS, criterion_faults
 from hvhost.plan.passing import text_hash
 from hvhost.plan.plan import (
@@ -82,7 +81,7 @@ def _plan(build: Builder, block: Any, text: str) -> Plan:
     steps = build_steps(build, ("steps",))
     return Plan(file=build.file, text=text, sha256=text_hash(text), title=_or(block, "plan", ""),
                 specimen_kind=_or(block, "specimen", SpecimenKind.SELF_RESTORING), release=_release(build, block),
-                parameters=_parameters(build, _or(block, "parameters", {})),
+                parameters=_parameters(build),
                 current_limit=build.placed(_or(block, "current_limit", None), ("current_limit",)), limits=limits,
                 pause=_pause(build, _or(block, "arc", None)), retreat=_retreat(build, _or(block, "retreat", None)),
                 steps=steps, acceptance=_acceptance(build))
@@ -102,9 +101,13 @@ def _release(build: Builder, block: Any) -> Release | None:
     return None
 
 
-def _parameters(build: Builder, blocks: Mapping[str, Any]) -> tuple[Parameter, ...]:
-    found = (_parameter(build, name, block) for name, block in blocks.items())
-    return tuple(parameter for parameter in found if parameter is not None)
+def _parameters(build: Builder) -> tuple[Parameter, ...]:
+    entries = build.root.at(("parameters",)).entries if build.root.has(("parameters",)) else None
+    made = []
+    for name, node in (entries or {}).items():
+        with build.known():
+            made.append(_parameter(build, name, partial_of(ParameterBlock, node.plain())))
+    return tuple(parameter for parameter in made if parameter is not None)
 
 
 def _parameter(build: Builder, name: str, block: Any) -> Parameter | None:
@@ -133,20 +136,24 @@ def _parameter(build: Builder, name: str, block: Any) -> Parameter | None:
 def _pause(build: Builder, block: Any) -> PlanPause | None:
     if block is None:
         return None
-    with build.known():
-        given = {key: getattr(block, key) for key in ("count", "rest", "window")}
-        stray = [key for key, value in given.items() if value is not None]
-        if block.reaction == "latch":
-            for key in stray:
-                build.fault(("arc", key), "no such key with 'reaction: latch'", f"'{key}'")
-            return None
-        for key in given.keys() - stray:
-            build.fault(("arc",), f"the key '{key}' with 'reaction: pause'", "nothing")
-        if len(stray) == 3:
-            return PlanPause(count=build.must(block.count, ("arc", "count")),
-                             rest=build.must(block.rest, ("arc", "rest")),
-                             window=build.must(block.window, ("arc", "window")), line=build.root.line_of("arc"))
-    return None
+    keys = ("count", "rest", "window")
+    given = [key for key in keys if build.root.has(("arc", key))]
+    reaction = _or(block, "reaction", "")
+    if reaction == "latch":
+        for key in given:
+            build.fault(("arc", key), "no such key with 'reaction: latch'", f"'{key}'")
+        return None
+    if reaction == "pause":
+        for key in keys:
+            if key not in given:
+                build.fault(("arc",), f"the key '{key}' with 'reaction: pause'", "nothing")
+    if reaction != "pause" or len(given) < len(keys):
+        return None
+    try:
+        count, rest, window = (build.must(getattr(block, key), ("arc", key)) for key in keys)
+    except Absent:
+        return None
+    return PlanPause(count=count, rest=rest, window=window, line=build.root.line_of("arc"))
 
 
 def _retreat(build: Builder, block: Any) -> PlanRetreat | None:

@@ -75,7 +75,7 @@ class RampStep:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class HoldStep:
-    """Keeps ``v`` until the clock has counted ``hold_s``, at most ``at_most_s`` after its start.
+    """Keeps ``v`` until the clock has counted ``hold_s``, ends in any case ``at_most_s`` after its start (pauses too).
 
     The clock runs while the mean of the readback over ``window_s`` lies within ``tolerance`` (a fraction) of ``v``.
     ``readings_s`` count from ``origin``: 'start of hold' (the clock's start), 'ramp start' (first segment of the run),

@@ -77,6 +77,10 @@ class Unrolled:
     at_s: float | None = 0.0
     after_breakdown: bool = False
     holed: bool = False
+    declared: Mapping[str, Dimension] = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.declared = {parameter.name: parameter.dimension for parameter in self.plan.parameters}
 
     def fault(self, line: int, what: str, expected: str, found: str, remedy: str = "") -> None:
         """Note a fault that refuses."""
@@ -85,6 +89,8 @@ class Unrolled:
 
     def value(self, value: Value, what: str) -> float:
         """Return the SI value, its bound checked; raises `Unfilled`."""
+        if value.parameter and self.declared.get(value.parameter) is not value.needs:
+            raise Unfilled(value.parameter)  # undeclared or of another dimension: told with the references
         try:
             number = value.of(self.values)
         except KeyError:
