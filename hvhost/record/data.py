@@ -72,7 +72,7 @@ class Read:
         if isinstance(content, MetaEntry):
             self.meta = self.meta or content.data
         elif isinstance(content, NoteEntry):
-            self.notes.append(content.data)
+            self.notes.append({"utc_ns": content.utc_ns, **content.data})
         elif isinstance(content, LineEntry):
             self._line(content.body)
         elif isinstance(content, AnchorEntry):

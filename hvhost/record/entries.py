@@ -163,3 +163,4 @@ class Outcome(StrEnum):
     INTERRUPTED = "interrupted"  # the link, the MCU or the host was lost
     RECORD_FAILED = "record failed"  # the recorder could not go on
     CANCELLED = "cancelled"  # it never was energised
+    FAILED = "failed"  # a step could not be kept: the host lowered

@@ -15,6 +15,7 @@ from hvhost.record.entries import Json, NoteEntry
 from hvhost.words.errors import RecordFault
 
 FORMAT = 1
+PHASES = ("begin", "clock start", "clock stop", "clock restart", "end")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -124,6 +125,6 @@ def step_note(t_mono: float, utc_ns: int, *, number: int, name: str, phase: str,
 
     More fields: ``step_kind`` ('ramp', 'hold', 'rest', 'retreat'), ``attempt`` (holds that restart), ``result``.
     """
-    if phase not in ("begin", "end", "clock start", "clock stop"):
-        raise RecordFault("begin, end, clock start or clock stop", repr(phase), "step note")
+    if phase not in PHASES:
+        raise RecordFault(" or ".join(PHASES), repr(phase), "step note")
     return note("step", t_mono, utc_ns, number=number, name=name, phase=phase, index=index, tick=tick, **more)

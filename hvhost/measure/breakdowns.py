@@ -1,0 +1,84 @@
+"""Disruptive discharges of a run: where, at what voltage, who saw them, how fast the output was stopped.
+
+V and I cannot tell puncture, flashover over a surface and sparkover of a gap apart, so the kind is what somebody who
+looked has entered, and 'kind not inspected' until then.
+"""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from hvhost.measure.uncertainty import Value, scale_u
+from hvhost.record.data import RunData
+from hvhost.wire.vocabulary import Cause, EventKind, HostRule
+
+BEFORE, AFTER = 12, 4  # rows around the deciding sample in which the fall is looked for
+LEVEL_ROWS = 5  # the voltage before the fall is the median of these
+SAME_S = 0.05  # what two observers report within this is one discharge
+NOT_INSPECTED = "kind not inspected"
+DISCHARGES = Cause.BREAKDOWN | Cause.ARC_COUNT | Cause.ARC_IN_REST
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Breakdown:
+    """One disruptive discharge; ``to_stop_s`` is from the deciding sample to the MCU's stop, None where none came."""
+
+    row: int
+    index: int
+    at_s: float  # since the first row
+    volts: Value
+    seen_by: tuple[str, ...]
+    arc: int  # number within the arm, 0 where it latched at once
+    to_stop_s: float | None
+    kind: str = NOT_INSPECTED
+
+
+def breakdowns_of(run: RunData) -> tuple[Breakdown, ...]:
+    """Return every discharge in order of time, each once, whoever saw it."""
+    seen = sorted(_seen(run))
+    out: list[Breakdown] = []
+    for row, who, arc in seen:
+        at_s = float(run.seconds(row, row + 1)[0])
+        if out and at_s - out[-1].at_s <= SAME_S:
+            last = out[-1]
+            out[-1] = replace(last, seen_by=tuple(sorted({*last.seen_by, who})), arc=last.arc or arc)
+            continue
+        out.append(Breakdown(row=row, index=int(run.index(row, row + 1)[0]), at_s=at_s, volts=voltage_before(run, row),
+                             seen_by=(who,), arc=arc, to_stop_s=_to_stop(run, at_s)))
+    return tuple(out)
+
+
+def _seen(run: RunData) -> set[tuple[int, str, int]]:
+    """Return (row, who saw it, arc number) of everything that says breakdown."""
+    found: set[tuple[int, str, int]] = set()
+    if not run.rows:
+        return found
+    for event in run.events:
+        if event.kind == EventKind.PAUSING:
+            found.add((run.row_of(event.b, 31), "MCU", event.a))
+        elif event.kind == EventKind.CAUSE and event.a & DISCHARGES:
+            found.add((run.row_of(event.b, 31), "MCU", 0))
+        elif event.kind == EventKind.CAUSE and event.a == Cause.HOST_RULE and event.b == HostRule.BREAKDOWN:
+            found.add((run.row_of_tick(event.tick), "host", 0))
+    for note in run.notes_of("verdict"):
+        if note.get("rule") == "breakdown" and note.get("severity") in ("trip", "arc"):
+            found.add((run.row_of(int(note.get("index", 0))), "host", 0))
+    last = run.rows - 1
+    return {(min(row, last), who, arc) for row, who, arc in found}
+
+
+def voltage_before(run: RunData, row: int) -> Value:
+    """Return the voltage just before the steepest fall around a row."""
+    a, b = max(0, row - BEFORE), min(run.rows, row + AFTER)
+    volts = run.volts(a, b)
+    fall = int(np.argmin(np.diff(volts))) if len(volts) > 1 else 0
+    level = volts[max(0, fall + 1 - LEVEL_ROWS) : fall + 1]
+    value = float(np.median(level))
+    scatter = float(level.std(ddof=1)) if len(level) > 1 else 0.0
+    return Value(value, float(np.hypot(scale_u(run.meta.voltage, value), scatter)))
+
+
+def _to_stop(run: RunData, at_s: float) -> float | None:
+    stops = [s - at_s for e in run.events if e.kind in (EventKind.CUT, EventKind.PAUSING)
+             and (s := run.seconds_of_tick(e.tick)) >= at_s]
+    return min(stops) if stops else None
