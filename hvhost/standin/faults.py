@@ -28,6 +28,8 @@ from random import Random
 from hvhost.words.errors import QuantityFault, UsageFault
 from hvhost.words.quantities import Dimension, parse_quantity
 
+WAITING_MAX = 256
+
 
 class Place(StrEnum):
     """Where a fault sits, and so which part of the stand-in acts it out."""
@@ -184,6 +186,8 @@ class FaultBook:
 
     def plan(self, spec: FaultSpec) -> None:
         """Let a fault come when its time or voltage is reached."""
+        if len(self._waiting) >= WAITING_MAX:
+            raise UsageFault(f"at most {WAITING_MAX} faults to come", str(len(self._waiting) + 1), "fault")
         self._waiting.append(spec)
         self._look_ahead()
 
