@@ -59,25 +59,24 @@ def _read(name: str, text: str, today: date | None) -> tuple[Bench | None, tuple
     if reading.model is not None and today is not None and reading.model.calibration is not None:
         findings.extend(date_findings(reading.model.calibration.valid_until, today, name,
                                       reading.line_of("calibration", "valid_until")))
-    bench = None
-    if reading.model is not None and not refused(findings):
-        bench = _built(reading, reading.model, text, findings)
     ordered = tuple(sorted(findings, key=lambda f: (f.line, f.what, f.expected)))
-    return bench, ordered
+    if reading.model is None or refused(ordered):
+        return None, ordered
+    return _built(reading, reading.model, text, ordered)
 
 
-def _built(reading: Reading[BenchFile], model: BenchFile, text: str, findings: list[Finding]) -> Bench | None:
+def _built(reading: Reading[BenchFile], model: BenchFile, text: str,
+           findings: tuple[Finding, ...]) -> tuple[Bench | None, tuple[Finding, ...]]:
     """The bench, proven to give settings that the MCU can hold; a value out of its range becomes a finding."""
     bench = bench_of(model, file=reading.file, text=text, sha256=hashlib.sha256(text.encode()).hexdigest(),
-                     findings=tuple(findings))
+                     findings=findings)
     try:
         bench.settings()
     except WireFault as fault:
-        findings.append(Finding(grade=Grade.REFUSE, file=reading.file, line=0, what=fault.where,
-                                expected=fault.expected, found=fault.found,
-                                remedy="what the file asks for does not fit into the MCU's settings"))
-        return None
-    return bench
+        unfit = Finding(grade=Grade.REFUSE, file=reading.file, line=0, what=fault.where, expected=fault.expected,
+                        found=fault.found, remedy="what the file asks for does not fit into the MCU's settings")
+        return None, (unfit, *findings)
+    return bench, findings
 
 
 def bench_schema() -> dict[str, Any]:

@@ -8,7 +8,6 @@ every value is a float in SI units; a percentage is a fraction.
 
 import re
 import unicodedata
-from difflib import get_close_matches
 from enum import StrEnum
 from fractions import Fraction
 
@@ -92,6 +91,11 @@ EXAMPLES: dict[Dimension, str] = {
 
 # Second spellings that mean exactly the same symbol: micro sign and Greek mu, ohm sign and Greek omega, ASCII forms.
 _SPELLINGS = (("\u03bc", "µ"), ("\u2126", "Ω"), ("Ohm", "Ω"), ("degC", "°C"))
+# Units written out: suggested, never accepted.  Similar-looking units are not suggested: 'mmV' is no 'mV'.
+_WRITTEN_OUT = {"sec": "s", "secs": "s", "second": "s", "seconds": "s", "mins": "min", "minute": "min",
+                "minutes": "min", "hr": "h", "hrs": "h", "hour": "h", "hours": "h", "day": "d", "days": "d",
+                "volt": "V", "volts": "V", "amp": "A", "amps": "A", "ampere": "A", "ohms": "Ω", "kohm": "kΩ",
+                "gohm": "GΩ", "percent": "%", "c": "°C"}
 _NUMBER = re.compile(r"[+-]?(?:0|[1-9][0-9]{0,14})(?:\.[0-9]{1,15})?(?:[eE][+-]?[0-9]{1,2})?", re.ASCII)
 _LETTER_POINT = re.compile(r"([0-9]*)([RKMG])([0-9]+)(?: ?Ω)?", re.ASCII)  # IEC 60062: 4K7, R47
 LONGEST = 40  # characters; no honest quantity is longer
@@ -187,12 +191,12 @@ def _unit_mended(text: str, dimension: Dimension) -> str:
     unit = _canonical(text[match.end():].strip())
     units = UNITS[dimension]
     if unit not in units:
-        folded = [u for u in units if u.casefold() == unit.casefold()]
-        alike = get_close_matches(unit, [u for u in units if u], 1, 0.6) if len(unit) > 1 else []
-        close = folded or alike
-        if not close or len(folded) > 1:  # 'mv' may be milli or mega
+        folded = (u for u in units if u.casefold() == unit.casefold())
+        near = {_WRITTEN_OUT.get(unit.casefold(), ""), f"{unit}/s", *folded}
+        known = [u for u in near if u and u in units]
+        if len(known) != 1:  # 'mv' may be milli or mega
             return ""
-        unit = close[0]
+        unit = known[0]
     if dimension is Dimension.INTEGER and Fraction(match.group()).denominator != 1:
         return ""
     return f"{match.group()} {unit}".strip()

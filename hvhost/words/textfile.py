@@ -238,8 +238,9 @@ _PROBLEMS: dict[str, tuple[str, str, str]] = {
 
 
 def _syntax_fault(reader: _Reader, error: yaml.MarkedYAMLError) -> None:
-    in_quotes = "quoted scalar" in (error.context or "")  # the place of interest is where the quote began
-    mark = (error.context_mark if in_quotes else None) or error.problem_mark or error.context_mark
+    # Where the quote or the line without colon began says more than where the parser gave up.
+    at_start = any(words in (error.context or "") for words in ("quoted scalar", "simple key"))
+    mark = (error.context_mark if at_start else None) or error.problem_mark or error.context_mark
     line = mark.line + 1 if mark else 0
     if any(f.line == line for f in reader.findings):
         return  # a tab or control character on this line has been told already
