@@ -311,9 +311,10 @@ def split_body(body: bytes) -> tuple[str, list[str], dict[str, str]]:
     pairs: dict[str, str] = {}
     for part in rest:
         key, equals, value = part.partition("=")
-        if not equals and not pairs:
+        option = bool(equals and value) and value[0] != "=" and key.isalnum() and key.islower()  # base64 ends with =
+        if not option and not pairs:
             words.append(part)
-        elif not equals or not key or not value:
+        elif not option:
             raise WireFault("fields, then key=value", repr(part), verb)
         elif key in pairs:
             raise WireFault("each key once", repr(key), verb)

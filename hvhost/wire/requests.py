@@ -16,6 +16,8 @@ from hvhost.words.errors import CommandRefused
 QUEUE_MAX = 64  # requests that wait; a plan's segments come by sixteens
 ANSWER_S = 0.250  # a repeat is due after this; an answer behind a full block needs 60 ms at 115 200 Bd
 TRIES = 4
+UNTAKEN = frozenset({Err.UNKNOWN, Err.MALFORMED, Err.RANGE})  # answers after which the number may still be free
+EPSILON_S = 1e-6  # a caller that wakes at the told deadline is not too early by a rounding
 WRAP = 1 << 32
 
 
@@ -75,7 +77,7 @@ class Requests:
             out = self.out = self.waiting.popleft()
             self._number(out, self._next)
             self._next = (self._next + 1) % WRAP
-        elif out.tries and (now_s < out.due_s or out.tries >= out.tries_max):
+        elif out.tries and (now_s < out.due_s - EPSILON_S or out.tries >= out.tries_max):
             return b""
         out.tries += 1
         out.due_s = now_s + ANSWER_S
@@ -95,7 +97,8 @@ class Requests:
             self._next, out.tries = out.number + 1, 0
             return None
         self.out, self._last = None, (answer.n, answer.verb)
-        self._lowest = self._next
+        untaken = isinstance(answer, Refusal) and answer.code in UNTAKEN
+        self._lowest = answer.n if untaken else self._next
         return out
 
     @staticmethod
@@ -105,13 +108,15 @@ class Requests:
     def expected(self, answer: Ok | Refusal) -> bool:
         """Whether an answer that fits no outstanding request is a late or repeated one of a request once sent."""
         out = self.out
+        if isinstance(answer, Refusal) and answer.code == Err.NUMBER:
+            return True  # the twin of one that led to another number
         return (answer.n, answer.verb) == self._last or self._lowest <= answer.n < self._next or (
-            out is not None and out.number == answer.n)
+            out is not None and out.number == answer.n and self._verb_fits(out, answer))
 
     def expired(self, now_s: float) -> Waiting | None:
         """Give up the outstanding request where its tries are used up."""
         out = self.out
-        if out is None or out.tries < out.tries_max or now_s < out.due_s:
+        if out is None or out.tries < out.tries_max or now_s < out.due_s - EPSILON_S:
             return None
         self.out = None
         return out

@@ -15,6 +15,7 @@ from hvhost.wire.vocabulary import EventKind, Fitted, HostRule, Inputs, McuState
 
 REPEAT_S = 0.020
 ESCALATE_S = 0.100
+EPSILON_S = 1e-6  # a caller that wakes at the told deadline is not too early by a rounding
 ARCS_MAX = 8  # arcs waiting for an answer; a ninth within 100 ms is no longer a matter of pausing: it cuts
 WRAP = 1 << 32
 
@@ -119,7 +120,7 @@ class Stops:
             return b""
         out = b""
         for pending in self._all():
-            if now_s >= pending.due_s:
+            if now_s >= pending.due_s - EPSILON_S:
                 pending.due_s = now_s + REPEAT_S
                 out += pending.line
         return out
@@ -132,7 +133,7 @@ class Stops:
     def overdue(self, now_s: float) -> tuple[str, int] | None:
         """Return verb and number of a lower or arc that has waited too long for its answer."""
         for pending in self._all():
-            if pending.verb != "cut" and now_s - pending.decided_s >= ESCALATE_S - 1e-9:
+            if pending.verb != "cut" and now_s - pending.decided_s >= ESCALATE_S - EPSILON_S:
                 return pending.verb, pending.number
         return None
 

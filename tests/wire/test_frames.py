@@ -109,3 +109,9 @@ def test_optional_fields_are_written_only_where_given() -> None:
     assert encode_request(Segment(n=1, session=2, v=3, i=4, ticks=5)) == b"seg 1 00000002 3 4 5"
     full = Arm(n=1, session=2, arm=3, tag=4, settings=5, event=6, pause=(3, 1000, 60000), tighter={"oc": 9})
     assert encode_request(full) == b"arm 1 00000002 3 00000004 00000005 6 pause=3,1000,60000 oc=9"
+
+
+def test_base64_with_padding_is_a_field_not_an_option() -> None:
+    """A last field that ends with equals signs is not read as ``key=value``, whatever its letters."""
+    for text in ("Zm9vYg==", "abcd", "abc=", "ab=="):
+        assert decode_received(f"ok 1 snap 3 {text}".encode(), "ss") == Ok(n=1, verb="snap", words=("3", text))
