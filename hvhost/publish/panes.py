@@ -11,9 +11,9 @@ from rich.text import Text
 
 from hvhost.publish import wording
 from hvhost.publish.digits import best_size, big_lines
-from hvhost.publish.snapshot import EventLine, HoldView, InputJudgement, RunView, Severity, Snapshot
+from hvhost.publish.snapshot import EventLine, HoldView, InputJudgement, RunView, Severity, Snapshot, StopState
 from hvhost.publish.trend import braille_plot, nice_top
-from hvhost.publish.wording import Scale, View, fine, left, local_time, printable, span
+from hvhost.publish.wording import Scale, View, fine, left, local_time, measured, printable, span
 
 ALERT = "bold white on red"
 STATE = "bold reverse"
@@ -21,7 +21,7 @@ OLD = "yellow"
 HEAD = "reverse"
 MARKS = {InputJudgement.OK: "ok", InputJudgement.NOT_OK: "!!", InputJudgement.UNKNOWN: "??"}
 EVENT_MARKS = {Severity.NOTE: "  ", Severity.ATTENTION: "! ", Severity.TRIP: "!!"}
-LABEL = 8  # columns of a trend's axis
+LABEL = 11  # columns of a trend's axis
 
 
 def wrapped(text: str, width: int, most: int, mark: str = "") -> list[str]:
@@ -56,22 +56,24 @@ def header(snapshot: Snapshot, view: View, width: int) -> Text:
 
 
 def state_line(snapshot: Snapshot, view: View) -> Text:
-    """State, voltage, power, link."""
-    unknown = wording.output_unknown(snapshot, view)
+    """State, voltage, power, what became of a cut, link."""
     line = Text(" ")
-    line.append(f" {wording.state_words(snapshot) if view.connected else 'STATE UNKNOWN'} ", STATE)
-    voltage = "VOLTAGE UNKNOWN" if unknown else wording.voltage_words(snapshot)
-    parts = [voltage, wording.link_words(snapshot) if view.connected else "NO DAEMON"]
-    if snapshot.power_words:
-        parts.insert(1, printable(snapshot.power_words))
-    line.append("  " + "  ·  ".join(parts), "bold")
+    line.append(f" {wording.state_words(snapshot, view)} ", STATE)
+    parts = [wording.voltage_words(snapshot), printable(snapshot.power_words)]
+    if view.connected:
+        parts += [wording.link_words(snapshot), "" if snapshot.stop is StopState.CUT_NOT_CONFIRMED else snapshot.stop]
+    else:
+        parts += ["NO DAEMON"]
+    line.append("  " + " · ".join(filter(None, parts)), "bold")
     return line
 
 
 def readbacks(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Text]:
-    """Return kV and mA in large digits side by side; hatched when old, no digits when unknown."""
+    """Return kV and mA in large digits side by side, in at most ``rows``; hatched when old, none when unknown."""
     half = width // 2
     panes = [_large(snapshot, view, scale, value, half - 1, rows) for scale, value in _readings(snapshot)]
+    taken = max(len(pane) for pane in panes)
+    panes = [pane + [""] * (taken - len(pane)) for pane in panes]
     return [Text(f" {first:<{half - 1}} {second}", style=OLD if wording.reading_old(snapshot, view) else "bold")
             for first, second in zip(*panes, strict=True)]
 
@@ -85,16 +87,15 @@ def _readings(snapshot: Snapshot) -> tuple[tuple[Scale, float | None], tuple[Sca
 def _large(snapshot: Snapshot, view: View, scale: Scale, value: float | None, width: int, rows: int) -> list[str]:
     if value is None or wording.output_unknown(snapshot, view):
         words = wrapped(f"{scale.unit}: output unknown - use the emergency switching off", width - 2, rows)
-        above = (rows - len(words)) // 2
-        return [""] * above + words + [""] * (rows - above - len(words))
+        return ["", *words, ""][:rows]
     widest = f"{scale.number(-abs(snapshot.volts_full or 1.0) if scale.unit.endswith('V') else -snapshot.amps_full)}"
     number = scale.number(value).rjust(len(widest.lstrip("-")) + (snapshot.polarity < 0))
     size = best_size(number, width - len(scale.unit) - 2, rows)
     if size is None:
-        return [f"{number} {scale.unit}"[:width], *[""] * (rows - 1)]
+        return [f"{number} {scale.unit}"[:width]]
     drawn = big_lines(number, size, hatched=wording.reading_old(snapshot, view))
     drawn[-1] = f"{drawn[-1]} {scale.unit}"
-    return drawn + [""] * (rows - len(drawn))
+    return drawn
 
 
 def reading_line(snapshot: Snapshot, view: View) -> Text:
@@ -103,48 +104,45 @@ def reading_line(snapshot: Snapshot, view: View) -> Text:
     if reading is None or wording.output_unknown(snapshot, view):
         return Text(" readback: none younger than the lease", style="bold")
     sign = snapshot.polarity
-    volts, amps = fine(reading.volts, "V", sign), fine(reading.amps, "A", sign)
-    parts = [f"{volts} ± {_expanded(reading.u_volts, 'V')}", f"{amps} ± {_expanded(reading.u_amps, 'A')} (k=2)"]
+    parts = [measured(value, u, unit, sign) for value, u, unit in (
+        (reading.volts, reading.u_volts, "V"), (reading.amps, reading.u_amps, "A")) if value is not None]
+    parts.append("k=2")
     age = f"age {reading.age_s + view.since_s:.2f} s"
     parts.insert(0, f"OLD READING, {age}" if wording.reading_old(snapshot, view) else f"readback {age}")
     parts += [printable(flag).upper() for flag in reading.flags]
     return Text(" " + "  ".join(parts), style=OLD if wording.reading_old(snapshot, view) else "")
 
 
-def _expanded(u: float | None, unit: str) -> str:
-    return "U not known" if u is None else fine(2.0 * u, unit)
-
-
 def bars(snapshot: Snapshot, view: View, width: int) -> list[Text]:
     """Return a bar for volts and one for amps: readback filled, set-point S, limit L, and the room to the limit."""
     reading = None if wording.output_unknown(snapshot, view) else snapshot.reading
-    volts, amps = wording.volts_scale(snapshot), wording.amps_scale(snapshot)
-    return [
-        _bar(volts, reading.volts if reading else None, snapshot.set_volts, snapshot.ceiling_volts,
-             snapshot.volts_full, "ceiling", width),
-        _bar(amps, reading.amps if reading else None, snapshot.set_amps, snapshot.trip_amps,
-             snapshot.amps_full, "trip", width),
-    ]
+    quantities = (
+        (wording.volts_scale(snapshot), reading.volts if reading else None, snapshot.set_volts,
+         snapshot.ceiling_volts, snapshot.volts_full, "ceiling"),
+        (wording.amps_scale(snapshot), reading.amps if reading else None, snapshot.set_amps,
+         snapshot.trip_amps, snapshot.amps_full, "trip"),
+    )
+    words = [_margin(scale, value, set_point, limit, name) for scale, value, set_point, limit, _, name in quantities]
+    cells = width - max(map(len, words)) - 9
+    return [_bar(quantity, text, cells) for quantity, text in zip(quantities, words, strict=True)]
 
 
-def _bar(scale: Scale, value: float | None, set_point: float | None, limit: float | None, full: float, name: str,
-         width: int) -> Text:
-    label = f" {scale.unit:<2} "
+def _margin(scale: Scale, value: float | None, set_point: float | None, limit: float | None, name: str) -> str:
     room = None if value is None or limit is None else limit - value
     over = room is not None and room < 0.0
-    words = f" set {scale.text(set_point)}  {name} {scale.text(limit)}  " \
-            f"{'OVER by' if over else 'room'} {scale.size(room)}"
-    cells = max(8, width - len(label) - 46)
+    margin = f"{'OVER by' if over else 'room'} {scale.size(room)}"
+    return f"set {scale.text(set_point)}  {name} {scale.text(limit)}  {margin}"
+
+
+def _bar(quantity: tuple[Scale, float | None, float | None, float | None, float, str], words: str, cells: int) -> Text:
+    scale, value, set_point, limit, full, _ = quantity
     top = max(full, limit or 0.0, set_point or 0.0) or 1.0
     filled = 0 if value is None else max(0, min(cells, round(value / top * cells)))
     drawn = list("█" * filled + "·" * (cells - filled))
     for mark, place in (("L", limit), ("S", set_point)):
-        if place is not None:
+        if place is not None and cells > 0:
             drawn[max(0, min(cells - 1, round(place / top * cells) - 1))] = mark
-    line = Text(f"{label}[")
-    line.append("".join(drawn))
-    line.append(f"]{words}", "bold" if over else "")
-    return line
+    return Text(f" {scale.unit:<2} [{''.join(drawn)}] {words}", style="bold" if "OVER" in words else "")
 
 
 def trends(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
@@ -164,7 +162,7 @@ def _trend(points: Sequence[tuple[float, float, float]], scale: Scale, width: in
     labels = [""] * rows
     labels[-1] = "0"
     if rows > 2:
-        labels[rows // 2] = span(over_s)
+        labels[rows // 2] = f"over {span(over_s)}"
     labels[0] = _axis(top * scale.polarity, unit)
     return [f"{label[: LABEL - 1]:>{LABEL - 1}} {line}" for label, line in zip(labels, plot, strict=True)]
 
@@ -175,56 +173,56 @@ def _axis(value: float, unit: str) -> str:
 
 
 def inputs(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
-    """Return the interlocks and other inputs by name: what hinders arming first, the rest in as few rows as needed."""
+    """Return the interlocks and other inputs by name: one a row where there are rows, else flowing.
+
+    What hinders arming comes first.
+    """
     wanted = sorted(snapshot.inputs, key=lambda one: one.judgement is InputJudgement.OK)
     if not wanted:
-        return [Text("inputs: unknown")]
-    texts = [(f"{MARKS[one.judgement]} {printable(one.name)}: {printable(one.state)}", one.judgement) for one in wanted]
-    if len(texts) <= rows:
-        return [_input(text, judgement) for text, judgement in texts]
+        return [Text("inputs: unknown", style="bold")]
+    named = [(f"{printable(one.name)} {printable(one.state)}", one.judgement) for one in wanted]
+    if len(named) <= rows:
+        return [_input(f"{MARKS[judgement]} {text}", judgement) for text, judgement in named]
     lines: list[Text] = []
-    for text, judgement in texts:
-        last = lines[-1] if lines else None
-        if last is not None and last.cell_len + cell_len(text) + 3 <= width:
-            last.append(" · ")
-            last.append_text(_input(text, judgement))
-        else:
-            lines.append(_input(text, judgement))
-    if len(lines) > rows:
-        lines = [*lines[: rows - 1], Text(f"and {len(texts) - _shown(lines[: rows - 1])} more")]
+    for group in (InputJudgement.NOT_OK, InputJudgement.UNKNOWN, InputJudgement.OK):
+        texts = [text for text, judgement in named if judgement is group]
+        if texts and len(lines) < rows:
+            flowing = wrapped(", ".join(texts), width, rows - len(lines), f"{MARKS[group]} ")
+            lines += [_input(line, group) for line in flowing]
     return lines
-
-
-def _shown(lines: list[Text]) -> int:
-    return sum(line.plain.count(" · ") + 1 for line in lines)
 
 
 def _input(text: str, judgement: InputJudgement) -> Text:
     return Text(text, style="" if judgement is InputJudgement.OK else "bold")
 
 
-def run_lines(snapshot: Snapshot, view: View, width: int) -> list[Text]:
-    """Return what runs, or what is asked for: plan, specimen, step, hold clock, readings, arcs, end."""
+def run_lines(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Text]:
+    """Return what runs, or what is asked for: verdict, hold clock, step, readings, arcs, end, plan, specimen."""
     if snapshot.arm is not None:
-        return _arm_lines(snapshot)
-    run = snapshot.run
-    if run is None:
-        return [Text("no run"), *([Text(snapshot.verdict_text, style="bold")] if snapshot.verdict_text else [])]
-    lines = [Text(f"{'last run' if run.ended else 'run'} {run.run_id}: {run.plan or run.kind}"),
-             Text(f"specimen {run.specimen or '--'}  operator {run.operator or '--'}")]
+        return _arm_lines(snapshot, rows)
+    run, verdict = snapshot.run, []
     if snapshot.verdict_text:
-        lines.insert(0, Text(f"verdict: {snapshot.verdict_text}", style="bold"))
-    if run.step_total and not run.ended:
-        lines.append(Text(f"step {run.step_number}/{run.step_total} {run.step_name} {run.step_text}".rstrip()))
-    if run.hold is not None and not run.ended:
-        lines.insert(0, hold_clock(run.hold, view.since_s, width))
-    lines.append(Text(_timing(run, snapshot, view)))
-    if run.folder:
-        lines.append(Text(run.folder))
-    return [Text(printable(line.plain), style=line.style) for line in lines]
+        verdict = [Text(f"verdict: {printable(snapshot.verdict_text)}", style="bold")]
+    if run is None:
+        return [*verdict, Text("no run")]
+    since_s = 0.0 if wording.output_unknown(snapshot, view) else view.since_s
+    lines = [] if run.ended or run.hold is None else [hold_clock(run.hold, since_s, width)]
+    step = f"step {run.step_number}/{run.step_total} {run.step_name}"
+    timing = _timing(run, snapshot, view)
+    who = [f"{'last run' if run.ended else 'run'} {run.run_id}: {run.plan or run.kind}",
+           f"specimen {run.specimen or '--'}  operator {run.operator or '--'}"]
+    if len(verdict) + len(lines) + 5 <= rows:
+        texts = [*([f"{step}: {run.step_text}"] if run.step_total else []), timing, *who, run.folder]
+    elif lines:
+        texts = [f"{step}  {timing}", "  ".join(who)]
+    elif run.step_total and not run.ended:
+        texts = [f"{step}: {run.step_text}", timing, "  ".join(who)]
+    else:
+        texts = [f"{'  '.join(who)}  {timing}"]
+    return [*verdict, *lines, *(Text(printable(text)) for text in texts if text)]
 
 
-def _arm_lines(snapshot: Snapshot) -> list[Text]:
+def _arm_lines(snapshot: Snapshot, rows: int) -> list[Text]:
     arm = snapshot.arm
     assert arm is not None
     highest = wording.volts_scale(snapshot).text(arm.volts_highest)
@@ -232,6 +230,8 @@ def _arm_lines(snapshot: Snapshot) -> list[Text]:
              f"highest {highest}  for {span(arm.duration_s)} at most", f"asked by {arm.asked_by}"]
     if arm.simulated_press:
         lines.append("the press is simulated (stand-in)")
+    if len(lines) > rows:
+        lines = ["  ".join(lines[:2]), "  ".join(lines[2:])]
     return [Text(printable(line), style="bold") for line in lines]
 
 
@@ -265,17 +265,13 @@ def _timing(run: RunView, snapshot: Snapshot, view: View) -> str:
 
 
 def health(snapshot: Snapshot) -> Text:
-    """Return who has control, the record, the link's counts and what outlets lost."""
+    """Return the record, who has control, the link's counts and what outlets lost."""
     quality, record = snapshot.quality, snapshot.record
-    words = [f"control: {printable(snapshot.seat) or 'free'}",
-             f"record {'ok' if record.ok else 'FAILED'}{' ' + printable(record.text) if record.text else ''}",
-             f"garbled {quality.garbled} gaps {quality.gaps} missed {quality.missed}"]
     lost = sum(one.dropped + one.failed for one in snapshot.outlets)
-    words.append(f"outlets lost {lost}")
-    line = Text(" " + " · ".join(words))
-    if not record.ok:
-        line.stylize("bold")
-    return line
+    words = [f"record {'ok' if record.ok else 'FAILED'}{' ' + printable(record.text) if record.text else ''}",
+             f"control {printable(snapshot.seat) or 'free'}",
+             f"garbled {quality.garbled} gaps {quality.gaps} missed {quality.missed}", f"lost {lost}"]
+    return Text(" " + " · ".join(words), style="" if record.ok else "bold")
 
 
 def events(snapshot: Snapshot, view: View, rows: int) -> list[Text]:

@@ -55,7 +55,7 @@ def _merged(early: TrendBucket, late: TrendBucket) -> TrendBucket:
 
 
 def braille_plot(points: Sequence[tuple[float, float, float]], width: int, rows: int, top: float) -> list[str]:
-    """Return ``rows`` lines of ``width`` braille cells that draw spans (time, low, high) between 0 and ``top``.
+    """Return ``rows`` lines of ``width`` cells, braille or blank: spans (time, low, high) between 0 and ``top``.
 
     The latest point stands at the right edge.  Neighbours are joined, gaps in time are left open; what lies outside
     0..top is drawn at the edge.
@@ -65,7 +65,7 @@ def braille_plot(points: Sequence[tuple[float, float, float]], width: int, rows:
     grid = [[0] * width for _ in range(rows)]
     if points and top > 0.0:
         _draw(grid, points, top)
-    return ["".join(chr(_BASE + cell) for cell in row) for row in grid]
+    return ["".join(chr(_BASE + cell) if cell else " " for cell in row) for row in grid]
 
 
 def _draw(grid: list[list[int]], points: Sequence[tuple[float, float, float]], top: float) -> None:

@@ -17,10 +17,12 @@ from hvhost.publish.wording import View
 LEAST_WIDTH, LEAST_HEIGHT = 80, 24
 FIXED_ROWS = 8  # header, state, reading, two bars, health, next acts, footer
 MOST_ALERTS = 5
+WIDE, TALL = 110, 32  # from here on run and inputs stand side by side, and digits grow
 
 
 def screen(snapshot: Snapshot, view: View, width: int, height: int) -> list[Text]:
     """Return the picture of ``snapshot`` at this size."""
+    snapshot = wording.as_last_known(snapshot, view)
     if width < LEAST_WIDTH or height < LEAST_HEIGHT:
         lines = _small(snapshot, view, width, height)
     else:
@@ -47,19 +49,21 @@ def _clipped(line: Text, width: int) -> Text:
 
 def _full(snapshot: Snapshot, view: View, width: int, height: int) -> list[Text]:
     alerts = _alert_lines(snapshot, view, width, MOST_ALERTS)
-    cautions = wrapped(wording.caution(snapshot), width - 2, 4) if wording.caution(snapshot) else []
+    words = wording.caution(snapshot)
+    cautions = [Text(f" {line}", style="bold") for line in wrapped(words, width - 2, 4)] if words else []
     spare = height - FIXED_ROWS - len(alerts) - len(cautions)
-    digits = _digit_rows(width, height, spare)
-    spare -= digits
-    pair, event_rows, trend_rows = _share(spare, height)
+    readbacks = panes.readbacks(snapshot, view, width, _digit_rows(width, height, spare))
+    digits = len(readbacks)
+    if width >= WIDE and height >= TALL:
+        middle = _side_by_side(snapshot, view, width, min(8, spare - digits - 2))
+    else:
+        middle = _stacked(snapshot, view, width, spare - digits - 1)
+    spare -= digits + len(middle)
+    event_rows, trend_rows = _share(spare, height) if snapshot.trend else (max(0, spare), 0)
     lines = [panes.header(snapshot, view, width), panes.state_line(snapshot, view), *alerts]
-    lines += panes.readbacks(snapshot, view, width, digits)
-    lines += [panes.reading_line(snapshot, view), *panes.bars(snapshot, view, width)]
-    if trend_rows:
-        lines += panes.trends(snapshot, width, trend_rows)
-    lines += _pair(snapshot, view, width, pair)
-    lines += [Text(f" {line}", style="bold") for line in cautions]
-    lines.append(panes.health(snapshot))
+    lines += [*readbacks, panes.reading_line(snapshot, view), *panes.bars(snapshot, view, width)]
+    lines += panes.trends(snapshot, width, trend_rows) if trend_rows else []
+    lines += [*middle, *cautions, panes.health(snapshot)]
     shown = panes.events(snapshot, view, event_rows)
     lines += shown + [Text("")] * (event_rows - len(shown))
     return [*lines, panes.next_line(snapshot, view), panes.footer(view, width)]
@@ -69,19 +73,15 @@ def _digit_rows(width: int, height: int, spare: int) -> int:
     """Return the rows of the large digits: five on a small terminal, more where width and height have them."""
     if spare < 10:
         return 3
-    wanted = 5 if width < 116 or height < 30 else 7 if width < 180 or height < 44 else 14 if height >= 56 else 11
-    return min(wanted + (wanted > 5), spare - 5)
+    wanted = 5 if width < WIDE or height < TALL else 8 if width < 180 or height < 50 else 14
+    return min(wanted, spare - 5)
 
 
-def _share(spare: int, height: int) -> tuple[int, int, int]:
-    """Return rows for run and inputs, for events, for the trend (none below three)."""
-    pair = min(4 if height < 30 else 8, max(3, spare - 2))
-    spare -= pair
-    event_rows = min(3 if height < 30 else 6 if height < 44 else 10, max(0, spare))
+def _share(spare: int, height: int) -> tuple[int, int]:
+    """Return rows for events and for the trend (none below three)."""
+    event_rows = min(2 if height < TALL else 6 if height < 50 else 12, max(0, spare))
     trend = spare - event_rows
-    if trend < 3:
-        return pair, event_rows + trend, 0
-    return pair, event_rows, trend
+    return (event_rows, trend) if trend >= 3 else (event_rows + trend, 0)
 
 
 def _alert_lines(snapshot: Snapshot, view: View, width: int, most: int) -> list[Text]:
@@ -89,13 +89,20 @@ def _alert_lines(snapshot: Snapshot, view: View, width: int, most: int) -> list[
     return [Text(f" {line} ", style=ALERT) for line in lines[:most]]
 
 
-def _pair(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Text]:
-    """Return run and inputs side by side."""
+def _stacked(snapshot: Snapshot, view: View, width: int, most: int) -> list[Text]:
+    """Return the run above the inputs, each over the whole width, in at most ``most`` rows."""
+    run = panes.run_lines(snapshot, view, width - 2, 3)[:3]
+    inputs = panes.inputs(snapshot, width - 2, max(1, min(3, most - len(run))))
+    return [Text.assemble(" ", line) for line in [*run, *inputs][: max(1, most)]]
+
+
+def _side_by_side(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Text]:
+    """Return the run at the left, the inputs at the right."""
     left_width = width * 6 // 10
-    left = panes.run_lines(snapshot, view, left_width - 2)[:rows]
+    left = panes.run_lines(snapshot, view, left_width - 2, rows)[:rows]
     right = panes.inputs(snapshot, width - left_width - 1, rows)[:rows]
     lines = []
-    for row in range(rows):
+    for row in range(max(len(left), len(right))):
         line = Text(" ")
         run = left[row] if row < len(left) else Text("")
         line.append(_cells(run.plain, left_width - 2), run.style)

@@ -5,11 +5,19 @@ full scale asks for, so that its point stands still while it changes.
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime, tzinfo
 
 from hvhost.bench import cautions
-from hvhost.publish.snapshot import LinkState, Permission, Phase, Snapshot, StopState, VoltageState
+from hvhost.publish.snapshot import (
+    InputJudgement,
+    LinkState,
+    Permission,
+    Phase,
+    Snapshot,
+    StopState,
+    VoltageState,
+)
 
 DIGITS = 4  # of the full scale: a bench chain is good for a tenth of a percent
 ENERGISED = frozenset((Permission.RUNNING, Permission.PAUSING, Permission.LOWERING))
@@ -70,15 +78,29 @@ def amps_scale(snapshot: Snapshot) -> Scale:
     return Scale(snapshot.amps_full, "A", snapshot.polarity)
 
 
-def fine(value: float | None, unit: str, polarity: int = 1) -> str:
-    """Return four significant digits with the prefix that suits the value itself: 12.34 µA."""
+def fine(value: float | None, unit: str, polarity: int = 1, digits: int = 4) -> str:
+    """Return so many significant digits with the prefix that suits the value itself: 12.34 µA."""
     if value is None or not math.isfinite(value):
         return "--"
     size = abs(value)
-    factor, prefix = next(((f, p) for f, p in _UNITS if size >= f * 0.99995), _UNITS[-1])
-    decimals = max(0, 3 - max(0, math.floor(math.log10(max(size / factor, 1e-3)) + 1e-9)))
+    if size == 0.0:
+        return f"0 {unit}"
+    factor, prefix = next(((f, p) for f, p in _UNITS if size >= f * (1.0 - 0.5 * 10.0**-digits)), _UNITS[-1])
+    decimals = max(0, digits - 1 - max(0, math.floor(math.log10(max(size / factor, 1e-3)) + 1e-9)))
     text = f"{value * polarity / factor:.{decimals}f}"
     return f"{text.lstrip('-') if not text.strip('-0.') else text} {prefix}{unit}"
+
+
+def measured(value: float, u: float | None, unit: str, polarity: int = 1) -> str:
+    """Return the value with its expanded uncertainty (k = 2), both to the second digit of it: (17.996 ± 0.052) kV."""
+    if u is None or not math.isfinite(u) or u <= 0.0 or not math.isfinite(value):
+        return f"{fine(value, unit, polarity)}, U not known"
+    expanded = 2.0 * u
+    factor, prefix = next(((f, p) for f, p in _UNITS if max(abs(value), expanded) >= f), _UNITS[-1])
+    decimals = max(0, 1 - math.floor(math.log10(expanded / factor)))
+    shown = f"{value * polarity / factor:.{decimals}f}"
+    shown = shown.lstrip("-") if not shown.strip("-0.") else shown
+    return f"({shown} ± {expanded / factor:.{decimals}f}) {prefix}{unit}"
 
 
 def span(seconds: float | None) -> str:
@@ -114,8 +136,10 @@ def printable(text: str) -> str:
     return text if text.isprintable() else "".join(c if c.isprintable() else "?" for c in text)
 
 
-def state_words(snapshot: Snapshot) -> str:
-    """Return the state in capitals, latch first: 'TRIPPED', 'RUNNING: HOLD', 'IDLE'."""
+def state_words(snapshot: Snapshot, view: View) -> str:
+    """Return the state in capitals, latch first: 'TRIPPED', 'RUNNING: HOLD', 'IDLE'; 'LAST: ...' where unknown."""
+    if not view.connected or snapshot.link is LinkState.LOST:
+        return f"LAST KNOWN: {state_words(replace(snapshot, link=LinkState.GREETED), View())}"
     permission = snapshot.permission
     words = str(permission).upper()
     if permission is Permission.RUNNING and snapshot.phase is not Phase.NONE:
@@ -131,18 +155,32 @@ def link_words(snapshot: Snapshot) -> str:
     return f"link {link}" if snapshot.link is LinkState.GREETED else f"LINK {link.upper()}"
 
 
+def as_last_known(snapshot: Snapshot, view: View) -> Snapshot:
+    """Return the snapshot as it may be shown: where the output is unknown nothing else is vouched for either."""
+    if not output_unknown(snapshot, view):
+        return snapshot
+    inputs = tuple(replace(one, state=f"last {one.state}" if one.state != "unknown" else one.state,
+                           judgement=InputJudgement.UNKNOWN) for one in snapshot.inputs)
+    return replace(snapshot, voltage=VoltageState.UNKNOWN, power_words="", inputs=inputs, set_volts=None,
+                   set_amps=None)
+
+
 def voltage_words(snapshot: Snapshot) -> str:
-    """Return what is known of the voltage, with the daemon's explanation."""
-    words = f"VOLTAGE {str(snapshot.voltage).upper()}"
-    extra = snapshot.voltage_text
-    return f"{words} ({printable(extra)})" if extra and extra.lower() != str(snapshot.voltage) else words
+    """Return what is known of the voltage."""
+    return f"VOLTAGE {str(snapshot.voltage).upper()}"
+
+
+def voltage_reason(snapshot: Snapshot) -> str:
+    """Return the daemon's explanation of the voltage's state, '' where it only repeats it."""
+    text = printable(snapshot.voltage_text)
+    return "" if text.lower() == str(snapshot.voltage) else text
 
 
 def alerts(snapshot: Snapshot, view: View) -> list[str]:
     """Return what must be seen first, most urgent first."""
     found, age_s = [], view.since_s
     if not view.connected:
-        found.append(f"DAEMON GONE: {cautions.OUTPUT_UNKNOWN}")
+        found.append(f"DAEMON GONE: {cautions.OUTPUT_UNKNOWN.upper()}")
     elif output_unknown(snapshot, view):
         found.append(cautions.OUTPUT_UNKNOWN.upper())
     if snapshot.stop is StopState.CUT_NOT_CONFIRMED:
@@ -196,6 +234,8 @@ def caution(snapshot: Snapshot) -> str:
     if snapshot.permission not in (Permission.IDLE, Permission.LOWERING):
         return ""
     parts = []
+    if voltage_reason(snapshot):
+        parts.append(f"Voltage {snapshot.voltage}: {voltage_reason(snapshot)}.")
     if snapshot.bleeds_passed is not None:
         parts.append(f"{snapshot.bleeds_passed:.1f} bleed times since the cut.")
     if snapshot.discharge_text:

@@ -44,8 +44,8 @@ INPUTS_LIT = tuple(
         one.name, one.state)) for one in INPUTS_OFF)
 
 
-def _events(*texts: tuple[str, Severity]) -> tuple[EventLine, ...]:
-    first = NOW_NS - len(texts) * 1_730_000_000
+def _events(*texts: tuple[str, Severity], late_s: float = 40.0) -> tuple[EventLine, ...]:
+    first = NOW_NS - int(late_s * 1e9) - len(texts) * 1_730_000_000
     return tuple(EventLine(utc_ns=first + n * 1_730_000_000, text=text, severity=severity, number=n + 1)
                  for n, (text, severity) in enumerate(texts))
 
@@ -82,8 +82,8 @@ def _trend(end_v: float, until_s: float = 78.0, collapse_s: float | None = None)
 
 
 def _reading(volts: float, amps: float, age_s: float = 0.04, flags: tuple[str, ...] = ()) -> Reading:
-    return Reading(volts=volts, amps=amps, u_volts=26.0, u_amps=1.1e-6, volts_min=volts - 9, volts_max=volts + 11,
-                   amps_min=amps, amps_max=amps, age_s=age_s, flags=flags)
+    return Reading(volts=volts, amps=amps, u_volts=8.0 + volts * 1e-3, u_amps=1.1e-6, volts_min=volts - 9,
+                   volts_max=volts + 11, amps_min=amps, amps_max=amps, age_s=age_s, flags=flags)
 
 
 RUN = RunView(run_id="3f2a91c7", plan="withstand.yaml", specimen="S-1042", operator="bob", step_number=2,
@@ -93,7 +93,7 @@ RUN = RunView(run_id="3f2a91c7", plan="withstand.yaml", specimen="S-1042", opera
 
 IDLE = Snapshot(
     utc_ns=NOW_NS, now_s=1078.0, seq=812, bench="demo", bench_title="Demo bench 25 kV", port="/dev/ttyACM0",
-    link=LinkState.GREETED, voltage=VoltageState.BELOW, voltage_text="12 V ± 21 V", power_words="power relay open",
+    link=LinkState.GREETED, voltage=VoltageState.BELOW, voltage_text="95 % bound 28 V", power_words="power relay open",
     set_volts=0.0, set_amps=0.0, reading=_reading(12.0, 2e-7), volts_full=25e3, amps_full=4e-3, ceiling_volts=25e3,
     trip_amps=3e-3, inputs=INPUTS_OFF, seat="bob (pid 4211)", events=EVENTS[:2], trend=(),
     next_acts=("hvhost run PLAN --specimen ID", "hvhost check FILE"), quality=LinkQuality(),
@@ -109,7 +109,7 @@ RUNNING = replace(
 TRIPPED_EVENTS = (*EVENTS, *_events(
     ("BREAKDOWN at 17.99 kV: readback fell 16.3 kV in 3 samples, kind not inspected", Severity.TRIP),
     ("cut by the board: inhibit, clear, zero, relay", Severity.TRIP),
-    ("cut 4 confirmed, 2.1 ms after the sample", Severity.NOTE),
+    ("cut 4 confirmed, 2.1 ms after the sample", Severity.NOTE), late_s=3.0,
 ))
 TRIPPED = replace(
     RUNNING, permission=Permission.IDLE, phase=Phase.NONE, latched=("breakdown",), voltage=VoltageState.FALLING,
@@ -167,7 +167,8 @@ def _states() -> dict[str, tuple[Snapshot, View]]:
                                 replace(one, state="unknown", judgement=UNKNOWN) for one in INPUTS_OFF),
                             next_acts=("see to the port: /dev/ttyACM0 is missing",)), plain),
         "observe only": (replace(IDLE, link=LinkState.OBSERVE, events=(*EVENTS[:1], *_events(
-            ("settings differ: v_max is 20.00 kV in the bench file, 25.00 kV in the board", Severity.ATTENTION))),
+            ("settings differ: v_max is 20.00 kV in the bench file, 25.00 kV in the board", Severity.ATTENTION),
+            late_s=2.0)),
             next_acts=("hvhost commission BENCH with the interlock open", "hvhost lower", "hvhost cut")), plain),
         "lost": (lost, plain),
         "old reading": (replace(RUNNING, reading=_reading(17_996.0, 2.46e-5, 0.21)), plain),
