@@ -1,6 +1,6 @@
-"""What the simulated plant is made of: one frozen table per part, two presets, and `key=value` changes.
+"""What the simulated plant is made of: one frozen table per part, presets, and `key=value` changes.
 
-SI units inside.  The presets are benches of their own; `demo` and `small` match the two example bench files.
+SI units inside.  `demo` and `small` match the two example bench files; `gap` is `demo` with another specimen.
 """
 
 from collections.abc import Iterable
@@ -180,7 +180,14 @@ def small() -> PlantParams:
         contacts=ContactParams(arm_input=False))
 
 
-PROFILES = {"demo": demo, "small": small}
+def gap() -> PlantParams:
+    """The demo bench with a sphere gap in air instead of a solid: it recovers after every breakdown."""
+    return replace(demo(), name="gap", specimen=SpecimenParams(
+        capacitance_f=40e-12, insulation_ohm=10e12, branches=(), strength_v=16e3, strength_shape=40.0, lag_s=0.1,
+        self_restoring=True))
+
+
+PROFILES = {"demo": demo, "gap": gap, "small": small}
 
 _DIMENSIONS = (("_v_per_s", Dimension.VOLT_PER_SECOND), ("_v", Dimension.VOLT), ("_a", Dimension.AMP),
                ("_f", Dimension.FARAD), ("_ohm", Dimension.OHM), ("_s", Dimension.SECOND), ("_hz", Dimension.HERTZ))

@@ -8,7 +8,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from hvhost.standin.faults import FAULTS, FaultBook, Place, parse_fault
-from hvhost.standin.params import demo, small
+from hvhost.standin.params import demo, gap, small
 from hvhost.standin.plant import Plant
 from hvhost.wire.vocabulary import Inputs
 from tests.standin.benches import MS, cut, fragile, kinds, live, run, tough
@@ -190,6 +190,25 @@ def test_a_gap_restrikes_when_its_limit_is_below_the_holding_current() -> None:
     seen = kinds(plant)
     assert seen.count("quench") > 2
     assert seen.count("restrike") + seen.count("arc") > 2
+
+
+def test_gap_profile_comes_back_to_full_strength() -> None:
+    """The gap breaks down, goes out under the inhibit, and after seconds of rest needs its full voltage again."""
+    plant = live(gap(), 3)
+    volts = []
+    for _ in range(3):
+        plant.drive(inhibit=False, clear=False, relay=True)
+        for step in range(0, 20_000, 10):
+            run(plant, 5 * MS, float(step), 2e-3, dt_s=5 * MS)
+            if plant.specimen.arcing:
+                break
+        volts.append(next(e.value for e in plant.events if e.kind == "arc"))
+        plant.drive(inhibit=True, clear=True, relay=True)
+        run(plant, 3.0, 0.0, 0.0)
+        assert not plant.specimen.arcing
+        plant.events.clear()
+    assert all(13e3 < v < 18e3 for v in volts)
+    assert len(set(volts)) == 3
 
 
 def test_breakdown_voltage_depends_on_the_seed() -> None:
