@@ -14,9 +14,10 @@ Interface towards the MCU (time in seconds, forward only):
 The voltage on one node (output, cable and, behind the tip resistor, specimen) obeys
 C dv/dt = i - G v + s, with i the supply's current (0 to its limit), G every conductance, s what the absorbed charge
 drives back.  Within a step i is constant or v follows the reference, so each step is a closed form.  An arc splits the
-node at the tip resistor and is stepped by 20 us.
+node at the tip resistor and is stepped by 20 us until it burns steadily.
 """
 
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from math import exp
 
@@ -28,6 +29,7 @@ from hvhost.standin.specimen import Specimen
 from hvhost.standin.supply import Supply
 
 ARC_STEP_S = 20e-6
+STEADY_V = 0.5  # an arc this near to its final voltage is stepped as a whole
 DEAD_V = 1e-3  # below this with the supply off the node is taken as dead
 PLANT_PLACES = frozenset({Place.CHAIN, Place.CONTACT, Place.SUPPLY, Place.LOAD})
 
@@ -46,7 +48,7 @@ class Plant:
     """See the module's text.  Deterministic from ``seed`` and the calls."""
 
     __slots__ = ("_c", "_c_inside", "_c_node", "_decay", "_decay_key", "_g", "_g_inside", "_known", "_live",
-                 "_ripple_v", "_seen", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params",
+                 "_ripple_v", "_seen", "_tape", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params",
                  "specimen", "supply", "t_s", "v_node", "v_true")
 
     def __init__(self, params: PlantParams, seed: int, faults: FaultBook | None = None) -> None:
@@ -62,6 +64,7 @@ class Plant:
         self._decay, self._decay_key = 1.0, (0.0, 0.0)
         self._was_power = False
         self._seen = -1
+        self._tape: Iterator[tuple[int, int]] | None = None
         self._known: dict[str, float] = {}
         self._settle()
 
@@ -79,12 +82,18 @@ class Plant:
     def sample(self) -> tuple[int, int]:
         """Convert both monitors now."""
         codes = self.chain.convert(self.t_s, self._ripple_v, self._was_power)
+        if self._tape is not None and not self.contacts.inhibit:
+            codes = next(self._tape, codes)
         if self.faults.active:
             for name in ("v-spike", "i-spike", "v-dip"):
                 if (value := self.faults.take(name)) is not None:
                     self._event("fault on", value, name)
                     self._settle()
         return codes
+
+    def play(self, pairs: Iterable[tuple[int, int]]) -> None:
+        """Give a recording's raw codes in place of the plant's own while the output stage is released."""
+        self._tape = iter(pairs)
 
     @property
     def power(self) -> bool:
@@ -207,13 +216,13 @@ class Plant:
         tau_s = p.tip_ohm * self._c_node
         left_s = dt_s
         while left_s > 1e-12:
-            h = min(left_s, ARC_STEP_S)
-            left_s -= h
             v0 = self.v_node
             limit_a = supply.limit_a if self._live else 0.0
             v_inf = p.specimen.arc_v + limit_a * p.tip_ohm
             if self._live and v_inf > supply.reference_v > p.specimen.arc_v:
                 v_inf = supply.reference_v
+            h = left_s if abs(v0 - v_inf) < STEADY_V else min(left_s, ARC_STEP_S)
+            left_s -= h
             v1 = v_inf + (v0 - v_inf) * exp(-h / tau_s)
             supply_a = max(0.0, min(limit_a, (v_inf - p.specimen.arc_v) / p.tip_ohm))
             arc_a = supply_a - self._c_node * (v1 - v0) / h

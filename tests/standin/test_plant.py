@@ -317,6 +317,18 @@ def test_lead_off_takes_capacitance_and_leakage_away() -> None:
     assert plant.i_true == pytest.approx(10e3 / (1e9 + 1e9 / 2499.0), rel=1e-6)
 
 
+def test_recording_plays_while_the_output_is_released() -> None:
+    """A recording's codes stand in for the plant's from the release on, until they end."""
+    plant = live()
+    plant.drive(inhibit=True, clear=True, relay=True)
+    run(plant, MS, 0.0)
+    plant.play([(101, 11), (102, 12)])
+    assert plant.sample() == (0, 0)
+    plant.drive(inhibit=False, clear=False, relay=True)
+    run(plant, MS, 0.0)
+    assert [plant.sample() for _ in range(3)] == [(101, 11), (102, 12), (0, 0)]
+
+
 def test_new_specimen_is_whole_again() -> None:
     """Replacing a punctured specimen gives full strength and insulation."""
     plant = live(fragile(8e3))
