@@ -14,6 +14,7 @@ from hvhost.wire.vocabulary import Cause, EventKind, HostRule
 
 BEFORE, AFTER = 12, 4  # rows around the deciding sample in which the fall is looked for
 LEVEL_ROWS = 5  # the voltage before the fall is the median of these
+FALL_PART = 0.1  # the fall begins at the first row that is this part of it below all before
 SAME_S = 0.05  # what two observers report within this is one discharge
 NOT_INSPECTED = "kind not inspected"
 DISCHARGES = Cause.BREAKDOWN | Cause.ARC_COUNT | Cause.ARC_IN_REST
@@ -24,6 +25,7 @@ class Breakdown:
     """One disruptive discharge; ``to_stop_s`` is from the deciding sample to the MCU's stop, None where none came."""
 
     row: int
+    fall_row: int  # the first row below the level
     index: int
     at_s: float  # since the first row
     volts: Value
@@ -43,7 +45,8 @@ def breakdowns_of(run: RunData) -> tuple[Breakdown, ...]:
             last = out[-1]
             out[-1] = replace(last, seen_by=tuple(sorted({*last.seen_by, who})), arc=last.arc or arc)
             continue
-        out.append(Breakdown(row=row, index=int(run.index(row, row + 1)[0]), at_s=at_s, volts=voltage_before(run, row),
+        fall_row, volts = voltage_before(run, row)
+        out.append(Breakdown(row=row, fall_row=fall_row, index=int(run.index(row, row + 1)[0]), at_s=at_s, volts=volts,
                              seen_by=(who,), arc=arc, to_stop_s=_to_stop(run, at_s)))
     return tuple(out)
 
@@ -67,15 +70,17 @@ def _seen(run: RunData) -> set[tuple[int, str, int]]:
     return {(min(row, last), who, arc) for row, who, arc in found}
 
 
-def voltage_before(run: RunData, row: int) -> Value:
-    """Return the voltage just before the steepest fall around a row."""
+def voltage_before(run: RunData, row: int) -> tuple[int, Value]:
+    """Return the row at which the fall around a row begins, and the voltage just before it."""
     a, b = max(0, row - BEFORE), min(run.rows, row + AFTER)
     volts = run.volts(a, b)
-    fall = int(np.argmin(np.diff(volts))) if len(volts) > 1 else 0
-    level = volts[max(0, fall + 1 - LEVEL_ROWS) : fall + 1]
+    highest = np.maximum.accumulate(volts)
+    below = highest - volts
+    fall = int(np.argmax(below > FALL_PART * below.max())) if below.max() > 0.0 else len(volts)
+    level = volts[max(0, fall - LEVEL_ROWS) : fall] if fall else volts[:1]
     value = float(np.median(level))
     scatter = float(level.std(ddof=1)) if len(level) > 1 else 0.0
-    return Value(value, float(np.hypot(scale_u(run.meta.voltage, value), scatter)))
+    return a + fall, Value(value, float(np.hypot(scale_u(run.meta.voltage, value), scatter)))
 
 
 def _to_stop(run: RunData, at_s: float) -> float | None:

@@ -51,9 +51,10 @@ def _untyped(value: Any) -> Any:
 
 def evaluate(run: RunData) -> Result:
     """Measure and judge a run."""
-    spans = spans_of(run)
+    breakdowns = breakdowns_of(run)
+    spans = spans_of(run, tuple(b.fall_row for b in breakdowns))
     holds = tuple(measure_hold(run, s) for s in spans if s.kind == "hold" and s.end > s.begin)
-    readings, breakdowns = readings_of(run, spans), breakdowns_of(run)
+    readings = readings_of(run, spans)
     ramp = best_ramp(run, spans)
     proof = proof_of(run, spans, ramp)
     outcome, why, causes = ending_of(run)

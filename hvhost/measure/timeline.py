@@ -48,8 +48,12 @@ def last_live_row(run: RunData) -> int:
     return int(run.first[live[-1] + 1]) if len(live) else 0
 
 
-def spans_of(run: RunData) -> tuple[StepSpan, ...]:
-    """Return every step that began, in order; one that never ended reaches to the last energised row."""
+def spans_of(run: RunData, falls: tuple[int, ...] = ()) -> tuple[StepSpan, ...]:
+    """Return every step that began, in order.
+
+    One that never ended reaches to the last energised row, or to the first of ``falls`` (rows at which a breakdown
+    began) in it.
+    """
     steps, spans = steps_of(run), []
     open_: dict[str, Any] | None = None
     for note in run.notes_of("step"):
@@ -70,7 +74,8 @@ def spans_of(run: RunData) -> tuple[StepSpan, ...]:
             spans.append(_span(open_, steps, row, note))
             open_ = None
     if open_ is not None:
-        spans.append(_span(open_, steps, max(open_["begin"], last_live_row(run)), note=None))
+        end = min((row for row in falls if row > open_["begin"]), default=run.rows)
+        spans.append(_span(open_, steps, max(open_["begin"], min(end, last_live_row(run))), note=None))
     return tuple(spans)
 
 

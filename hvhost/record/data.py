@@ -279,7 +279,7 @@ def read_all(buffer: Buffer) -> tuple[Read, Blocks]:
 def load_run(folder: RunFolder) -> RunData:
     """Read a run; raises `RecordFault` where neither the block file nor ``meta.json`` says what the codes mean."""
     try:
-        found, blocks = read_all(open_buffer(folder.blocks))
+        found, blocks = read_all(open_buffer(folder.blocks) if folder.blocks.exists() else b"")
     except ValueError as error:
         raise RecordFault("blocks as FORMAT.md describes them", str(error), str(folder.blocks)) from None
     meta = found.meta or _side_meta(folder.path / META)

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from enum import IntEnum, StrEnum
 from typing import Any
 
+from hvhost.supervisor.runs import Outcome as Outcome  # how a run ended is the supervisor's word
 from hvhost.wire.frames import Block
 
 Json = Mapping[str, Any]
@@ -151,16 +152,3 @@ class Damage:
     kind: DamageKind
     entries: int
     text: str
-
-
-class Outcome(StrEnum):
-    """How a run ended."""
-
-    FINISHED = "finished"  # the plan ran to its end
-    LOWERED = "lowered"  # an operator (or a lost seat) lowered it
-    CUT = "cut"  # an operator cut it
-    TRIPPED = "tripped"  # a latched cause ended it
-    INTERRUPTED = "interrupted"  # the link, the MCU or the host was lost
-    RECORD_FAILED = "record failed"  # the recorder could not go on
-    CANCELLED = "cancelled"  # it never was energised
-    FAILED = "failed"  # a step could not be kept: the host lowered

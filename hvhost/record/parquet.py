@@ -56,8 +56,12 @@ def schema_of(run: RunData) -> Any:
              "repeated_blocks": str(run.repeated_blocks),
              "damage": json.dumps([f"{d.offset}: {d.kind}: {d.text}" for d in run.damage]),
              "utc": "ticks to host time by the anchors, host time to UTC as it stood when the run was opened",
-             "block_file_sha256": file_hash(run.folder.blocks) if run.folder else ""}
+             "block_file_sha256": _block_file_hash(run.folder)}
     return pa.schema(fields, metadata={f"hvhost.{key}": value for key, value in about.items()})
+
+
+def _block_file_hash(folder: RunFolder | None) -> str:
+    return file_hash(folder.blocks) if folder is not None and folder.blocks.exists() else ""
 
 
 def _flags(run: RunData, a: int, b: int) -> Any:
