@@ -7,7 +7,7 @@ an answer, so the number of the last event that a retry must carry is another on
 from collections.abc import Callable
 from dataclasses import dataclass
 
-from hvhost.standin.core import PREPARING, Core, Timer
+from hvhost.standin.core import Core, Timer
 from hvhost.wire.frames import Arm
 from hvhost.wire.settings import BY_KEY
 from hvhost.wire.vocabulary import (
@@ -64,13 +64,13 @@ def _off_zero(core: Core, arm: Arm) -> bool:
 
 
 CHECKS: tuple[tuple[Err, Callable[[Core, Arm], bool]], ...] = (
-    (Err.STATE, lambda core, arm: core.state is not McuState.OFF),
+    (Err.STATE, lambda core, arm: core.state not in (McuState.OFF, McuState.REQUESTED)),
     (Err.BLANK, lambda core, arm: core.eeprom.settings is None),
-    (Err.ARM, lambda core, arm: arm.arm != core.arms + 1 & U32),
-    (Err.SETTINGS, lambda core, arm: core.eeprom.settings is None or arm.settings != core.eeprom.settings.checksum),
-    (Err.EVENT, lambda core, arm: arm.event != core.stream.number),
     (Err.LATCHED, lambda core, arm: core.latched),
     (Err.LEASE, lambda core, arm: not core.lease.running),
+    (Err.SETTINGS, lambda core, arm: core.eeprom.settings is None or arm.settings != core.eeprom.settings.checksum),
+    (Err.EVENT, lambda core, arm: arm.event != core.stream.number),
+    (Err.ARM, lambda core, arm: arm.arm != core.arms + 1 & U32),
     (Err.WORDS, lambda core, arm: bool(core.v_word or core.i_word)),
     (Err.QUEUE, lambda core, arm: bool(core.points.queue)),
     (Err.INTERLOCK, _lacks(Inputs.INTERLOCK, 0)),
@@ -95,30 +95,20 @@ class Arming:
     # ---------------------------------------------------------------- the request
 
     def request(self, arm: Arm) -> Err | None:
-        """Accept an arm, or refuse it with an event; a new arm before energising voids the old one by a cut."""
+        """Accept an arm, or refuse it with an event; one accepted voids the old one that still waits for its press."""
         core = self.core
-        if core.state in PREPARING and arm.arm == core.arms + 1 & U32 and arm.event == core.stream.number:
-            core.cut(CutWhy.PREPARING, void=VoidWhy.NEW_ARM)
-            refusal = self._refusal(arm, after_void=True)
-        else:
-            refusal = self._refusal(arm)
+        refusal = self._refusal(arm)
         if refusal is not None:
             core.event(EventKind.REFUSED, arm.arm, ERR_NUMBERS[refusal])
             return refusal
+        core.void(VoidWhy.NEW_ARM)
         self._accept(arm)
         return None
 
-    def _refusal(self, arm: Arm, after_void: bool = False) -> Err | None:
+    def _refusal(self, arm: Arm) -> Err | None:
         core = self.core
-        number = core.stream.number
         core.contacts.read()
-        for err, stands in CHECKS:
-            # the voiding's own events, and those of this look at the inputs, are no news that the host missed
-            if err is Err.EVENT and (after_void or arm.event == number):
-                continue
-            if stands(core, arm):
-                return err
-        return _looser(core, arm)
+        return next((err for err, stands in CHECKS if stands(core, arm)), None) or _looser(core, arm)
 
     def _accept(self, arm: Arm) -> None:
         core, settings = self.core, self.core.eeprom.settings

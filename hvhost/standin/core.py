@@ -159,6 +159,11 @@ class Core:
         return self.eeprom.kept.causes != 0
 
     @property
+    def danger(self) -> bool:
+        """The danger signal at the last look."""
+        return bool(self.seen & Inputs.DANGER)
+
+    @property
     def inputs(self) -> int:
         """Physical inputs, lease and proof: as a block carries them."""
         return (self.seen | (Inputs.LEASE if self.lease.running else 0) | (Inputs.PROVEN if self.proven else 0))

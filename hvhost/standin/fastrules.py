@@ -16,7 +16,7 @@ from hvhost.wire.vocabulary import Cause, EventKind, Fitted, McuState
 
 NOWHERE = 1 << 40  # a threshold that is never reached
 TOLD_MS = 100  # interference is told at most this often per rule, and counted always
-PRESENT = 20  # the readback must live while the voltage word is above 1/20 of full scale
+PRESENT = 20  # the readback must live while the voltage word is above 1/20 of its ceiling
 K_MAX = (1 << 32) - 1
 
 
@@ -66,7 +66,7 @@ class FastRules:
         self.span = max(settings["span"], self.persist)
         self.decay = min(K_MAX, (config.sample_ticks << 32) // config.ticks(settings["bleed"]))
         self.miss = config.samples(settings["missms"])
-        self.present_word = ((1 << config.v_dac_bits) - 1) // PRESENT
+        self.present_word = settings["vmax"] // PRESENT
         i_end = max(core.i_sign * (self._i_high - core.i_zero), core.i_sign * (self._i_low - core.i_zero))
         self.i_screen = min(self.over_i, self.level, i_end - 1)
         self.back = deque(self.back, maxlen=self.span)

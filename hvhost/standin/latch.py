@@ -47,10 +47,10 @@ class Latch:
         core.contacts.read()
         if settings is None:
             return Err.BLANK
-        if core.state is not McuState.OFF:
-            return Err.STATE
         if request.causes != core.eeprom.kept.causes:
             return Err.CAUSES
+        if core.state is not McuState.OFF:
+            return Err.STATE
         if core.v_word or core.i_word:
             return Err.WORDS
         if not self.in_cut_position():
@@ -62,10 +62,10 @@ class Latch:
         if not core.seen & Inputs.INTERLOCK or not stable:
             return Err.INTERLOCK
         if not (powered and core.fitted & Fitted.MONITOR_AT_SPECIMEN):
-            if core.now - core.stopped_at < core.config.ticks(settings["bleed"] * settings["bleeds"]):
-                return Err.BLEED
             if not request.grounded:
                 return Err.GROUNDED
+            if core.now - core.stopped_at < core.config.ticks(settings["bleed"] * settings["bleeds"]):
+                return Err.BLEED
         return None
 
     def in_cut_position(self) -> bool:

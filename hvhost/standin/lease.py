@@ -43,7 +43,8 @@ class Lease:
         core = self.core
         core.stop_timer(Timer.LEASE)
         self.running = False
-        core.event(EventKind.LAPSE, core.state)
+        if core.state not in (McuState.OFF, McuState.LOWERING):
+            core.event(EventKind.LAPSE, core.state)
         if core.state is McuState.ENERGISED:
             core.lower(LowerWhy.LAPSE)
             core.latch.add(Cause.HOST_SILENT, core.index)

@@ -136,7 +136,7 @@ class Reaction:
         above = rules.count(Cause.ABOVE_ENVELOPE, v > (rules.envelope >> 16) + rules.margin)
         young = core.now - self._began <= self._restrike_ticks()
         if above:
-            core.trip(Cause.ABOVE_ENVELOPE)
+            core.trip(Cause.ARC_IN_REST, CutWhy.ARC)
         elif fell:
             self._fell(young)
         elif self._confirm_by is None:
@@ -163,7 +163,7 @@ class Reaction:
     # ---------------------------------------------------------------- the host's verdict
 
     def host(self, low_index: int) -> int:
-        """A host judged a breakdown at this sample: merge it or act; return the arc's number, 0 for none."""
+        """A host judged a breakdown at this sample: merge it or act; return the arc's number, 0 for a cut."""
         core = self.core
         index = min(core.unwrap(low_index), core.index)
         if self._last_host and self._last_host[0] == index:
@@ -183,8 +183,8 @@ class Reaction:
             self._confirm()
         else:
             late = core.state is McuState.PAUSING
-            self._number(index)
-            number = self.number
+            if core.live:
+                self._number(index)
             core.cut(CutWhy.ARC, cause=Cause.ARC_IN_REST if late else Cause.HOST_RULE,
                      detail=index if late else HostRule.BREAKDOWN)
         self._last_host = (index, number)

@@ -4,6 +4,7 @@ Every request but ``cut`` carries the session's number.  Numbered requests are o
 the last answer again, the next number is obeyed, any other is refused.  The three stops stand outside the numbering.
 """
 
+import re
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -29,6 +30,8 @@ from hvhost.words.errors import WireFault
 
 LEASE_MS = (100, 2_000)  # bounds without settings
 RULE_MAX = 999  # a rule of a newer host is latched as this
+VERB_MAX = 16
+RANGE = re.compile(r"-?[0-9]+ to [0-9]+")  # what a decoder expected of a number that was out of its range
 WORD = frozenset("abcdefghijklmnopqrstuvwxyz0123456789")
 
 
@@ -54,9 +57,8 @@ class Session:
         self.unanswered = 0  # lines that got no answer: malformed renewals, renewals of another session
         self.number: int | None = None  # of the session
         self.reset_cause = ResetCause.POWER
-        self._hello: tuple[int, bytes] = (0, b"")  # number and answer of the greeting request
-        self._last = 0
-        self._answer = b""
+        self._next = 1
+        self._answered: tuple[int, bytes] | None = None  # the last request's number and its answer's lines
         self._staged: dict[str, int] | None = None
         self._requests: dict[type, Callable[[Any], Result]] = {
             frames.Info: self._info, frames.Get: self._get, frames.Put: self._put, frames.Save: self._save,
@@ -66,7 +68,7 @@ class Session:
     def boot(self, cause: ResetCause) -> None:
         """After a reset: no session, no torn line, nothing staged."""
         self.reader = LineReader()
-        self.number, self._staged = None, None
+        self.number, self._staged, self._answered = None, None, None
         self.reset_cause = cause
 
     def feed(self, data: bytes) -> None:
@@ -106,17 +108,24 @@ class Session:
             self._numbered(frame)
 
     def _numbered(self, frame: Any) -> None:
-        core, verb = self.core, frames.VERB_OF[type(frame)]
-        if frame.n == self._last and self._answer:
-            core.stream.send_lines(self._answer)
-            return
-        if frame.n != (self._last + 1) & U32:
-            self._refuse(frame.n, verb, Err.NUMBER)
-            return
-        result = self._requests[type(frame)](frame)
-        self._last = frame.n
-        self._answer = self._line(frame.n, verb, result)
-        core.stream.send_lines(self._answer)
+        verb = frames.VERB_OF[type(frame)]
+        if self._in_order(frame.n, verb):
+            self._answer(frame.n, verb, self._requests[type(frame)](frame))
+
+    def _in_order(self, n: int, verb: str) -> bool:
+        """Whether this number is the next; the last one again gets its answer again, any other is refused."""
+        if self._answered and n == self._answered[0]:
+            self.core.stream.send_lines(self._answered[1])
+            return False
+        if n != self._next:
+            self._refuse(n, verb, Err.NUMBER)
+            return False
+        return True
+
+    def _answer(self, n: int, verb: str, result: Result) -> None:
+        self._next = n + 1 & U32
+        self._answered = n, self._line(n, verb, result)
+        self.core.stream.send_lines(self._answered[1])
 
     def _line(self, n: int, verb: str, result: Result) -> bytes:
         if isinstance(result, Err):
@@ -128,41 +137,47 @@ class Session:
         self.core.stream.send(f"err {n} {verb} {err}".encode("ascii"))
 
     def _malformed(self, body: bytes, fault: WireFault) -> None:
-        """Answer a line that cannot be decoded; a ``cut`` is obeyed however its fields read."""
+        """Answer a line that cannot be decoded; nothing of it is done."""
         verb, *rest = body.decode("ascii").split(" ")
         number = rest[0] if rest else ""
         n = int(number) if number.isdigit() and len(number) <= 10 and int(number) <= U32 else 0
         if verb == "renew":
             self.unanswered += 1
             return
-        if verb == "cut":
-            self.core.cut(CutWhy.HOST, number=n)
-        known = verb if verb and WORD.issuperset(verb) else "unknown"
-        code = Err.UNKNOWN if fault.where == "unknown" else Err.MALFORMED
-        self._refuse(n, known, code)
+        known = verb if len(verb) <= VERB_MAX and verb[:1].isalpha() and WORD.issuperset(verb) else "unknown"
+        if fault.where == "unknown":
+            self._refuse(n, known, Err.UNKNOWN)
+        elif not RANGE.fullmatch(fault.expected):
+            self._refuse(n, known, Err.MALFORMED)
+        elif verb == "hello" or verb in frames.STOPS:
+            self._refuse(n, known, Err.RANGE)
+        elif self.number is None or rest[1:2] != [f"{self.number:08X}"]:
+            self._refuse(n, known, Err.SESSION)
+        elif self._in_order(n, verb):
+            self._answer(n, verb, Err.RANGE)
 
     # ---------------------------------------------------------------- greeting and stops
 
     def _greet(self, hello: frames.Hello) -> None:
         core, settings = self.core, self.core.eeprom.settings
-        if hello.session == self.number and hello.n == self._hello[0]:
-            core.stream.send_lines(self._hello[1])
+        if hello.session == self.number and self._answered and hello.n == self._answered[0]:
+            core.stream.send_lines(self._answered[1])
             return
         low, high = (settings["leasemin"], settings["leasemax"]) if settings else LEASE_MS
         if hello.version != PROTOCOL_VERSION:
             self._refuse(hello.n, "hello", Err.VERSION)
             return
-        if not low <= hello.lease_ms <= high:
+        if not low <= hello.lease_ms <= high or not hello.session:
             self._refuse(hello.n, "hello", Err.RANGE)
             return
         core.lease.open(hello.lease_ms)
         if core.state not in (McuState.OFF, McuState.LOWERING):
             core.lower(LowerWhy.SESSION)
         self.number = hello.session
-        self._last, self._answer, self._staged = 0, b"", None
+        self._staged = None
         core.stream.greet(hello.lease_ms)
-        self._hello = hello.n, self._line(hello.n, "hello", Done(f"{PROTOCOL_VERSION} {hello.lease_ms}"))
-        core.stream.send_lines(self._hello[1])
+        self._answer(hello.n, "hello", Done(f"{PROTOCOL_VERSION} {hello.lease_ms}"))
+        self._next = 1
         core.event(EventKind.SESSION, hello.session)
 
     def _cut(self, n: int, rule: int) -> None:
@@ -211,10 +226,6 @@ class Session:
     def _save(self, request: frames.Save) -> Result:
         core = self.core
         core.contacts.read()
-        if core.state is not McuState.OFF:
-            return Err.STATE
-        if core.seen & Inputs.INTERLOCK:
-            return Err.CLOSED
         staged = self._staged or {}
         if set(staged) != set(KEYS) or checksum(tuple(staged[key] for key in KEYS)) != request.checksum:
             return Err.CHECKSUM
@@ -222,6 +233,10 @@ class Session:
             settings = Settings.of(staged)
         except WireFault:
             return Err.RANGE
+        if core.state is not McuState.OFF:
+            return Err.STATE
+        if core.seen & Inputs.INTERLOCK:
+            return Err.CLOSED
         self._staged = None
         core.eeprom.write_settings(settings)
         core.adopt(settings)
@@ -235,10 +250,10 @@ class Session:
 
     def _segment(self, request: frames.Segment) -> Result:
         core = self.core
-        if core.latched:
-            return Err.LATCHED
         if core.state not in LIVE or core.state is McuState.LOWERING:
             return Err.STATE
+        if core.latched:
+            return Err.LATCHED
         if not core.lease.running:
             return Err.LEASE
         refusal = core.reaction.check(request) or core.points.check(request)

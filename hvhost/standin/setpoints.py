@@ -40,16 +40,18 @@ class Setpoints:
         core, settings = self.core, self.core.settings
         if settings is None:
             return Err.BLANK
-        if segment.ticks == 0:
-            return Err.RANGE
+        if len(self.queue) >= core.config.queue:
+            return Err.QUEUE
         if segment.v > settings["vmax"] or segment.i > settings["imax"]:
             return Err.CEILING
+        if segment.ticks == 0:
+            return Err.RANGE
         v, i = self.end
         hz = core.config.tick_hz
         if not (within_slew(v, segment.v, segment.ticks, hz, settings["vslew"])
                 and within_slew(i, segment.i, segment.ticks, hz, settings["islew"])):
             return Err.SLEW
-        return Err.QUEUE if len(self.queue) >= core.config.queue else None
+        return None
 
     def add(self, segment: Segment) -> int:
         """Queue a checked segment, start it where nothing is under way; return its serial number."""

@@ -102,12 +102,12 @@ class Snapshot:
     def part(self, offset: int) -> str | None:
         """The answer's fields for the part that begins at this pair; None where no snapshot waits or it ends before."""
         shot = self.shot
-        if shot is None or self.collecting or offset > len(shot.pairs):
+        if shot is None or self.collecting or offset >= len(shot.pairs):
             return None
         part = shot.pairs[offset : offset + SNAP_PAIRS]
         text = pack_codes(tuple(code for pair in part for code in pair), self.core.config.signs).decode("ascii")
         return (f"{shot.id} {shot.kind} {shot.tag:08X} {offset} {len(shot.pairs)} {shot.trigger} {shot.first & U32} "
-                f"{shot.lost} {len(part)} {text or '-'}")
+                f"{shot.lost} {len(part)} {text}")
 
     def stored(self, number: int) -> bool:
         """The host has stored it: forget it; False where it is another one."""

@@ -1,8 +1,8 @@
 """What leaves the MCU: blocks of pairs, numbered events, answers; bounded where nobody reads.
 
-Nothing but answers leaves before a greeting; events are numbered from boot and the last 16 are kept for asking.
-A block is closed at ``block_pairs`` pairs, at a fifth of the lease, at a missed conversion, and where state or latch
-change; its header is what held at its first pair's tick.
+Events are numbered and sent from the boot on, and the last 16 are kept for asking; blocks leave from the first
+greeting on.  A block is closed at ``block_pairs`` pairs, at a fifth of the lease, at a missed conversion, and where
+state or latch change; its header is what held at its first pair's tick.
 """
 
 from collections import deque
@@ -28,7 +28,7 @@ class Stream:
         self.core = core
         self.out = bytearray()
         self.dropped = 0
-        self.open = False  # a session was greeted: blocks and events leave
+        self.open = False  # a session was greeted: blocks leave
         self.number = 0
         self.kept: deque[McuEvent] = deque(maxlen=KEPT)
         self.codes: list[int] = []
@@ -63,8 +63,7 @@ class Stream:
         core = self.core
         event = McuEvent(number=self.number, tick=core.wire_tick(core.now), kind=kind, a=signed32(a), b=signed32(b))
         self.kept.append(event)
-        if self.open:
-            self.send(encode_answer(event))
+        self.send(encode_answer(event))
 
     def since(self, number: int) -> list[McuEvent] | None:
         """The kept events from this number on; None when some of them are gone."""
