@@ -48,8 +48,8 @@ class Plant:
     """See the module's text.  Deterministic from ``seed`` and the calls."""
 
     __slots__ = ("_c", "_c_inside", "_c_node", "_decay", "_decay_key", "_g", "_g_inside", "_known", "_live",
-                 "_ripple_v", "_seen", "_tape", "_was_power", "chain", "contacts", "events", "faults", "i_true", "params",
-                 "specimen", "supply", "t_s", "v_node", "v_true")
+                 "_ripple_v", "_seen", "_tape", "_was_power", "chain", "contacts", "events", "faults", "i_true",
+                 "params", "specimen", "supply", "t_s", "v_node", "v_true")
 
     def __init__(self, params: PlantParams, seed: int, faults: FaultBook | None = None) -> None:
         self.params = params
