@@ -18,6 +18,7 @@ from hvhost.words.textfile import Reading
 
 EXPIRES_SOON_DAYS = 30  # long enough to have a chain calibrated
 DISCHARGE_S = 10.0  # a ground device that needs longer will be lifted off too early
+SAME = 1e-9  # relative; a bound that was computed equals the typed value although a last bit differs
 REASON, REFUSE, NOTE = Grade.REASON, Grade.REFUSE, Grade.NOTE
 
 
@@ -133,7 +134,7 @@ def check_ceilings(b: BenchFile, say: Say) -> Iterator[Finding]:
 def check_lower(b: BenchFile, say: Say) -> Iterator[Finding]:
     """A lower that runs out of time cuts above zero: worth knowing."""
     needed = b.ceilings.voltage / b.lower.slew
-    if needed > b.lower.longest * (1 + 1e-9):
+    if needed > b.lower.longest * (1 + SAME):
         yield say(NOTE, "lower.longest", f"at least {seconds(needed)} to reach zero from the ceiling",
                   seconds(b.lower.longest), "a lower from up there ends in a cut")
 
@@ -191,7 +192,7 @@ def check_voltage_monitor(b: BenchFile, say: Say) -> Iterator[Finding]:
         yield say(REFUSE, "voltage.monitor.zero_code", "codes on the monitor's side of zero",
                   f"none: {monitor.sign.value} signal, {'signed' if monitor.signed else 'unsigned'} converter, "
                   f"zero at code {monitor.zero_code:g}")
-    elif b.limits.overvoltage > reach:
+    elif b.limits.overvoltage > reach * (1 + SAME):
         yield say(REFUSE, "limits.overvoltage", f"at most {volts(reach)}, where the monitor's converter ends",
                   volts(b.limits.overvoltage))
 
@@ -204,7 +205,7 @@ def check_current_monitor(b: BenchFile, say: Say) -> Iterator[Finding]:
         yield say(REFUSE, "current.monitor.zero_code", "codes on the monitor's side of zero",
                   f"none: {monitor.sign.value} signal, {'signed' if monitor.signed else 'unsigned'} converter, "
                   f"zero at code {monitor.zero_code:g}")
-    elif b.limits.overcurrent > reach:
+    elif b.limits.overcurrent > reach * (1 + SAME):
         yield say(REFUSE, "limits.overcurrent", f"at most {amps(reach)}, where the monitor's converter ends",
                   amps(b.limits.overcurrent))
 
@@ -246,13 +247,13 @@ def delay_samples(delay_s: float, rate_hz: float) -> int:
     """Samples until the readback follows: the delay, rounded up, and one for the phase of sampling."""
     product = delay_s * rate_hz
     whole = int(product)
-    return whole + (product > whole + 1e-9) + 1
+    return whole + (product > whole + SAME * max(1, whole)) + 1
 
 
 def check_missing(b: BenchFile, say: Say) -> Iterator[Finding]:
     """A readback is called missing after several samples, not after one."""
     least = 3 / b.sampling.rate
-    if b.limits.missing_after < least:
+    if b.limits.missing_after < least * (1 - SAME):
         yield say(REFUSE, "limits.missing_after", f"at least 3 samples, {seconds(least)}",
                   seconds(b.limits.missing_after))
 
@@ -262,7 +263,7 @@ def check_zero_band(b: BenchFile, say: Say) -> Iterator[Finding]:
     if b.bleed.zero_band < b.voltage.monitor.zero_uncertainty:
         yield say(REFUSE, "bleed.zero_band", f"at least the monitor's zero uncertainty "
                   f"{volts(b.voltage.monitor.zero_uncertainty)}", volts(b.bleed.zero_band))
-    if b.bleed.zero_band > 0.05 * b.ceilings.voltage:
+    if b.bleed.zero_band > 0.05 * b.ceilings.voltage * (1 + SAME):
         yield say(REFUSE, "bleed.zero_band", f"at most 5 % of the ceiling, {volts(0.05 * b.ceilings.voltage)}",
                   volts(b.bleed.zero_band))
 
@@ -282,7 +283,7 @@ def check_bleed_time(b: BenchFile, say: Say) -> Iterator[Finding]:
     if b.bleed.resistance is None:
         return
     tau = b.bleed.resistance * (b.supply.output_capacitance + b.cable.capacitance)
-    if b.bleed.time < tau * (1 - 1e-9):
+    if b.bleed.time < tau * (1 - SAME):
         yield say(REFUSE, "bleed.time", f"at least resistance times output and cable capacitance, {seconds(tau)}",
                   seconds(b.bleed.time), "add the largest specimen's capacitance")
 
@@ -299,7 +300,7 @@ def check_ground(b: BenchFile, say: Say) -> Iterator[Finding]:
         yield say(REFUSE, "ground.resistor", "the discharge resistor of the grounding device", "nothing")
     if b.ground.energy is None:
         yield say(REFUSE, "ground.energy", "the energy that the resistor may take at once", "nothing")
-    elif b.ground.energy < energy:
+    elif b.ground.energy < energy * (1 - SAME):
         yield say(REFUSE, "ground.energy", f"at least the {joules(energy)} that output and cable hold at the ceiling",
                   joules(b.ground.energy))
 

@@ -3,11 +3,11 @@
 Voltages and currents are oriented magnitudes; ``polarity`` is applied by screens, exports and reports only.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date
 from enum import StrEnum
 
-from hvhost.bench.scaling import Channel, Scale
+from hvhost.bench.scaling import Calibration, Channel, Scale
 from hvhost.wire.settings import Settings
 from hvhost.wire.vocabulary import Fitted
 from hvhost.words.findings import Finding
@@ -160,6 +160,11 @@ class Bench:
         from hvhost.bench.settings_from import settings_of
 
         return settings_of(self)
+
+    def calibrated_with(self, voltage: Calibration | None = None, current: Calibration | None = None) -> "Bench":
+        """The same bench under fitted lines of its monitors; None leaves the bench file's."""
+        return replace(self, voltage=self.voltage.monitored(voltage) if voltage else self.voltage,
+                       current=self.current.monitored(current) if current else self.current)
 
     @property
     def programming_only(self) -> bool:

@@ -119,3 +119,7 @@ class Channel:
     def monitor_per_word(self) -> float:
         """Monitor codes per programming code, signed."""
         return self.program.gain / self.monitor.gain
+
+    def monitored(self, calibration: Calibration) -> "Channel":
+        """The same channel under another straight line of its monitor."""
+        return replace(self, monitor=self.monitor.calibrated(calibration))
