@@ -112,11 +112,12 @@ def overcurrent_level(view: View, limits: GuardLimits, level: Level) -> tuple[Le
         return level, None
     length, below, reported = level
     length += view.gap if length else 0
+    need = max(limits.level_samples, limits.persist)  # however short the time is, one sample is never enough
     found: Verdict | None = None
     for k, code in enumerate(view.i):
         if code > limits.level:
             length, below = length + 1, 0
-            if length >= limits.level_samples and not reported:
+            if length >= need and not reported:
                 reported = True
                 found = found or verdict(
                     HostRule.OVERCURRENT_LEVEL, Severity.TRIP, view, k, limits.level, code,

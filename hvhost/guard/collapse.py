@@ -92,8 +92,8 @@ def _walk(view: View, limits: GuardLimits, fallen: Fallen) -> tuple[Fallen, Coll
                 continue
             low, high = _word_extremes(points, indices[start] - limits.delay_samples, indices[k])
             trial = fallen._replace(base=base, window_from=indices[start], word_low=low, word_high=high,
-                                    current=max(0, min(i[start], i[max(0, start - 1)])), started=indices[k],
-                                    lowest=v[k], energy=0)
+                                    current=_current_before(i, start, limits), started=indices[k], lowest=v[k],
+                                    energy=0)
         fall = trial.base - v[k]
         unexplained = fall - _explained(trial, view, indices[k], limits) if fall > limits.drop else 0
         if unexplained > limits.drop:
@@ -113,6 +113,15 @@ def _walk(view: View, limits: GuardLimits, fallen: Fallen) -> tuple[Fallen, Coll
 def _held(v: list[int], n: int) -> list[int]:
     """Return for each sample the least of the n samples that end with it: a level that n samples held."""
     return v if n == 1 else [min(v[max(0, k - n + 1):k + 1]) for k in range(len(v))]
+
+
+def _current_before(i: list[int], start: int, limits: GuardLimits) -> int:
+    """Return the greatest load current that two samples in a row held in the programming delay before the window.
+
+    A shunt inside the supply shows nothing any more once a dip of the mains is on, hence the look further back.
+    """
+    first = max(1, start - limits.delay_samples)
+    return max(0, max([min(i[j - 1], i[j]) for j in range(first, start + 1)], default=i[start]))
 
 
 def _word_extremes(points: list[tuple[int, int]], start: int, end: int) -> tuple[int, int]:
