@@ -40,7 +40,7 @@ class Stopper:
                 except CannotConnect as fault:
                     self._drop()
                     if last:
-                        self._say(f"{verb.upper()} NOT SENT: {fault.found or fault}: "
+                        self._say(f"{verb.upper()} NOT SENT, no daemon answers ({fault.found}): "
                                   "use the emergency switching off", now_s)
                 else:
                     self._say(f"{verb} sent by this key", now_s)
