@@ -7,7 +7,7 @@ Interface towards the MCU (time in seconds, forward only):
 ``drive(inhibit, clear, relay)`` the MCU's outputs; True, True, False is what the wiring does without an MCU
 ``inputs()``                     physical bits of ``vocabulary.Inputs`` (not LEASE, not PROVEN)
 ``sample()``                     one conversion of both monitors, raw integer codes
-``events``                       list of ``PlantEvent`` for the truth; its owner clears it
+``events``                       the last ``PlantEvent``s, for the truth; its owner clears them
 ``v_true``, ``i_true``           volts at the specimen and amps in the return now, oriented; ``power``: supply powered
 ``faults``                       the ``FaultBook``: its owner acts on the wire's and the MCU's
 
@@ -17,6 +17,7 @@ drives back.  Within a step i is constant or v follows the reference, so each st
 node at the tip resistor and is stepped by 20 us until it burns steadily.
 """
 
+from collections import deque
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from math import exp
@@ -31,6 +32,7 @@ from hvhost.standin.supply import Supply
 ARC_STEP_S = 20e-6
 STEADY_V = 0.5  # an arc this near to its final voltage is stepped as a whole
 DEAD_V = 1e-3  # below this with the supply off the node is taken as dead
+EVENTS_MAX = 4096  # with no truth written nobody clears them
 PLANT_PLACES = frozenset({Place.CHAIN, Place.CONTACT, Place.SUPPLY, Place.LOAD})
 
 
@@ -58,7 +60,7 @@ class Plant:
         self.specimen = Specimen(params.specimen, seed)
         self.chain = Chain(params, seed)
         self.contacts = Contacts(params.contacts, seed)
-        self.events: list[PlantEvent] = []
+        self.events: deque[PlantEvent] = deque(maxlen=EVENTS_MAX)
         self.t_s = self.v_node = self.v_true = self.i_true = 0.0
         self._ripple_v = 0.0
         self._decay, self._decay_key = 1.0, (0.0, 0.0)
