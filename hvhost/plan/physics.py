@@ -127,7 +127,7 @@ def check_energy(case: Case) -> Iterator[Finding]:
     if case.bench.ground is not GroundDevice.NONE and held.energy_j > case.bench.discharge_j:
         yield case.in_plan(Grade.REFUSE, 1, "stored energy", "at most the discharge resistor's "
                            f"{format_quantity(case.bench.discharge_j, Dimension.JOULE, 3)}", f"{energy} {at}")
-    if held.dangerous:
+    elif held.dangerous:
         charge = format_quantity(held.charge_c, Dimension.COULOMB, 3)
         yield case.in_plan(Grade.NOTE, 1, "stored energy", f"dangerous to touch beyond {held.rule} (IEC 61010-1, "
                            "EN 50191)", f"{energy}, {charge} {at}", "discharge through the resistor, then ground "

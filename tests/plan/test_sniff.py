@@ -1,0 +1,20 @@
+"""Which kind of file a text is."""
+
+import pytest
+
+from hvhost.plan.sniff import sniff_kind
+from tests.plan.conftest import CONFIGS
+
+
+@pytest.mark.parametrize("kind", ["bench", "plan", "sheet"])
+def test_examples_are_known_by_their_first_key(kind: str) -> None:
+    """Every example is what its name says."""
+    paths = list(CONFIGS.glob(f"*.{kind}.yaml"))
+    assert paths
+    assert {sniff_kind(path.read_text(encoding="utf-8")) for path in paths} == {kind}
+
+
+@pytest.mark.parametrize("text", ["", "- plan: x", "  plan: x", "plans: x", "plan", "# plan: x", "plan:x"])
+def test_anything_else_is_unknown(text: str) -> None:
+    """Only a key at the left margin counts."""
+    assert sniff_kind(text) == "unknown"
