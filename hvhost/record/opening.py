@@ -66,7 +66,7 @@ def meta_of(core: Core, spec: RunSpec, checked: Preflight, plan: Plan | None, sh
 
 def _bench(bench: Bench) -> dict[str, Any]:
     return {"file": bench.file, "text": bench.text, "sha256": bench.sha256, "name": bench.name,
-            "bandwidth_hz": bench.bandwidth_hz, "ripple_hz": bench.ripple_hz, "own_f": bench.stored_f,
+            "bandwidth_hz": bench.bandwidth_hz, "ripple_hz": bench.ripple_hz, "own_f": bench.cable_f,
             "calibrated": bench.calibrated, "touch_v": bench.touch_v, "arm_input": bench.arm_input,
             "programming_only": bench.programming_only, "monitor_at_specimen": bench.monitor_at_specimen}
 

@@ -43,7 +43,8 @@ def page_of(folder: RunFolder) -> str:
 def close_run(folder: RunFolder, *, recovered: bool = False) -> Closed:
     """Add export, result and page, put the block file at rest, write the manifest.
 
-    The block file of a recovered run stays as it was found: it is evidence.  Raises `RecordFault` where the run cannot be read, is closed already or is still being written.
+    The block file of a recovered run stays as it was found: it is evidence.  Raises `RecordFault` where the run
+    cannot be read, is closed already or is still being written.
     """
     if folder.closed:
         raise RecordFault("a run that is not closed yet", "a manifest", str(folder.path))
