@@ -14,6 +14,8 @@ wrapped) and ``t_s`` (true time since the plant began, seconds; with ``clock-dri
     (`vocabulary.McuState`); ``causes`` the latched set.  Written when one of the last seven changes, and at least
     every 10 ms while there is power or more than 30 V.
 
+An event may stand up to one sample behind a line of a later tick: its own ``tick`` and ``t_s`` are exact.
+
 ``{"kind":"event","tick":..,"t_s":..,"what":"arc","value":..,"detail":".."}``
     ``what``: ``arc`` and ``restrike`` (value: volts just before), ``quench`` (joules in the arc), ``cut``
     (value: a `vocabulary.CutWhy`), ``power on``, ``power off`` (volts then), ``press`` (seconds), ``interlock open``,
