@@ -1,4 +1,4 @@
-"""Contacts around the supply: relay, hard-wired interlock, danger signal, grounding device, arm input, read-backs.
+"""Wiring around the supply: relay, hard-wired interlock, danger signal, grounding device, arm input, read-backs.
 
 Two contacts stand in series in the supply's mains.  The MCU's relay closes one.  The interlock loop and the emergency
 contact, in series, hold the other, a contactor that latches open until somebody resets it outside.  The danger signal
@@ -16,7 +16,7 @@ from hvhost.wire.vocabulary import Inputs
 _BIT = {bit.name: int(bit) for bit in Inputs}
 
 
-class Contacts:
+class Wiring:
     """State of every contact.  ``wake_s`` is when the next of them moves; ``move(t_s)`` lets them."""
 
     __slots__ = ("_due", "_faults", "_order", "_params", "_rng", "arm_pressed", "bits", "clear", "contactor",

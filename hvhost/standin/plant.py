@@ -24,7 +24,7 @@ from math import exp
 
 from hvhost.standin.chain import Chain
 from hvhost.standin.faults import FAULTS, FaultBook, Place
-from hvhost.standin.panel import Contacts
+from hvhost.standin.panel import Wiring
 from hvhost.standin.params import PlantParams
 from hvhost.standin.specimen import Specimen
 from hvhost.standin.supply import Supply
@@ -59,7 +59,7 @@ class Plant:
         self.supply = Supply(params)
         self.specimen = Specimen(params.specimen, seed)
         self.chain = Chain(params, seed)
-        self.contacts = Contacts(params.contacts, seed)
+        self.contacts = Wiring(params.contacts, seed)
         self.events: deque[PlantEvent] = deque(maxlen=EVENTS_MAX)
         self.t_s = self.v_node = self.v_true = self.i_true = 0.0
         self._ripple_v = 0.0

@@ -4,7 +4,7 @@ from itertools import pairwise
 
 import pytest
 
-from hvhost.standin.panel import Contacts
+from hvhost.standin.panel import Wiring
 from hvhost.standin.params import ContactParams
 from hvhost.wire.vocabulary import Inputs
 
@@ -13,21 +13,21 @@ READY = (Inputs.INTERLOCK | Inputs.EMERGENCY | Inputs.GROUND_OPEN | Inputs.AUXIL
          | Inputs.POLARITY)
 
 
-def fresh(**faults: float) -> Contacts:
-    """Contacts with these faults on (underscores for hyphens)."""
-    contacts = Contacts(PARAMS, 1)
+def fresh(**faults: float) -> Wiring:
+    """Wiring with these faults on (underscores for hyphens)."""
+    contacts = Wiring(PARAMS, 1)
     contacts.settle({name.replace("_", "-"): value for name, value in faults.items()})
     return contacts
 
 
-def closed(contacts: Contacts) -> Contacts:
+def closed(contacts: Wiring) -> Wiring:
     """The same with the relay driven and given its time."""
     contacts.drive(0.0, True, True, True, 2e-4)
     contacts.move(0.1)
     return contacts
 
 
-def levels(contacts: Contacts, bit: Inputs, times: list[float]) -> list[bool]:
+def levels(contacts: Wiring, bit: Inputs, times: list[float]) -> list[bool]:
     """The level of one input at these times."""
     seen = []
     for t_s in times:
@@ -83,7 +83,7 @@ def test_a_flick_of_the_interlock_still_latches() -> None:
 
 def test_unlatched_wiring_closes_again() -> None:
     """A bench whose circuit does not latch gives the power back when the loop closes."""
-    contacts = Contacts(ContactParams(interlock_latches=False), 1)
+    contacts = Wiring(ContactParams(interlock_latches=False), 1)
     closed(contacts)
     contacts.set_interlock(0.2, False)
     contacts.move(0.3)
@@ -113,7 +113,7 @@ def test_press_bounces_only_at_its_edges() -> None:
 
 def test_press_without_an_arm_input_is_not_seen() -> None:
     """A bench without the input reads nothing there."""
-    contacts = Contacts(ContactParams(arm_input=False), 1)
+    contacts = Wiring(ContactParams(arm_input=False), 1)
     contacts.press(1.0, 0.5)
     assert levels(contacts, Inputs.ARM_INPUT, [1.2]) == [False]
 
