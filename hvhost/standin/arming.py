@@ -118,6 +118,7 @@ class Arming:
         core.armed = True
         core.tag = arm.tag
         core.proven = 0
+        core.points.serial = 0
         core.adopt(settings.with_(**arm.tighter))
         core.rules.configure()
         core.reaction.arm(arm.pause)

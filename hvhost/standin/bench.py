@@ -29,7 +29,8 @@ def config_of(params: PlantParams, *, first_tick: int = 0, first_index: int = 0)
     """The firmware configuration that fits a plant's converters: 10 k ticks/s, 1 k pairs/s, blocks of 32."""
     v_adc, i_adc = params.chain.v_adc, params.chain.i_adc
     return McuConfig(
-        tick_hz=TICK_HZ, firmware=f"standin-{params.name}", signs=("s" if v_adc.signed else "u") + ("s" if i_adc.signed else "u"),
+        tick_hz=TICK_HZ, firmware=f"standin-{params.name}",
+        signs=("s" if v_adc.signed else "u") + ("s" if i_adc.signed else "u"),
         v_bits=v_adc.bits, i_bits=i_adc.bits, v_dac_bits=params.v_dac.bits, i_dac_bits=params.i_dac.bits,
         v_volts_per_code=params.v_dac.volts_per_code, i_volts_per_code=params.i_dac.volts_per_code,
         first_tick=first_tick, first_index=first_index)
@@ -174,12 +175,15 @@ class Watched:
         if truth is None:
             return
         for event in plant.events:
-            truth.event(core.now, event.t_s, event.kind, event.value, event.detail)
+            since = round((plant.t_s - event.t_s) / self.stretch * bench.config.tick_hz)  # it fell between samples
+            truth.event(core.now - since, event.t_s, event.kind, event.value, event.detail)
         plant.events.clear()
         if core.stream.number != self._event:
             for told in core.stream.kept:
                 if told.kind == EventKind.CUT and told.number > self._event:
-                    truth.event(core.now, plant.t_s, "cut", float(told.a))
+                    since = (core.wire_tick(core.now) - told.tick) & 0xFFFFFFFF
+                    at_s = plant.t_s - since * self.stretch / bench.config.tick_hz
+                    truth.event(core.now - since, at_s, "cut", float(told.a))
             self._event = core.stream.number
         contacts = plant.contacts
         truth.state(core.now, plant.t_s, (core.inhibit, core.clear, core.relay, contacts.power, core.danger,

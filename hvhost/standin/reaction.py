@@ -43,6 +43,7 @@ class Reaction:
         self._total = 0
         self._began = 0
         self._restrikes = 0
+        self._fell_at = 0  # sample of the last collapse in this pause
         self._confirm_by: int | None = None
         self._last_host: tuple[int, int] | None = None  # sample index, arc number answered
 
@@ -105,7 +106,7 @@ class Reaction:
         core.stop_output(relay=True)
         core.enter(McuState.PAUSING)
         self._number(index)
-        self._began, self._restrikes = core.now, 0
+        self._began, self._restrikes, self._fell_at = core.now, 0, core.index
         self.rest_end = core.now + self.pause[1]
         self._spans[-1].high = core.index - (-self.pause[1] // core.config.sample_ticks)
         core.set_timer(Timer.PAUSE, self.rest_end + core.config.ticks(EXPIRE_MS))
@@ -148,8 +149,12 @@ class Reaction:
     def _fell(self, young: bool) -> None:
         core = self.core
         core.rules.rebase()
+        goes_on = core.index - self._fell_at <= core.rules.span + core.rules.persist
+        self._fell_at = core.index
         if self._confirm_by is not None:
             self._confirm()
+        elif goes_on:
+            return  # the same collapse, still falling
         elif young:
             self._restrikes += 1
             core.event(EventKind.RESTRIKE, self.number, self._restrikes)

@@ -77,7 +77,8 @@ class FakeBoard:
 
     def inputs(self) -> int:
         bits = self.contacts
-        follows = {Inputs.INHIBIT_BACK: self.inhibit, Inputs.RELAY_BACK: self.relay, Inputs.DANGER: self.relay and self.power}
+        follows = {Inputs.INHIBIT_BACK: self.inhibit, Inputs.RELAY_BACK: self.relay,
+                   Inputs.DANGER: self.relay and self.power}
         for bit, level in {**follows, **self.forced}.items():
             bits = bits | bit if level else bits & ~bit
         return bits
@@ -211,7 +212,8 @@ class Bench:
 
     def cut(self, rule: int = 0) -> None:
         self.stop += 1
-        self.line(b"\n" + encode_request(Cut(n=self.stop, rule=rule)))
+        self.mcu.feed(b"\n", self.mcu.tick)
+        self.line(encode_request(Cut(n=self.stop, rule=rule)))
 
     def lower(self) -> None:
         self.stop += 1
