@@ -2,7 +2,6 @@
 
 from typing import Any
 
-from hvhost.bench.checks import delay_samples
 from hvhost.bench.document import (
     BenchFile,
     CurrentMonitorBlock,
@@ -23,6 +22,7 @@ from hvhost.bench.model import (
     SlowChannel,
     Unattended,
 )
+from hvhost.bench.saying import delay_samples
 from hvhost.bench.settings_from import fitted_mask
 from hvhost.words.findings import Finding
 

@@ -168,8 +168,11 @@ class Bench:
 
     @property
     def programming_only(self) -> bool:
-        """True where a cut only programs zero: the supply stays powered and screens must say so."""
-        return not self.cut_path & {CutMeans.RELAY, CutMeans.INHIBIT, CutMeans.CLEAR}
+        """True where no means of the cut path can be proven by a read-back: a cut counts as programming to zero only.
+
+        Screens and records then say 'programmed to zero, supply still powered'.
+        """
+        return not self.cut_path & self.read_backs & {CutMeans.RELAY, CutMeans.INHIBIT}
 
     @property
     def stored_f(self) -> float:

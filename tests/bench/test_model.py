@@ -19,11 +19,13 @@ def test_is_frozen() -> None:
         BENCH.v_max = 30e3  # type: ignore[misc]
 
 
-@pytest.mark.parametrize(("means", "alone"), [({"programming"}, True), ({"relay"}, False), ({"clear"}, False),
-                                              ({"inhibit", "programming"}, False), (set(), True)])
-def test_programming_only(means: set[str], alone: bool) -> None:
-    """Without relay, inhibit and clear a cut only programs zero."""
-    assert replace(BENCH, cut_path=frozenset(means)).programming_only is alone
+@pytest.mark.parametrize(("means", "back", "alone"), [
+    ({"programming"}, set(), True), ({"relay"}, {"relay"}, False), ({"clear"}, set(), True), (set(), set(), True),
+    ({"inhibit", "programming"}, {"inhibit"}, False), ({"relay", "inhibit"}, set(), True),
+    ({"relay", "inhibit"}, {"relay"}, False)])
+def test_programming_only(means: set[str], back: set[str], alone: bool) -> None:
+    """Without a means that is proven by a read-back a cut counts as programming to zero only."""
+    assert replace(BENCH, cut_path=frozenset(means), read_backs=frozenset(back)).programming_only is alone
 
 
 def test_stored_capacitance_and_fittings() -> None:
