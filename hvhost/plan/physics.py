@@ -215,6 +215,28 @@ def check_fall(case: Case) -> Iterator[Finding]:
         at_v = _level(step)
 
 
+def check_proof(case: Case) -> Iterator[Finding]:
+    """The window that is to prove the specimen connected can be told from zero by this chain at all.
+
+    C = I / (dV/dt): the current monitor's zero makes U(C) = 2 u(I0) / (dV/dt), least in the fastest ramp.
+    """
+    u_amps = 2.0 * case.bench.current.monitor.u_zero
+    proof = case.program.specimen_proof
+    if proof is None:
+        return
+    fastest = max((step.slew_v_per_s for step in case.program.steps if isinstance(step, RampStep) and step.to_v > 0.0),
+                  default=0.0)
+    if proof.capacitance_f is not None and (fastest == 0.0 or u_amps / fastest >= proof.capacitance_f[1]):
+        told = "no ramp"
+        if fastest:
+            told = f"U = {format_quantity(u_amps / fastest, Dimension.FARAD, 2)} at {slew(fastest)}"
+        yield case.in_sheet(Grade.NOTE, "connected.capacitance", "a window that the fastest ramp can tell from an open "
+                            "lead", told, "ramp faster, or the verdict will be 'not decided: no specimen seen'")
+    if proof.current_a is not None and u_amps >= proof.current_a[1]:
+        yield case.in_sheet(Grade.NOTE, "connected.current", "a window that the monitor can tell from an open lead",
+                            f"U = {amps(u_amps)}", "the verdict will be 'not decided: no specimen seen'")
+
+
 def check_segments(case: Case) -> Iterator[Finding]:
     """Every step compiles to segments, and no row of short ones outruns the queue."""
     v_word = i_word = 0
@@ -248,5 +270,5 @@ def check_resolution(case: Case) -> Iterator[Finding]:
 
 
 PHYSICS: tuple[Check, ...] = (check_ceilings, check_slew, check_duration, check_limits, check_charging, check_energy,
-                              check_retreat, check_withstand, check_visible, check_fall, check_segments,
-                              check_resolution)
+                              check_retreat, check_withstand, check_visible, check_fall, check_proof,
+                              check_segments, check_resolution)

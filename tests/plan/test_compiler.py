@@ -3,15 +3,19 @@
 from collections.abc import Callable
 
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
+from hvhost.bench.file import load_bench
 from hvhost.bench.model import Bench
-from hvhost.plan.compiler import compile_plan, compiled, direct_program, filled, shown_duration
-from hvhost.plan.language import load_plan
+from hvhost.plan.compiler import compile_plan, compiled, direct_program, filled, segments_for, shown_duration
+from hvhost.plan.language import load_plan, read_plan
 from hvhost.plan.plan import Plan, RunSheet
-from hvhost.plan.program import HoldStep, RampStep
-from hvhost.plan.sheet import load_sheet
+from hvhost.plan.program import HoldStep, RampStep, RestStep
+from hvhost.plan.sheet import load_sheet, sheet_from
 from hvhost.words.errors import FileFault
 from tests.plan.conftest import CONFIGS
+from tests.plan.test_segments import judge
 
 HEAD = "parameters:\n  u: {quantity: voltage, from: 1 kV, to: 20 kV}\n  t: {quantity: duration, from: 1 s, to: 90 s, " \
        "default: 60 s}"
@@ -70,12 +74,12 @@ def test_duration_counts_the_longest_course(plan_of: Callable[..., Plan], sheet:
 
 
 def test_duration_counts_every_retreat() -> None:
-    """Five breakdowns at the top: 40 s up; four times 8 s rest, 4 s climb to 8 kV, 24 s up again; 8 s; 4 s down."""
-    from hvhost.bench.file import load_bench
-
+    """Up, four times rest, climb and up again, a last rest: for each ramp at its top; then the way down."""
     program = compile_plan(load_plan(CONFIGS / "breakdown.plan.yaml"), load_sheet(CONFIGS / "breakdown.sheet.yaml"),
                            load_bench(CONFIGS / "demo.bench.yaml"))
-    assert program.duration_s == pytest.approx(40 + 4 * (8 + 4 + 24) + 8 + 4)
+    first = 1.25 + 4 * (8 + 1 + 0.75) + 8  # 5 kV at 4 kV/s; back to 2 kV at 2 kV/s
+    second = 30 + 4 * (8 + 4 + 24) + 8  # 5 to 20 kV at 500 V/s; back to 8 kV at 2 kV/s
+    assert program.duration_s == pytest.approx(first + second + 4)
     assert program.retreat is not None
     assert program.retreat.target(10e3) == pytest.approx(4e3)
 
@@ -112,3 +116,42 @@ def test_a_direct_run_has_the_benchs_ceilings(demo: Bench) -> None:
 def test_long_durations_are_written_as_clocks_show_them(seconds: float, text: str) -> None:
     """Nobody reads 4000 s as an hour and more."""
     assert shown_duration(seconds) == text
+
+
+DEMO = load_bench(CONFIGS / "demo.bench.yaml")
+VOLTS, RATES = st.integers(1, 24_000), st.integers(1, 5_000)
+LINES = st.one_of(
+    st.builds("- ramp: {{to: {} V, rate: {} V/s}}".format, VOLTS, RATES),
+    st.builds("- ramp: {{to: {} V, duration: {} s, current_limit: {} µA}}".format, VOLTS, st.integers(5, 9),
+              st.integers(1, 4_000)),
+    st.builds("- rest: {} s".format, st.integers(1, 9)),
+    st.builds("- staircase: {{from: {0} V, to: {1} V, step: 700 V, for: 2 s, at_most: 3 s}}".format,
+              st.integers(1, 11_999), st.integers(12_000, 24_000)),
+    st.just("- hold: {for: 2 s, at_most: 3 s}"))
+
+
+@given(st.lists(LINES, min_size=1, max_size=6))
+def test_the_mcu_would_take_every_segment_of_every_plan(lines: list[str]) -> None:
+    """Whatever plan passes, from zero to its end: no ceiling broken, each step ends at its words, times add up."""
+    plan, _ = read_plan("p.yaml", "plan: x\nsteps:\n" + "\n".join(lines) + "\n")
+    if plan is None:
+        return  # a hold at nothing, a ramp that goes nowhere: refused with a finding
+    program, _ = compiled(plan, sheet_from("s.yaml", "sheet: x\nspecimen: S-1\n"), DEMO)
+    assert program is not None
+    v = i = 0
+    for step in program.steps:
+        segments = segments_for(step, v, i, DEMO, 10_000)
+        judge(segments, v, i, DEMO, 10_000)
+        moving = sum(segment.ticks for before, segment in zip([v, *(s.v for s in segments)], segments, strict=False)
+                     if segment.v != before)
+        if segments:
+            v, i = segments[-1].v, segments[-1].i
+        if isinstance(step, RestStep):
+            assert v == 0
+            continue
+        volts = step.to_v if isinstance(step, RampStep) else step.v
+        assert abs(DEMO.voltage.program.value(v) - volts) <= 0.5001 * DEMO.voltage.program.quantum
+        if isinstance(step, RampStep):
+            # A code's time at each end, and a tick; never less than the slew ceiling (rounded down to a code) allows.
+            slack = DEMO.voltage.program.quantum / step.slew_v_per_s + 1e-4 + 1e-4 * step.duration_s
+            assert abs(moving / 10_000 - step.duration_s) <= slack

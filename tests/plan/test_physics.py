@@ -163,6 +163,15 @@ def test_a_fall_faster_than_the_bleed_is_noted(look: Look) -> None:
     assert look(up + "- ramp: {to: 5 kV, duration: 2 s}") == {}  # 2 tau ln 2 = 1.39 s would do
 
 
+def test_a_proof_that_the_chain_cannot_give_is_noted(look: Look) -> None:
+    """U(C) = 1 µA / (500 V/s) = 2 nF: a specimen of at most 1 nF cannot be told from an open lead; at 4 kV/s it can."""
+    proof = "connected: {{capacitance: {{from: 100 pF, to: 1 nF}}, current: {{from: 10 nA, to: {}}}}}"
+    found = look("- ramp: {to: 5 kV, rate: 500 V/s}", more=proof.format("900 nA"))
+    assert found["connected.capacitance"].found == "U = 2 nF at 500 V/s"
+    assert found["connected.current"].found == "U = 1 µA"
+    assert look("- ramp: {to: 5 kV, rate: 4 kV/s}", more=proof.format("5 µA")) == {}
+
+
 def test_a_row_of_short_ramps_may_outrun_the_queue(look: Look) -> None:
     """Twenty ramps of 10 ms in a row, with a queue of 16."""
     row = "- repeat:\n    times: 10\n    steps:\n      - ramp: {to: 1010 V, duration: 10 ms}\n" \
