@@ -10,6 +10,7 @@ passed over where the disk refused.  A failed fsync is never taken back: what it
 
 import fcntl
 import os
+import struct
 import threading
 import time
 from collections import deque
@@ -31,6 +32,8 @@ SYNC_S = 0.5  # and synced at least this often
 QUEUE_MAX = 8_192  # entries: 26 s of blocks of 32 at 10 k pairs/s
 CHUNK = 64  # entries packed before the interpreter is given to others
 JOIN_S = 10.0
+# what packing a content of a wrong form raises: never the end of the thread
+PACKING = (HvhostError, struct.error, ValueError, TypeError, LookupError, AttributeError, OverflowError)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -101,6 +104,11 @@ class DiskFile:
     def close(self) -> None:
         """Let go of file and lock."""
         os.close(self._descriptor)
+
+
+def _end(outcome: Outcome, failed: str, entries: int, lost: int, details: dict[str, object]) -> EndEntry:
+    """Return the last entry; ``entries`` is how many stand before it."""
+    return EndEntry({"outcome": outcome.value, "failed": failed, "entries": entries, "lost": lost, **details})
 
 
 def _ignored(reason: str) -> None:
@@ -198,8 +206,7 @@ class Recorder:
         if self._refused:
             self._own_up()
         before = self._packer.seq + len(self._queue)
-        self._queue.append(EndEntry({"outcome": outcome.value, "failed": self.failed, "entries": before,
-                                     "lost": self._overflowed + self._unwritten, **details}))
+        self._queue.append(_end(outcome, self.failed, before, self._overflowed + self._unwritten, details))
         self.step(time.monotonic() + SYNC_S)
         self._file.close()
         return self.health()
@@ -228,7 +235,7 @@ class Recorder:
     def _packed(self, entry: Content) -> bytes:
         try:
             return self._packer.pack(entry)
-        except (HvhostError, ValueError, TypeError, KeyError) as error:
+        except PACKING as error:
             self._fail(f"an entry could not be packed: {error}")
             self._unwritten += 1
             return self._packer.pack(LostEntry(1))
@@ -292,14 +299,14 @@ class InlineRecorder:
         """Write one entry."""
         try:
             self._writer.put(entry)
-        except (OSError, HvhostError) as error:
+        except (OSError, *PACKING) as error:
             self._fail(error)
 
     def put_block(self, arrival_s: float, block: Block) -> None:
         """Write one block."""
         try:
             self._writer.put_block(arrival_s, block)
-        except OSError as error:
+        except (OSError, *PACKING) as error:
             self._fail(error)
 
     def health(self) -> RecorderHealth:
@@ -309,8 +316,7 @@ class InlineRecorder:
 
     def close(self, outcome: Outcome, **details: object) -> RecorderHealth:
         """Write the END entry and close the file."""
-        self.put(EndEntry({"outcome": outcome.value, "failed": self.failed, "lost": self._lost,
-                           "entries": self._writer.entries, **details}))
+        self.put(_end(outcome, self.failed, self._writer.entries, self._lost, details))
         try:
             self._file.close()
         except OSError as error:
