@@ -33,7 +33,7 @@ def obstacles(core: "Core") -> list[str]:
         out.append("latched: reset it by naming its causes")
     if state.permission is not Permission.IDLE:
         out.append(f"permission is {state.permission}")
-    if core.sample is None:
+    if not core.sampled:
         out.append("no sample seen yet")
     if not core.recorder_ready:
         out.append("the recorder is not ready")
@@ -57,7 +57,7 @@ def request_arm(core: "Core", run: ActiveRun, who: str, now_s: float) -> int:
         hindered.append(f"the run is {run.stage}")
     if hindered:
         raise CommandRefused("a bench that may be armed", "; ".join(hindered), "arm")
-    run.asked_by, run.arm_tries, run.stage = who, 0, Stage.ARMED
+    run.asked_by, run.arm_tries, run.stage, run.requested_s = who, 0, Stage.ARMED, None
     core.arm_open_s = None
     try:
         return _send_arm(core, run)
@@ -102,11 +102,7 @@ def arm_answered(core: "Core", ticket: int, answer: Ok | Refusal, now_s: float) 
     if run is None or run.stage is not Stage.ARMED or ticket != run.arm_ticket:
         return
     if isinstance(answer, Ok):
-        core.arm_count = run.arm
-        run.requested_s = core.arm_open_s = now_s
-        core.move(Move.ARMED, now_s)
-        press = "press the arm input at the bench within 30 s" if core.bench.arm_input else "no arm input on this bench"
-        core.say(now_s, "attention", f"armed: {press}")
+        accepted(core, run, now_s)
         return
     if answer.code == Err.EVENT and run.arm_tries < ARM_TRIES:
         try:
@@ -118,6 +114,17 @@ def arm_answered(core: "Core", ticket: int, answer: Ok | Refusal, now_s: float) 
     core.say(now_s, "attention", f"the MCU refused to arm: {answer.code}")
     run.stage, core.arm_open_s = Stage.PREPARED, None
     run.why = f"arm refused: {answer.code}"
+
+
+def accepted(core: "Core", run: ActiveRun, now_s: float) -> None:
+    """The MCU took the arm: told by its event or by its answer, whichever comes first."""
+    if run.requested_s is not None:
+        return
+    core.arm_count = run.arm
+    run.requested_s = core.arm_open_s = now_s
+    core.move(Move.ARMED, now_s)
+    press = "press the arm input at the bench within 30 s" if core.bench.arm_input else "no arm input on this bench"
+    core.say(now_s, "attention", f"armed: {press}")
 
 
 def expire(core: "Core", now_s: float) -> None:
@@ -173,9 +180,9 @@ def _noted(core: "Core", run: ActiveRun, note: Note, now_s: float) -> None:
     else:
         core.note(now_s, "action", **place, action=str(note.what), text=note.text, volts=note.volts)
     if note.what is What.STEP_BEGUN and step is not None:
-        core.say(now_s, "note", f"step {step.number}: {step.name}")
+        core.say(now_s, "note", f"step {step.number + 1}: {step.name}")
         if core.guard is not None:
-            core.guard.with_limits(limits_of(core.bench, run.spec.program, step, core.greeting))
+            core.guard.with_limits(limits_of(core.bench, run.spec.program, step, rate_hz=core.rate_hz))
     elif note.what is What.READING:
         core.say(now_s, "note", f"reading at {note.reading_s:g} s: {note.volts:.6g} V, {note.amps * 1e6:.5g} µA")
     elif note.what is What.FINISHED:
@@ -201,13 +208,12 @@ def off(core: "Core", tick: int, now_s: float) -> None:
                 run.cause_text() or "the arm was voided before anything was energised")
         run.stage = Stage.DISCHARGING
     else:
-        run.end(Outcome.INTERRUPTED, "the MCU went off by itself")
         run.stage = Stage.DISCHARGING
         if run.cut_tick is None:
             run.cut_tick = tick
             core.discharge.cut(tick / core.tick_hz)
     if core.guard is not None:
-        core.guard.with_limits(limits_of(core.bench, None, None, core.greeting))
+        core.guard.with_limits(limits_of(core.bench, None, None, rate_hz=core.rate_hz))
 
 
 def close_when_discharged(core: "Core", run: ActiveRun, now_s: float) -> None:
@@ -230,8 +236,9 @@ def close(core: "Core", run: ActiveRun, now_s: float) -> None:
     """The run is over and followed; the shell closes its record."""
     if run.stage is Stage.CLOSED:
         return
-    if run.outcome is None:
-        run.end(Outcome.CANCELLED, "never armed")
+    if run.outcome is None:  # a cause that latched has named it already
+        run.end(*((Outcome.CANCELLED, "never armed") if run.cut_tick is None and run.energised_tick is None
+                  else (Outcome.INTERRUPTED, "the MCU went off by itself")))
     run.stage = Stage.CLOSED
     core.interlock_opened = False
     core.note(now_s, "run closed", outcome=str(run.outcome), why=run.why, causes=run.causes, host_rule=run.host_rule,

@@ -37,6 +37,7 @@ def open_run(core: "Core", spec: RunSpec, now_s: float) -> ActiveRun:
     if core.greeting is None or core.state.link is not LinkState.GREETED:
         raise CommandRefused("a greeted link", core.link_text, "run")
     info = core.greeting.info
+    core.fresh_judgement()
     core.run = ActiveRun(spec=spec, runner=Runner(spec.program, core.bench, info.tick_hz, info.queue))
     core.say(now_s, "note", f"run {spec.run_id} prepared: {spec.plan}, specimen {spec.specimen}")
     return core.run
@@ -50,7 +51,7 @@ def _arm(core: "Core", now_s: float, args: Args, who: str) -> Done:
     if not core.bench.arm_input and name != run.spec.run_id:
         raise CommandRefused(f"the run's name typed: {run.spec.run_id}", repr(name), "arm",
                              "this bench has no arm input, so the run's name must be typed")
-    return {"ticket": arming.request_arm(core, run, who, now_s), "run": run.spec.run_id}
+    return {"ticket_number": arming.request_arm(core, run, who, now_s), "run": run.spec.run_id}
 
 
 def _cancel(core: "Core", now_s: float, args: Args, who: str) -> Done:
@@ -123,7 +124,7 @@ def _reset(core: "Core", now_s: float, args: Args, who: str) -> Done:
         mask |= by_word[word]
     grounded = bool(args.get("grounded"))
     core.note(now_s, "action", action="reset", causes=mask, grounded=grounded, who=who)
-    return {"ticket": core.link.request(Reset(causes=mask, grounded=int(grounded)))}
+    return {"ticket_number": core.link.request(Reset(causes=mask, grounded=int(grounded)))}
 
 
 def _seat_take(core: "Core", now_s: float, args: Args, who: str) -> Done:
@@ -145,11 +146,15 @@ def _seat_acknowledge(core: "Core", now_s: float, args: Args, who: str) -> Done:
     return {"acknowledged": True}
 
 
+def _seat_check(core: "Core", now_s: float, args: Args, who: str) -> Done:
+    return {"holder": core.seat.holder.name if core.seat.holder else ""}
+
+
 def _stored(core: "Core", now_s: float, args: Args, who: str) -> Done:
     if core.link is None:
         raise CommandRefused("a link to the MCU", core.link_text, "stored")
     core.evidence.fetching = False
-    return {"ticket": core.link.request(Stored(snapshot=int(args["number"])))}
+    return {"ticket_number": core.link.request(Stored(snapshot=int(args["number"])))}
 
 
 def _commission(core: "Core", now_s: float, args: Args, who: str) -> Done:
@@ -165,7 +170,7 @@ def _commission(core: "Core", now_s: float, args: Args, who: str) -> Done:
         core.link.request(Put(key=key, value=wanted[key]))
     ticket = core.link.request(Save(checksum=wanted.checksum))
     core.say(now_s, "attention", f"settings written by {who}: {len(keys)} keys, checksum {wanted.checksum:08X}")
-    return {"ticket": ticket, "keys": keys, "checksum": f"{wanted.checksum:08X}"}
+    return {"ticket_number": ticket, "keys": keys, "checksum": f"{wanted.checksum:08X}"}
 
 
 COMMANDS: dict[str, Callable[["Core", float, Args, str], Done]] = {
@@ -178,7 +183,8 @@ COMMANDS: dict[str, Callable[["Core", float, Args, str], Done]] = {
     "seat.take": _seat_take,
     "seat.release": _seat_release,
     "seat.acknowledge": _seat_acknowledge,
+    "seat.check": _seat_check,
     "stored": _stored,
     "commission": _commission,
 }
-NEED_SEAT = frozenset({"arm", "set", "reset", "commission"})
+NEED_SEAT = frozenset({"seat.check", "arm", "set", "reset", "commission"})

@@ -78,6 +78,7 @@ class Core:
         self.assembler: Assembler | None = None
         self.guard: Guard | None = None
         self.sample: SampleBlock | None = None
+        self.sampled = False  # a block of this session was judged
         self.measured: Measured | None = None
         self.inputs = 0
         self.last_event = 0
@@ -110,7 +111,7 @@ class Core:
         """The port is open: begin a new session and return its first bytes."""
         self.link = Link(now_s, session=self._sessions(), lease_ms=round(self.bench.lease_s * 1000),
                          first_stop=self._next_stop)
-        self.block_s = now_s
+        self.block_s, self.sampled = now_s, False
         self._relink_at = None
         self.link_text = "greeting"
         return self.take_output(now_s)
@@ -236,7 +237,7 @@ class Core:
 
     def _follow(self, sample: SampleBlock, now_s: float) -> None:
         """Everything about a judged block that is not protective."""
-        self.sample, self.block_s = sample, now_s
+        self.sample, self.block_s, self.sampled = sample, now_s, True
         pairs = sample.pairs
         ticks = pairs * sample.sample_ticks
         self.measured = measured = Measured(
@@ -343,6 +344,19 @@ class Core:
         """Ticks per second of the greeted MCU."""
         return self.greeting.info.tick_hz if self.greeting else 1
 
+    @property
+    def rate_hz(self) -> float | None:
+        """Sample pairs per second of the greeted MCU."""
+        return self.greeting.info.rate_hz if self.greeting else None
+
+    def volts(self, code: float) -> float:
+        """Oriented volts of an oriented code above zero."""
+        return self._v_zero + self._v_gain * code
+
+    def amps(self, code: float) -> float:
+        """Oriented amps of an oriented code above zero."""
+        return self._i_zero + self._i_gain * code
+
     def cut_for(self, rule: HostRule, now_s: float) -> None:
         """Decide to cut; the caller's output carries it."""
         if self.link is None:
@@ -377,7 +391,7 @@ class Core:
         state = self.link.cut_state if self.link is not None else CutState.NONE
         if state is CutState.CONFIRMED:
             self.stop_decided_s = None
-            return "cut confirmed"
+            return "" if self.state.permission in LIVE else "cut confirmed"
         if self.stop_decided_s is None:
             return ""
         if self.link is None or now_s - self.stop_decided_s > CONFIRM_S:
@@ -401,17 +415,39 @@ class Core:
         self.link_text = (f"greeted {info.firmware}, boot {info.boot}" if agreed else
                           "observe only: " + ("settings blank or damaged" if greeting.settings is None
                                               else "; ".join(f.text for f in findings)))
-        self.assembler = Assembler(Orientation.of(settings, info),
-                                   info.tick_hz, info.sample_ticks, stale_s=self.bench.lease_s)
-        self.block_span_s = info.block_pairs * info.sample_ticks / info.tick_hz
         self._v_zero = self.bench.voltage.monitor.value(settings["vzero"])
         self._i_zero = self.bench.current.monitor.value(settings["izero"])
-        self.guard = Guard(limits_of(self.bench, None, None, greeting))
+        self.block_span_s = info.block_pairs * info.sample_ticks / info.tick_hz
+        self.fresh_judgement()
         self.say(now_s, "note" if agreed else "attention", self.link_text)
         if info.causes:
             self.say(now_s, "attention", f"latched: {', '.join(info.cause_words)}")
         if info.snapshot:
             self.evidence.begin(self, info.snapshot)
+
+    def fresh_judgement(self) -> None:
+        """Begin samples and guard anew (at a greeting, and at a run's opening so that a replay can begin there)."""
+        assert self.greeting is not None
+        info = self.greeting.info
+        orientation = Orientation.of(self.greeting.settings or self.bench.settings(), info)
+        self.assembler = Assembler(orientation, info.tick_hz, info.sample_ticks, stale_s=self.bench.lease_s)
+        self.guard = Guard(limits_of(self.bench, None, None, rate_hz=info.rate_hz))
+
+    def opening_state(self) -> dict[str, Any]:
+        """What a replay needs to begin where a run was opened."""
+        assert self.link is not None
+        return {"link": self.link.numbers(), "last_event": self.last_event, "arm_count": self.arm_count,
+                "latched": self.state.latched, "host_rule": self.host_rule, "inputs": self.inputs,
+                "interlock_opened": self.interlock_opened, "seat_held": self.seat.holder is not None}
+
+    def resume(self, greeting: Greeting, state: Mapping[str, Any], now_s: float, link: Link) -> None:
+        """Stand where `opening_state` was taken: for a replay."""
+        self.link, self.block_s, self.sampled = link, now_s, True
+        self.greeted(Greeted(greeting), now_s)
+        self.last_event, self.arm_count = int(state["last_event"]), int(state["arm_count"])
+        self.host_rule, self.inputs = int(state["host_rule"]), int(state["inputs"])
+        self.interlock_opened = bool(state["interlock_opened"])
+        self.state = replace(self.state, latched=int(state["latched"]))
 
     def ended(self, event: Ended, now_s: float) -> None:
         """The session is over: what ran is interrupted; a new session is tried after a pause."""

@@ -123,6 +123,8 @@ def mcu_event(core: "Core", event: McuEvent, now_s: float) -> None:
         caused(core, event, tick, now_s)
     if not fresh:
         return
+    if core.guard is not None:
+        core.guard.heard(event.kind, tick)
     act = _ACTS.get(event.kind)
     if act is not None:
         act(core, event, tick, now_s)
@@ -159,6 +161,9 @@ def inputs_changed(core: "Core", inputs: int, now_s: float) -> None:
 
 
 def _requested(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
+    run = core.run
+    if run is not None and run.stage is Stage.ARMED and event.a == run.arm:
+        arming.accepted(core, run, now_s)
     core.mcu_in(McuState.REQUESTED, tick, now_s)
 
 
@@ -264,6 +269,10 @@ def _interfered(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.note(now_s, "interfered", rule=WORDS.get(event.a, str(event.a)), count=event.b, tick=tick)
 
 
+def _off_seen(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
+    core.say(now_s, "note", f"seen with the output off, no trip: {WORDS.get(event.a, str(event.a))}")
+
+
 def _void(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.note(now_s, "void", arm=event.a, why=event.b)
 
@@ -286,7 +295,7 @@ _ACTS: dict[str, Act] = {
     EventKind.LAPSE: _told("the lease lapsed"),
     EventKind.SLOW_TO_FALL: _told("slow to fall"),
     EventKind.INTERFERED: _interfered,
-    EventKind.OFF_SEEN: _told("seen with the output off: cause {a:X}"),
+    EventKind.OFF_SEEN: _off_seen,
     EventKind.RESET: _reset,
     EventKind.SAVED: _told("settings saved"),
     EventKind.SNAPSHOT: _snapshot,

@@ -11,6 +11,7 @@ Where the port took only a part of the output, ``unsent(rest)`` hands the rest b
 Nothing here waits, logs or opens anything.
 """
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from hvhost.wire.events import (
@@ -92,6 +93,22 @@ class Link:
         self._renewal = self._tail = b""
         self._silent = self._torn = False
         self._ended_text = ""
+
+    @classmethod
+    def resumed(cls, now_s: float, greeting: Greeting, numbers: Mapping[str, float]) -> "Link":
+        """A link as it stood when ``numbers`` were taken, greeted and with nothing outstanding: for a replay."""
+        link = cls(now_s, session=greeting.session, lease_ms=round(greeting.lease_s * 1000),
+                   first_stop=int(numbers["stop"]))
+        link._requests.resume(int(numbers["request"]))
+        link._ticket, link.last_event = int(numbers["ticket"]), int(numbers["event"])
+        link._renewed_s = numbers["renewed_s"] if numbers["renewed_s"] >= 0.0 else None
+        link.greeting, link._fitted, link.state = greeting, greeting.fitted, LinkState.GREETED
+        return link
+
+    def numbers(self) -> dict[str, float]:
+        """The counters that `resumed` goes on with."""
+        return {"request": self._requests.next_number, "stop": self._stops.next_number, "ticket": self._ticket,
+                "event": self.last_event, "renewed_s": -1.0 if self._renewed_s is None else self._renewed_s}
 
     # ------------------------------------------------------------ what the caller may ask
 

@@ -52,6 +52,16 @@ class Requests:
         self.out: Waiting | None = None
         self.waiting: deque[Waiting] = deque()
 
+    @property
+    def next_number(self) -> int:
+        """The number that the next request will carry."""
+        return self._next
+
+    def resume(self, number: int) -> None:
+        """Go on with this number and nothing outstanding: a recording is played back."""
+        self.restart()
+        self._next = self._lowest = number
+
     def restart(self) -> None:
         """A session was opened: the next request carries 1, and nothing is outstanding."""
         self._next = self._lowest = 1

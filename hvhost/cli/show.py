@@ -1,0 +1,27 @@
+"""``hvhost show RUN``: one run as a page, its files checked against their hashes."""
+
+import argparse
+import json
+
+from hvhost.cli import exits
+from hvhost.cli.runs import DEFAULT_ROOT, root_of
+from hvhost.measure.result import evaluate
+from hvhost.record.catalogue import find_run
+from hvhost.record.data import load_run
+from hvhost.report.closing import page_of
+
+VERDICT_CODES = {"pass": exits.PASSED, "fail": exits.FAILED, "not decided": exits.NOT_DECIDED}
+
+
+def run(argv: list[str]) -> int:
+    """Print the page; the exit code is the verdict's."""
+    parser = argparse.ArgumentParser(prog="hvhost show", epilog=exits.EPILOG,
+                                     description="Shows one run, computed anew from its record.")
+    parser.add_argument("run", metavar="RUN", help="a run's number, its folder's name, or the folder")
+    parser.add_argument("--runs", default="", metavar="FOLDER", help=f"the runs folder (default: {DEFAULT_ROOT})")
+    parser.add_argument("--json", action="store_true")
+    options = parser.parse_args(argv)
+    folder = find_run(root_of(options.runs), options.run)
+    result = evaluate(load_run(folder))
+    print(json.dumps(result.to_json(), ensure_ascii=False) if options.json else page_of(folder), end="")
+    return VERDICT_CODES[result.verdict.value]

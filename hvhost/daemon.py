@@ -1,0 +1,262 @@
+"""The daemon: moves bytes, time and requests between the world and one station, in one TaskGroup.
+
+Nothing here decides.  The read callback runs the whole protective chain before it returns; timers, snapshots, the
+local socket and the closing of records come after.  Whatever ends the daemon, its last act is to lower and to wait,
+bounded, for the MCU to be off.
+"""
+
+import asyncio
+import contextlib
+import gc
+import json
+import os
+import secrets
+import signal
+import sys
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+from hvhost.bench.model import Bench
+from hvhost.ports.clock import SystemClock
+from hvhost.ports.descriptor import DescriptorPort
+from hvhost.ports.opening import open_port
+from hvhost.publish.conversation import Peer
+from hvhost.publish.local import LocalServer
+from hvhost.publish.outlet import Outlet, Publisher
+from hvhost.publish.places import socket_path
+from hvhost.publish.station import CloseJob, Station, end_recording
+from hvhost.record.catalogue import unclosed
+from hvhost.record.recorder import Recorder
+from hvhost.report.closing import recover_and_close
+from hvhost.supervisor import arming
+from hvhost.supervisor.runs import Outcome
+from hvhost.supervisor.states import Permission
+from hvhost.words.errors import CannotConnect, HvhostError, RecordFault
+
+SNAPSHOT_S = 0.1  # ten pictures a second
+REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
+LAST_LOWER_S = 12.0  # how long the end waits for a lowering
+CLOSE_S = 600.0  # exporting and repacking a day of samples takes minutes
+SLACK_S = 0.0005  # a deadline this much earlier than the set timer is not worth another timer
+
+
+class Daemon:
+    """One bench served until it is told to stop."""
+
+    def __init__(self, bench: Bench, *, socket: str = "", runs_root: Path | None = None, device: str = "",
+                 rehearsal: bool = False, say: Callable[[str], None] | None = None) -> None:
+        self.bench, self.device = bench, device or bench.port.device
+        self.say = say or _to_stderr
+        self.clock = SystemClock()
+        self.station = Station(
+            bench, self.clock, lambda: 1 + secrets.randbelow(0xFFFFFFFF),
+            runs_root=runs_root or Path(bench.runs_folder).expanduser(), openers=self._open_recorder,
+            write=self._write, on_close=self._close_later, port=self.device, rehearsal=rehearsal)
+        self.publisher = Publisher()
+        self.server = LocalServer(socket_path(bench.name, socket), self._handle, peer_gone=self._peer_gone)
+        self.publisher.add(self.server)
+        self.ready = asyncio.Event()
+        self._port: DescriptorPort | None = None
+        self._stop = asyncio.Event()
+        self._lost = asyncio.Event()
+        self._loop: asyncio.AbstractEventLoop | None = None
+        self._timer: asyncio.TimerHandle | None = None
+        self._group: asyncio.TaskGroup | None = None
+        self._tickets: dict[int, set[str]] = {}
+
+    # ------------------------------------------------------------ life
+
+    async def run(self) -> None:
+        """Serve until `stop`; raises `CannotConnect` or `RecordFault` where it cannot begin."""
+        self._loop = asyncio.get_running_loop()
+        port = open_port(self.device, self.bench.port.baud)
+        try:
+            await self.server.open()
+        except HvhostError:
+            os.close(port.fd)
+            raise
+        try:
+            self._recover()
+            with contextlib.suppress(NotImplementedError, ValueError):  # no signals outside the main thread
+                for number in (signal.SIGINT, signal.SIGTERM):
+                    self._loop.add_signal_handler(number, self.stop)
+            async with asyncio.TaskGroup() as group:
+                self._group = group
+                self._attach(port)
+                gc.collect()
+                gc.freeze()  # a full collection of what lives for ever would stall the loop
+                tasks = [group.create_task(self._publish()), group.create_task(self._reopen())]
+                self.ready.set()
+                await self._stop.wait()
+                await self._lower_last()
+                for task in tasks:
+                    task.cancel()
+        finally:
+            await self.server.close()
+            if self._port is not None:
+                self._port.close()
+
+    def stop(self) -> None:
+        """End the daemon: lower first."""
+        self._stop.set()
+
+    async def _lower_last(self) -> None:
+        """Nothing of ours stays energised: lower, and wait for the MCU to say that it is off."""
+        core = self.station.core
+        if self._permitted() and core.link is not None:
+            self.say("lowering before the daemon ends")
+            with contextlib.suppress(HvhostError):
+                self.station.command("lower", {}, "hvhost ending")
+            until = self.clock.now_s() + min(LAST_LOWER_S, self.bench.lower_max_s + 2.0)
+            while self._permitted() and self.clock.now_s() < until:
+                await asyncio.sleep(0.02)
+            if self._permitted():
+                self.say("not lowered in time: use the emergency switching off")
+        run = core.run
+        if run is not None and self.station.recording is not None:
+            run.end(Outcome.INTERRUPTED, "the daemon ended")
+            arming.close(core, run, self.clock.now_s())
+            self.station.after()
+        while self.station.closing:
+            await asyncio.sleep(0.02)
+
+    def _permitted(self) -> bool:
+        return self.station.core.state.permission is not Permission.IDLE
+
+    def _recover(self) -> None:
+        """Close what an earlier daemon left open, as interrupted; nothing is resumed (S8)."""
+        root = self.station.runs_root
+        for folder in unclosed(root) if root.exists() else ():
+            try:
+                recover_and_close(folder, utc_ns=self.clock.utc_ns())
+                self.say(f"run {folder.name} was left open: closed as interrupted")
+            except (RecordFault, OSError) as error:
+                self.say(f"run {folder.name} cannot be recovered: {error}")
+
+    # ------------------------------------------------------------ the port
+
+    def _attach(self, port: DescriptorPort) -> None:
+        self._port = port
+        port.attach(self._bytes, self._room, self._gone)
+        self.station.connect()
+        self._schedule()
+
+    def _bytes(self, data: bytes) -> None:
+        self.station.feed(data)
+        self._schedule()
+
+    def _room(self) -> None:
+        self.station.flush()
+        self._schedule()
+
+    def _write(self, data: bytes) -> bytes:
+        return self._port.write_nowait(data) if self._port is not None else b""
+
+    def _gone(self, reason: str) -> None:
+        self._port = None
+        self.station.gone(reason)
+        self.say(f"port {self.device} lost: {reason}")
+        self._lost.set()
+
+    async def _reopen(self) -> None:
+        """Open the port again whenever it is gone; a new session is passive and resumes nothing."""
+        while True:
+            await self._lost.wait()
+            self._lost.clear()
+            attempt = 0
+            while self._port is None:
+                await asyncio.sleep(REOPEN_S[min(attempt, len(REOPEN_S) - 1)])
+                attempt += 1
+                with contextlib.suppress(CannotConnect):
+                    self._attach(open_port(self.device, self.bench.port.baud))
+                    self.say(f"port {self.device} is back")
+
+    # ------------------------------------------------------------ time
+
+    def _schedule(self) -> None:
+        loop, due = self._loop, self.station.deadline()
+        if loop is None or due is None:
+            return
+        timer = self._timer
+        if timer is not None and not timer.cancelled() and timer.when() <= due + SLACK_S:
+            return
+        if timer is not None:
+            timer.cancel()
+        self._timer = loop.call_at(max(due, loop.time() + SLACK_S), self._tick)
+
+    def _tick(self) -> None:
+        self._timer = None
+        self.station.tick()
+        self._schedule()
+
+    async def _publish(self) -> None:
+        while True:
+            self.publisher.publish_nowait(self.station.snapshot(self.publisher.views()))
+            await asyncio.sleep(SNAPSHOT_S)
+
+    def add_outlet(self, outlet: Outlet) -> None:
+        """Offer every snapshot to one more outlet."""
+        self.publisher.add(outlet)
+
+    # ------------------------------------------------------------ requests
+
+    def _handle(self, method: str, params: dict[str, Any], peer: Peer) -> Any:
+        who = str(params.pop("as", "")).strip()[:80] or f"uid {peer.uid}"
+        if method == "seat.take":
+            ticket = str(params.get("ticket") or secrets.token_hex(8))
+            params["ticket"] = ticket
+            result = self.station.handle(method, params, who)
+            self._tickets.setdefault(peer.number, set()).add(ticket)
+            self._schedule()
+            return {**result, "ticket": ticket}
+        if method == "shutdown":
+            self.stop()
+            return {"ending": True}
+        result = self.station.handle(method, params, who)
+        self._schedule()
+        return result
+
+    def _peer_gone(self, peer: Peer) -> None:
+        for ticket in self._tickets.pop(peer.number, ()):
+            self.station.handle("seat.release", {"ticket": ticket}, "a connection that closed")
+
+    # ------------------------------------------------------------ records
+
+    def _open_recorder(self, folder: Any, meta: Any, *, tag: int, signs: str,
+                       on_failed: Callable[[str], None]) -> Recorder:
+        loop = self._loop
+        assert loop is not None
+        return Recorder.open(folder, meta, tag=tag, signs=signs,
+                             on_failed=lambda reason: _soon(loop, on_failed, reason))
+
+    def _close_later(self, job: CloseJob) -> None:
+        if self._group is not None:
+            self._group.create_task(self._close(job))
+
+    async def _close(self, job: CloseJob) -> None:
+        """Close the recorder off the loop's thread, then the folder in a process of its own."""
+        verdict = "not decided: the record could not be closed"
+        try:
+            await asyncio.to_thread(end_recording, job)
+            child = await asyncio.create_subprocess_exec(
+                sys.executable, "-m", "hvhost.report.closing", str(job.folder.path),
+                stdin=asyncio.subprocess.DEVNULL, stdout=asyncio.subprocess.PIPE, stderr=asyncio.subprocess.PIPE)
+            out, err = await asyncio.wait_for(child.communicate(), CLOSE_S)
+            if child.returncode:
+                self.say(f"closing run {job.folder.name}: {err.decode(errors='replace').strip()}")
+            else:
+                verdict = str(json.loads(out)["verdict"])
+        except (HvhostError, OSError, TimeoutError, ValueError, KeyError) as error:
+            self.say(f"closing run {job.folder.name}: {error}")
+        finally:
+            self.station.closed(verdict)
+
+
+def _soon(loop: asyncio.AbstractEventLoop, call: Callable[[str], None], reason: str) -> None:
+    with contextlib.suppress(RuntimeError):  # the loop is closed already
+        loop.call_soon_threadsafe(call, reason)
+
+
+def _to_stderr(text: str) -> None:
+    print(f"hvhost: {text}", file=sys.stderr, flush=True)

@@ -1,0 +1,287 @@
+"""Builds the snapshot from the core's state: the one place where what is known becomes what is shown."""
+
+from collections import deque
+from collections.abc import Callable
+
+from hvhost.bench.cautions import BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE
+from hvhost.plan.program import HoldStep
+from hvhost.publish.snapshot import (
+    EVENTS_KEPT,
+    TREND_KEPT,
+    ArmView,
+    EventLine,
+    HoldView,
+    InputJudgement,
+    InputView,
+    LinkQuality,
+    LinkState,
+    OutletView,
+    Permission,
+    Phase,
+    Reading,
+    RecordView,
+    RunView,
+    Severity,
+    Snapshot,
+    StopState,
+    TrendBucket,
+    VoltageState,
+)
+from hvhost.samples.blocks import Flags, SampleBlock
+from hvhost.supervisor import arming
+from hvhost.supervisor import states as st
+from hvhost.supervisor.core import Core
+from hvhost.supervisor.runs import ActiveRun, Stage
+from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState, cause_words
+
+TREND_BUCKET_S = 0.5
+REQUEST_S = 30.0
+FLAG_WORDS = {Flags.LIMIT_V: "voltage at converter limit", Flags.LIMIT_I: "current at converter limit",
+              Flags.REVERSED_V: "voltage reversed", Flags.REVERSED_I: "current reversed", Flags.STALE: "stale",
+              Flags.GAP: "gap", Flags.MISSED: "missed conversions"}
+PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
+               st.Permission.REQUESTED: (Permission.REQUESTED, Phase.NONE),
+               st.Permission.WARNING: (Permission.WARNING, Phase.NONE),
+               st.Permission.RAMP: (Permission.RUNNING, Phase.RAMP),
+               st.Permission.HOLD: (Permission.RUNNING, Phase.HOLD),
+               st.Permission.RETREAT: (Permission.RUNNING, Phase.RETREAT),
+               st.Permission.REST: (Permission.RUNNING, Phase.REST),
+               st.Permission.PAUSING: (Permission.PAUSING, Phase.NONE),
+               st.Permission.LOWERING: (Permission.LOWERING, Phase.NONE)}
+# input, what must be fitted (None: always), name, closed words, open words, bit wanted for arming (None: no matter)
+INPUTS: tuple[tuple[Inputs, Fitted | None, str, str, str, bool | None], ...] = (
+    (Inputs.INTERLOCK, None, "interlock", "closed", "open", True),
+    (Inputs.EMERGENCY, Fitted.EMERGENCY, "emergency contact", "closed", "open", True),
+    (Inputs.GROUND_OPEN, Fitted.GROUND_STICK | Fitted.GROUND_SWITCH, "grounding device", "open position",
+     "not in its open position", True),
+    (Inputs.DANGER, Fitted.DANGER, "danger signal", "lit", "dark", None),
+    (Inputs.AUXILIARY, Fitted.AUXILIARY, "auxiliary supplies", "good", "low", True),
+    (Inputs.POLARITY, Fitted.POLARITY, "polarity contact", "agrees", "disagrees", True),
+    (Inputs.ARM_INPUT, Fitted.ARM_INPUT, "arm input", "pressed", "not pressed", None),
+    (Inputs.RELAY_BACK, Fitted.RELAY_BACK, "power relay", "closed", "open", None),
+    (Inputs.INHIBIT_BACK, Fitted.INHIBIT_BACK, "inhibit", "asserted", "released", None),
+)
+
+
+class TrendKeeper:
+    """Gathers minima and maxima of the readbacks in buckets; bounded."""
+
+    def __init__(self) -> None:
+        self.buckets: deque[TrendBucket] = deque(maxlen=TREND_KEPT)
+        self._open: list[float] | None = None  # end, v_min, v_max, i_min, i_max
+
+    def take(self, now_s: float, v_min: float, v_max: float, i_min: float, i_max: float) -> None:
+        """Add one block's extremes, SI."""
+        bucket = self._open
+        if bucket is not None and now_s >= bucket[0]:
+            self.buckets.append(TrendBucket(*bucket))
+            bucket = None
+        if bucket is None:
+            self._open = [now_s + TREND_BUCKET_S, v_min, v_max, i_min, i_max]
+            return
+        bucket[1:] = [min(bucket[1], v_min), max(bucket[2], v_max), min(bucket[3], i_min), max(bucket[4], i_max)]
+
+
+class Composer:
+    """Makes snapshots of one core; ``utc_of(now_s)`` gives UTC nanoseconds of a monotonic time."""
+
+    def __init__(self, core: Core, utc_of: Callable[[float], int], *, port: str, rehearsal: bool) -> None:
+        self.core, self.utc_of, self.port, self.rehearsal = core, utc_of, port, rehearsal
+        self.trend = TrendKeeper()
+        self.verdict_text = ""
+        self.folder = ""
+        self.record = RecordView()
+        self._seq = 0
+        self._lines: deque[EventLine] = deque(maxlen=EVENTS_KEPT)
+        self._line_number = 0
+        self._sample: SampleBlock | None = None
+
+    def look(self) -> None:
+        """Take the newest block into the trend; called after each read."""
+        sample, core = self.core.sample, self.core
+        if sample is None or sample is self._sample:
+            return
+        self._sample = sample
+        self.trend.take(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
+                        core.amps(min(sample.i)), core.amps(max(sample.i)))
+
+    def snapshot(self, now_s: float, outlets: tuple[OutletView, ...] = ()) -> Snapshot:
+        """Return the whole picture at this time."""
+        core, bench = self.core, self.core.bench
+        self._seq += 1
+        permission, phase = PERMISSIONS[core.state.permission]
+        if permission is Permission.REQUESTED and core.sample is not None and core.sample.state == McuState.PROVING:
+            permission = Permission.PROVING
+        run = core.run
+        reading = self._reading(now_s)
+        sample = core.sample
+        return Snapshot(
+            utc_ns=self.utc_of(now_s), now_s=now_s, seq=self._seq, bench=bench.name, bench_title=bench.title,
+            polarity=bench.polarity, rehearsal=self.rehearsal, port=self.port,
+            link=LinkState(core.state.link.value), link_text=core.link_text, permission=permission, phase=phase,
+            latched=latched_words(core), voltage=self._voltage(), voltage_text=core.discharge.text,
+            power_words=power_words(core), stop=StopState(core.cut_words(now_s)),
+            set_volts=bench.voltage.program.value(sample.v_word) if sample else None,
+            set_amps=bench.current.program.value(sample.i_word) if sample else None, reading=reading,
+            block_s=core.block_span_s or 0.032, lease_s=bench.lease_s, volts_full=bench.v_max, amps_full=bench.i_max,
+            ceiling_volts=run.spec.program.v_highest if run and run.stage is not Stage.CLOSED else bench.v_max,
+            trip_amps=_trip_amps(core), inputs=self._inputs(), run=self._run(run), arm=self._arm(run, now_s),
+            pause_s=run.runner.pause_left_s() if run else None, warning_s=self._warning(), seat=seat_words(core),
+            events=self._events(), trend=tuple(self.trend.buckets), next_acts=next_acts(core),
+            cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text=core.discharge.text if run and run.cut_tick is not None else "",
+            bleeds_passed=self._bleeds(), verdict_text=self.verdict_text, quality=self._quality(),
+            record=self.record, outlets=outlets)
+
+    def _voltage(self) -> VoltageState:
+        core = self.core
+        if core.state.voltage is st.Voltage.UNKNOWN and core.state.link in (st.LinkState.GREETED,
+                                                                           st.LinkState.OBSERVE):
+            if core.discharge.lost:
+                return VoltageState.LOST
+            if not core.discharge.provable and core.discharge.cut_s is not None:
+                return VoltageState.NOT_MEASURED
+        return VoltageState(core.state.voltage.value)
+
+    def _reading(self, now_s: float) -> Reading | None:
+        core = self.core
+        sample, measured = core.sample, core.measured
+        if sample is None or measured is None or core.state.link is st.LinkState.LOST:
+            return None
+        age_s = max(0.0, now_s - core.block_s)
+        if age_s > core.bench.lease_s:  # S13: older than the lease is not shown at all
+            return None
+        volts, amps = core.bench.voltage.monitor, core.bench.current.monitor
+        return Reading(
+            volts=measured.volts, amps=measured.amps, u_volts=volts.u(max(0.0, measured.volts)),
+            u_amps=amps.u(max(0.0, measured.amps)), volts_min=core.volts(min(sample.v)),
+            volts_max=core.volts(max(sample.v)), amps_min=core.amps(min(sample.i)), amps_max=core.amps(max(sample.i)),
+            age_s=age_s, flags=tuple(word for flag, word in FLAG_WORDS.items() if sample.flags & flag))
+
+    def _inputs(self) -> tuple[InputView, ...]:
+        core = self.core
+        known = core.sample is not None and core.state.link in (st.LinkState.GREETED, st.LinkState.OBSERVE)
+        out = []
+        for bit, needs, name, closed, opened, wanted in INPUTS:
+            if needs is not None and not core.bench.fitted & needs:
+                continue
+            on = bool(core.inputs & bit)
+            judgement = InputJudgement.UNKNOWN
+            if known:
+                judgement = InputJudgement.OK if wanted is None or on is wanted else InputJudgement.NOT_OK
+            out.append(InputView(name=name, state=(closed if on else opened) if known else "unknown",
+                                 judgement=judgement))
+        return tuple(out)
+
+    def _run(self, run: ActiveRun | None) -> RunView | None:
+        if run is None:
+            return None
+        runner, spec = run.runner, run.spec
+        step = runner.step
+        elapsed = 0.0
+        if run.energised_tick is not None and self.core.sample is not None:
+            end = run.cut_tick if run.cut_tick is not None else self.core.sample.last_tick
+            elapsed = max(0.0, (end - run.energised_tick) / self.core.tick_hz)
+        hold = None
+        if isinstance(step, HoldStep) and run.stage is Stage.LIVE:
+            hold = HoldView(elapsed_s=runner.elapsed_s, required_s=step.hold_s, clock=str(step.clock),
+                            at_most_s=step.at_most_s, inside=runner.inside)
+        return RunView(
+            run_id=spec.run_id, kind=spec.kind, plan=spec.plan, specimen=spec.specimen, operator=spec.operator,
+            step_number=min(runner.at + 1, len(spec.program.steps)), step_total=len(spec.program.steps),
+            step_name=step.name if step else "", step_text=arming.step_text(run), elapsed_s=elapsed,
+            remaining_s=max(0.0, spec.program.duration_s - elapsed) if spec.kind == "plan" else None, hold=hold,
+            next_reading_s=runner.next_reading_s() if run.stage is Stage.LIVE else None, arcs=run.arcs,
+            arcs_allowed=spec.program.reaction.count if spec.program.reaction else None, folder=self.folder,
+            ended=run.ended)
+
+    def _arm(self, run: ActiveRun | None, now_s: float) -> ArmView | None:
+        if run is None or self.core.arm_open_s is None or self.core.state.permission is not st.Permission.REQUESTED:
+            return None
+        spec = run.spec
+        return ArmView(plan=spec.plan, specimen=spec.specimen, volts_highest=spec.program.v_highest,
+                       duration_s=spec.program.duration_s, asked_by=run.asked_by,
+                       expires_s=max(0.0, REQUEST_S - (now_s - self.core.arm_open_s)),
+                       press_needed=self.core.bench.arm_input,
+                       typed_name="" if self.core.bench.arm_input else spec.run_id)
+
+    def _warning(self) -> float | None:
+        core = self.core
+        if core.warning_ends_tick is None or core.sample is None:
+            return None
+        return max(0.0, (core.warning_ends_tick - core.sample.last_tick) / core.tick_hz)
+
+    def _bleeds(self) -> float | None:
+        core = self.core
+        return None if core.sample is None else core.discharge.bleeds_passed(core.sample.last_tick / core.tick_hz)
+
+    def _events(self) -> tuple[EventLine, ...]:
+        for line in self.core.log:
+            if line.number > self._line_number:
+                self._line_number = line.number
+                self._lines.append(EventLine(utc_ns=self.utc_of(line.now_s), text=line.text,
+                                             severity=Severity(line.severity), number=line.number))
+        return tuple(self._lines)
+
+    def _quality(self) -> LinkQuality:
+        core = self.core
+        counters = core.assembler.counters if core.assembler else None
+        garbled = core.link.counters["garbled"] if core.link else 0
+        if counters is None:
+            return LinkQuality(garbled=garbled)
+        return LinkQuality(garbled=garbled, gaps=counters.gaps, missed=counters.missed,
+                           repeated=counters.repeated + counters.backward)
+
+
+def latched_words(core: Core) -> tuple[str, ...]:
+    """The latched causes in words, the host's with its rule."""
+    rule = HostRule(core.host_rule).name.lower().replace("_", " ") if core.host_rule in set(HostRule) else "?"
+    return tuple(f"host: {rule}" if word == "host" else word for word in cause_words(core.state.latched))
+
+
+def power_words(core: Core) -> str:
+    """What stands behind zero: never 'off' where the supply stays powered."""
+    if core.state.permission in st.LIVE:
+        return ""
+    if core.bench.programming_only:
+        return "programmed to zero, supply still powered"
+    if "relay" in core.bench.cut_path:
+        return "supply power cut by the relay" if not core.inputs & Inputs.RELAY_BACK else "relay still closed"
+    return "inhibited, supply still powered"
+
+
+def seat_words(core: Core) -> str:
+    """Who has control."""
+    return core.seat.holder.name if core.seat.holder else ""
+
+
+def _trip_amps(core: Core) -> float:
+    run = core.run
+    step = run.runner.step if run is not None and run.stage is Stage.LIVE else None
+    if step is not None and step.limits.trip_a is not None:
+        return min(step.limits.trip_a, core.bench.limits.overcurrent_a)
+    return core.bench.limits.overcurrent_a
+
+
+def next_acts(core: Core) -> tuple[str, ...]:
+    """What may be done next, in the operator's words."""
+    state, run = core.state, core.run
+    if state.link in (st.LinkState.NONE, st.LinkState.LOST):
+        return ("use the emergency switching off if anything may be energised", "restore the link")
+    acts: list[str] = []
+    if state.permission is st.Permission.REQUESTED:
+        acts.append("press the arm input at the bench" if core.bench.arm_input else "wait: no arm input on this bench")
+        acts.append("hvhost arm --cancel")
+    elif state.permission in st.LIVE:
+        acts += [] if state.permission is st.Permission.LOWERING else ["lower"]
+        acts.append("cut")
+    elif state.latched:
+        acts.append("reset by naming the causes: " + ", ".join(latched_words(core)))
+    elif run is not None and run.stage is Stage.PREPARED:
+        acts.append("arm")
+    elif state.link is st.LinkState.OBSERVE:
+        acts.append("hvhost commission")
+    elif run is None or run.stage is Stage.CLOSED:
+        acts.append("run a plan")
+    if run is not None and run.stage is Stage.DISCHARGING:
+        acts.insert(0, "wait for the discharge")
+    return tuple(acts)
