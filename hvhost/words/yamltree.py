@@ -5,6 +5,7 @@ nothing by themselves).  Duplicate keys, anchors, aliases, merges, tags, directi
 as are depth and size beyond any honest file.  Reading is by the parser's events, so nothing recurses.
 """
 
+import unicodedata
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -206,15 +207,19 @@ def _drop_lost(node: Node) -> None:
         pending.extend(current.items or [])
 
 
+# Control and format characters, line and paragraph separators: what an editor does not show but YAML or a reader obeys.
+_UNSEEN = frozenset({"Cc", "Cf", "Zl", "Zp", "Cs"})
+
+
 def _check_characters(reader: _Reader, text: str) -> None:
     """Tabs in the indentation and control characters, each with its line."""
     for number, line in enumerate(text.split("\n"), start=1):
         indent = line[: len(line) - len(line.lstrip())]
         if "\t" in indent and line.strip():
             reader.fault(number, "indentation", "spaces", "a tab")
-        odd = next((c for c in line.rstrip("\r") if (ord(c) < 32 and c != "\t") or ord(c) == 127), None)
+        odd = next((c for c in line.rstrip("\r") if unicodedata.category(c) in _UNSEEN and c != "\t"), None)
         if odd is not None:
-            reader.fault(number, "text", "printable characters", f"control character U+{ord(odd):04X}")
+            reader.fault(number, "text", "visible characters", f"control character U+{ord(odd):04X}")
 
 
 # The parser's problem -> what is expected, what was found, the remedy.
@@ -237,6 +242,8 @@ def _syntax_fault(reader: _Reader, error: yaml.MarkedYAMLError) -> None:
     if any(f.line == line for f in reader.findings):
         return  # a tab or control character on this line has been told already
     problem = (error.problem or "a fault of form").replace("\t", "tab")
-    other = ("'key: value' lines, indented with spaces", problem.removeprefix("found "), "")
+    wanted, but, found = problem.partition(", but found ")
+    other = (wanted.removeprefix("expected "), found, "") if but else (
+        "'key: value' lines, indented with spaces", problem.removeprefix("found "), "")
     expected, found, remedy = _PROBLEMS.get(problem, other)
     reader.fault(line, "form", expected, found, remedy)

@@ -49,7 +49,7 @@ TABLE: dict[str, tuple[Row, ...]] = {
         (3, REFUSE, "form", "one 'key: value' on a line,", "a second ': ', or a key indented too far"),
     ),
     "control-character.yaml": (
-        (3, REFUSE, "text", "printable characters", "control character U+0007"),
+        (3, REFUSE, "text", "visible characters", "control character U+0007"),
     ),
     "decimal-comma-and-grouping.yaml": (
         (21, REFUSE, "cable.resistor", "a resistance such as '2.2 kΩ'", "'20,000 Ω'"),
