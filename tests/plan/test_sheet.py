@@ -3,9 +3,12 @@
 from pathlib import Path
 
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
-from hvhost.plan.sheet import check_sheet, load_sheet, sheet_from, sheet_of, sheet_schema
+from hvhost.plan.sheet import check_sheet, load_sheet, read_sheet, sheet_from, sheet_of, sheet_schema
 from hvhost.words.errors import FileFault
+from hvhost.words.findings import Grade
 from tests.plan.conftest import CONFIGS, FAULTY
 from tests.plan.test_language import unmatched, wanted
 
@@ -59,3 +62,29 @@ def test_a_typed_label_that_could_not_stand_in_a_file_is_refused(specimen: str) 
 def test_the_schema_asks_for_a_specimen() -> None:
     """The JSON Schema is that of a run sheet."""
     assert "specimen" in sheet_schema()["required"]
+
+
+LINES = st.lists(st.one_of(st.sampled_from([
+    "sheet: x", "specimen: S-1", "specimen:", "connected:", "  capacitance: {from: 1 nF, to: 2 nF}", "  current: 5",
+    "  current: {from: 1 A}", "connected: []", "values:", "  u: 5 kV", "  ? [a]", "confirmed: {polarity: x}",
+    "operator: o", "second_person: o", "environment: {humidity: 41 %}", "specimen_data: {a: b, 3: c}",
+    "remarks: |", "  any text",
+]), st.text(max_size=12)), max_size=10)
+
+
+@given(LINES)
+def test_no_file_raises(lines: list[str]) -> None:
+    """Any mixture of lines gives a sheet or findings that refuse, never anything else."""
+    sheet, findings = read_sheet("s.yaml", "\n".join(lines))
+    assert (sheet is None) == any(finding.grade is Grade.REFUSE for finding in findings)
+
+
+@given(st.text(max_size=80), st.text(max_size=80),
+       st.dictionaries(st.text(max_size=9), st.text(max_size=9), max_size=3))
+def test_whatever_is_typed_is_kept_or_refused(specimen: str, operator: str, values: dict[str, str]) -> None:
+    """A typed sheet says exactly what was typed (spaces at its ends aside), or is refused; nothing in between."""
+    try:
+        sheet = sheet_of(specimen, operator=operator, values=values)
+    except FileFault:
+        return
+    assert (sheet.specimen, sheet.operator, sheet.values) == (specimen, operator.strip(), values)

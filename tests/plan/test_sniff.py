@@ -18,3 +18,8 @@ def test_examples_are_known_by_their_first_key(kind: str) -> None:
 def test_anything_else_is_unknown(text: str) -> None:
     """Only a key at the left margin counts."""
     assert sniff_kind(text) == "unknown"
+
+
+def test_a_byte_order_mark_hides_nothing() -> None:
+    """Some editors put one before the first key."""
+    assert sniff_kind("\ufeffplan: x\n") == "plan"
