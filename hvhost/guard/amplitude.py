@@ -150,10 +150,10 @@ def saturated(view: View, limits: GuardLimits, pinned: Pinned) -> tuple[Pinned, 
     need = limits.saturated_samples
     v, v_reported, v_at = pin([not v_low < code < v_high for code in view.v], need, pinned.v, pinned.v_reported)
     i, i_reported, i_at = pin([not i_low < code < i_high for code in view.i], need, pinned.i, pinned.i_reported)
-    at, what, codes = (v_at, "voltage", view.v) if v_at >= 0 else (i_at, "current", view.i)
     after = Pinned(v, i, v_reported, i_reported)
-    if at < 0:
+    if v_at < 0 and i_at < 0:
         return after, None
+    at, what, codes = (v_at, "voltage", view.v) if _first(v_at, i_at) else (i_at, "current", view.i)
     return after, verdict(HostRule.SATURATED, Severity.TRIP, view, at, need, codes[at],
                           f"{what} readback at the converter's limit for {limits.seconds(need)}")
 
@@ -171,6 +171,11 @@ def pin(marks: Sequence[bool], need: int, length: int, reported: bool) -> tuple[
     return length, reported, at
 
 
+def _first(at: int, other: int) -> bool:
+    """True where position ``at`` is one and does not come after ``other``."""
+    return at >= 0 and (other < 0 or at <= other)
+
+
 def reversed_readback(view: View, limits: GuardLimits, pinned: Pinned) -> tuple[Pinned, Verdict | None]:
     """A readback of the wrong sign beyond the zero band.
 
@@ -185,7 +190,7 @@ def reversed_readback(view: View, limits: GuardLimits, pinned: Pinned) -> tuple[
     i, i_reported, i_at = pin([code < i_floor and at <= ceiling for code, at in zip(view.i, view.v, strict=True)],
                               limits.missing_samples, pinned.i, pinned.i_reported)
     after = Pinned(v, i, v_reported, i_reported)
-    if v_at >= 0:
+    if _first(v_at, i_at):
         return after, verdict(HostRule.REVERSED, Severity.TRIP, view, v_at, v_floor, view.v[v_at],
                               f"voltage readback {limits.volts(view.v[v_at])} has the wrong sign")
     if i_at >= 0:

@@ -38,6 +38,9 @@ class Fallen(NamedTuple):
     total: int = 0  # energy of all confirmed falls that ended
 
 
+NO_FALL = Fallen(since=0, base=-(1 << 40))  # a base below every code: nothing falls from it
+
+
 def history_needed(limits: GuardLimits) -> int:
     """Return how many samples before a block the rule may look back on."""
     return limits.drop_samples + limits.delay_samples + limits.persist + 1
@@ -67,47 +70,65 @@ def _falls(view: View, drop: int) -> bool:
     return False
 
 
+class Samples(NamedTuple):
+    """The samples that a block is judged with: those before it that may serve as history, then its own."""
+
+    begin: int  # position of the block's first sample
+    v: list[int]
+    i: list[int]
+    indices: list[int]
+    held: list[int]
+    points: list[tuple[int, int]]  # (sample index, voltage word) where the words are known
+
+
+def _samples(view: View, limits: GuardLimits, since: int) -> Samples:
+    past = [earlier for earlier in view.before if earlier.index >= since]
+    views = [*past, view]
+    v = [code for each in views for code in each.v]
+    return Samples(
+        begin=len(v) - len(view.v), v=v, i=[code for each in views for code in each.i],
+        indices=[index for each in views for index in range(each.index, each.index + len(each.v))],
+        held=_held(v, limits.persist), points=[(each.index, each.v_word) for each in views])
+
+
 def _walk(view: View, limits: GuardLimits, fallen: Fallen) -> tuple[Fallen, Collapse | None]:
     """Follow every sample of the block."""
-    past = [earlier for earlier in view.before if earlier.index >= fallen.since]
-    v = [code for earlier in past for code in earlier.v]
-    i = [code for earlier in past for code in earlier.i]
-    indices = [earlier.index + k for earlier in past for k in range(len(earlier.v))]
-    begin = len(v)
-    v.extend(view.v)
-    i.extend(view.i)
-    indices.extend(range(view.index, view.index + len(view.v)))
-    held = _held(v, limits.persist)
-    points = [(earlier.index, earlier.v_word) for earlier in past] + [(view.index, view.v_word)]
+    samples = _samples(view, limits, fallen.since)
     if fallen.run:
         fallen = fallen._replace(word_low=min(fallen.word_low, view.v_word),
                                  word_high=max(fallen.word_high, view.v_word))
-    found: Collapse | None = None
-    for k in range(begin, len(v)):
-        trial = fallen
-        if not fallen.run:
-            start = max(0, k - limits.drop_samples)
-            base = max(held[start:k], default=v[k])
-            if base - v[k] <= limits.drop:
-                continue
-            low, high = _word_extremes(points, indices[start] - limits.delay_samples, indices[k])
-            trial = fallen._replace(base=base, window_from=indices[start], word_low=low, word_high=high,
-                                    current=_current_before(i, start, limits), started=indices[k], lowest=v[k],
-                                    energy=0)
-        fall = trial.base - v[k]
-        unexplained = fall - _explained(trial, view, indices[k], limits) if fall > limits.drop else 0
+    latest: Collapse | None = None
+    first: Collapse | None = None  # the first that was confirmed in this block
+    for k in range(samples.begin, len(samples.v)):
+        code, index = samples.v[k], samples.indices[k]
+        trial = fallen if fallen.run else _trial(k, samples, limits, fallen)
+        fall = trial.base - code
+        unexplained = fall - _explained(trial, view, index, limits) if fall > limits.drop else 0
         if unexplained > limits.drop:
-            fallen = _deeper(trial, v[k], i[k], indices[k], limits)
+            fallen = _deeper(trial, code, samples.i[k])
             if fallen.run >= limits.persist and not fallen.confirmed:
                 fallen = fallen._replace(confirmed=True)
-                found = found or _collapse(fallen, indices[k], k - begin, unexplained, limits)
+                first = first or _collapse(fallen, index, k - samples.begin, unexplained, limits)
         elif fallen.run:
-            found = found or (_collapse(fallen, indices[k], -1, 0, limits) if fallen.confirmed else None)
+            latest = _collapse(fallen, index, -1, 0, limits) if fallen.confirmed else latest
             fallen = ended(fallen, limits)
     if fallen.confirmed:
-        at, unexplained = (found.confirmed_at, found.unexplained) if found else (-1, 0)
-        found = _collapse(fallen, indices[-1], at, unexplained, limits)
-    return fallen, found
+        latest = _collapse(fallen, samples.indices[-1], -1, 0, limits)
+    if latest is not None and first is not None:
+        latest = latest._replace(confirmed_at=first.confirmed_at, unexplained=first.unexplained, base=first.base)
+    return fallen, latest
+
+
+def _trial(k: int, samples: Samples, limits: GuardLimits, fallen: Fallen) -> Fallen:
+    """Return the fall that would begin with sample k: its base, its window, and what may explain it."""
+    start = max(0, k - limits.drop_samples)
+    base = max(samples.held[start:k], default=samples.v[k])
+    if base - samples.v[k] <= limits.drop:
+        return NO_FALL
+    window_from, index = samples.indices[start], samples.indices[k]
+    low, high = _word_extremes(samples.points, window_from - limits.delay_samples, index)
+    return fallen._replace(base=base, window_from=window_from, current=_current_before(samples.i, start, limits),
+                           word_low=low, word_high=high, started=index, lowest=samples.v[k], energy=0)
 
 
 def _held(v: list[int], n: int) -> list[int]:
@@ -147,7 +168,7 @@ def _explained(trial: Fallen, view: View, index: int, limits: GuardLimits) -> in
     return words + min(drained, max(0, trial.base) >> 1)
 
 
-def _deeper(trial: Fallen, v: int, i: int, index: int, limits: GuardLimits) -> Fallen:
+def _deeper(trial: Fallen, v: int, i: int) -> Fallen:
     """Count one fallen sample and what was fed into it."""
     return trial._replace(run=trial.run + 1, lowest=min(trial.lowest, v), energy=trial.energy + max(0, v) * max(0, i))
 
