@@ -16,7 +16,7 @@ from hvhost.words.findings import Finding, Grade
 from hvhost.words.modelpaths import known_keys, partial_of
 from hvhost.words.nearest import nearest_word
 from hvhost.words.quantities import shown
-from hvhost.words.yamltree import LARGEST, Node, Place, read_yaml
+from hvhost.words.yamltree import LARGEST, Node, Place, named, read_yaml
 
 __all__ = ["Node", "Place", "Reading", "read_model", "read_text", "read_yaml"]
 
@@ -99,10 +99,10 @@ def _findings_of(error: ValidationError, model: type[BaseModel], file: str, root
 def _finding(item: Mapping[str, Any], place: Place, model: type[BaseModel], file: str, root: Node) -> Finding:
     kind, context = str(item["type"]), item.get("ctx") or {}
     node = root.at(place)
-    what = _named(place)
+    what = named(place)
     expected, found, remedy = _EXPECTED.get(kind, _other)(item, context, node)
     if place[-1:] == ("[key]",):  # a key that the file chose is wrong, not what stands under it
-        what, found = _named(place[:-1]), shown(str(place[-2]))
+        what, found = named(place[:-1]), shown(str(place[-2]))
     if kind == "extra_forbidden":
         keys = known_keys(model, place[:-1])
         word = str(place[-1])
@@ -113,12 +113,6 @@ def _finding(item: Mapping[str, Any], place: Place, model: type[BaseModel], file
             remedy = f"known here: {', '.join(sorted(keys))}"
     line = node.key_line if kind == "missing" or node.text is None else node.line
     return Finding(grade=Grade.REFUSE, file=file, line=line, what=what, expected=expected, found=found, remedy=remedy)
-
-
-def _named(place: Place) -> str:
-    """'steps 2, hold' style names: list places count from 1."""
-    parts = [f"{part + 1}" if isinstance(part, int) else str(part) for part in place]
-    return ".".join(parts) or "file"
 
 
 _Told = tuple[str, str, str]

@@ -20,6 +20,13 @@ DEEPEST = 24  # nested blocks
 Place = tuple[str | int, ...]
 
 
+def named(place: Place) -> str:
+    """A place as messages name it, 'steps.2.hold': list places count from 1; keys printable and short."""
+    parts = [f"{part + 1}" if isinstance(part, int) else "".join(c if c.isprintable() else "?" for c in part[:40])
+             for part in place]
+    return ".".join(parts) or "file"
+
+
 @dataclass(slots=True)
 class Node:
     """One value of the file: a text, a list or a block of keys; lines count from 1."""
@@ -157,7 +164,8 @@ class _Reader:
             elif key == "<<" and key not in entries:
                 self.fault(node.line, "merge", "keys written out", "'<<'")
             else:
-                self.fault(node.line, key, "each key once", f"'{key}' again (first on line {entries[key].key_line})")
+                first = entries[key].key_line
+                self.fault(node.line, named((key,)), "each key once", f"{shown(key)} again (first on line {first})")
             top.lost += 1
             top.key = f"\0lost {top.lost}"
         else:

@@ -4,7 +4,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from hvhost.words.yamltree import DEEPEST, LARGEST, read_yaml
+from hvhost.words.yamltree import DEEPEST, LARGEST, named, read_yaml
 
 GOOD = "name: a bench\ninner:\n  volts: 2 kV\nmore:\n  - volts: 1 kV\n  - volts: 3 V\n    time: 2 min\n"
 
@@ -124,3 +124,10 @@ def test_any_text_gives_a_tree_or_faults(text: str) -> None:
     root, faults = read_yaml("f", text)
     assert root is not None or faults
     assert all(0 <= f.line <= text.count("\n") + 1 for f in faults)
+
+
+@pytest.mark.parametrize(("place", "name"), [((), "file"), (("steps", 1, "hold"), "steps.2.hold"), (("a\x1bb",), "a?b"),
+                                             (("x" * 300,), "x" * 40)])
+def test_places_are_named_for_people(place: tuple[str | int, ...], name: str) -> None:
+    """List places count from 1; nothing unprintable and nothing endless reaches a terminal."""
+    assert named(place) == name
