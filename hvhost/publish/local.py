@@ -30,6 +30,7 @@ Handle = Callable[[str, dict[str, Any], Peer], Any]
 # Changes that a watcher is told at once, whatever rate it asked for.
 URGENT = ("link", "permission", "latched", "voltage", "stop", "pause_s", "arm", "warning_s")
 RATE_MOST_HZ = 20.0
+CLOSING_TURNS = 6  # turns of the loop in which an accepted transport opens, or an aborted one closes
 FIELDS = tuple(one.name for one in fields(Snapshot))
 
 
@@ -74,7 +75,11 @@ class LocalServer:
 
     async def close(self) -> None:
         """Stop listening, end every connection and remove the socket file; a second call does nothing."""
-        if self._server is not None:
+        if self._listening is not None and self._server is not None:
+            # First no more accepting, then closing: asyncio forgets a connection that it accepted in the turn in
+            # which its server closes, and the client would wait for ever.
+            asyncio.get_running_loop().remove_reader(self._listening.socket.fileno())
+            await _turns()
             self._server.close()
             self._server = None
         for connection in tuple(self._connections.values()):
@@ -82,7 +87,7 @@ class LocalServer:
         if self._listening is not None:
             self._listening.close()
             self._listening = None
-        await asyncio.sleep(0)  # the transports close on the loop's next turn
+        await _turns()
 
     def offer_nowait(self, snapshot: Snapshot) -> None:
         """Keep the snapshot and notify the subscribers that are due."""
@@ -262,6 +267,12 @@ def _credentials(transport: asyncio.Transport) -> tuple[int, int]:
     except (OSError, AttributeError, struct.error):
         return -1, -1
     return pid, uid
+
+
+async def _turns() -> None:
+    """Let the loop finish what it has begun: transports that open or close take a few turns."""
+    for _ in range(CLOSING_TURNS):
+        await asyncio.sleep(0)
 
 
 def _ignore(_: object) -> None:

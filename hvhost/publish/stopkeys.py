@@ -11,6 +11,7 @@ from hvhost.words.errors import CannotConnect, HvhostError
 
 NOTE_S = 6.0  # how long the outcome of a key stands in place of what may be done next
 SEND_S = 1.0
+ANSWER_S = 1.0  # a daemon that has not answered a stop by now is stalled or gone
 
 
 class Stopper:
@@ -20,7 +21,7 @@ class Stopper:
         self._path = path
         self._lock = threading.Lock()
         self._client: Client | None = None
-        self._verbs: dict[int, str] = {}
+        self._verbs: dict[int, tuple[str, float]] = {}  # id -> verb, when it was sent
         self._note, self._noted_s = "", float("-inf")
 
     def prepare(self) -> None:
@@ -36,7 +37,7 @@ class Stopper:
         with self._lock:
             for last in (False, True):
                 try:
-                    self._verbs[self._connected().send(verb)] = verb
+                    self._verbs[self._connected().send(verb)] = (verb, now_s)
                 except CannotConnect as fault:
                     self._drop()
                     if last:
@@ -67,14 +68,20 @@ class Stopper:
             return
         try:
             while (message := self._client.notification(0.0)) is not None:
-                verb = self._verbs.pop(message.get("id", -1), "")
+                verb, _ = self._verbs.pop(message.get("id", -1), ("", 0.0))
                 if verb:
                     self._say(f"{verb}: {_answer_words(message)}", now_s)
         except HvhostError:
-            waiting = sorted(set(self._verbs.values()))
-            self._drop()
-            if waiting:
-                self._say(f"{' and '.join(waiting)} not answered: use the emergency switching off", now_s)
+            self._unanswered(now_s)
+        if any(now_s - sent_s > ANSWER_S for _, sent_s in self._verbs.values()):
+            self._unanswered(now_s)
+
+    def _unanswered(self, now_s: float) -> None:
+        """Give the connection up, and say which stops nobody answered."""
+        waiting = sorted({verb for verb, _ in self._verbs.values()})
+        self._drop()
+        if waiting:
+            self._say(f"{' and '.join(waiting)} not answered: use the emergency switching off", now_s)
 
     def _drop(self) -> None:
         if self._client is not None:

@@ -86,7 +86,7 @@ def _draw(grid: list[list[int]], points: Sequence[tuple[float, float, float]], t
 
 
 def _level(value: float, top: float, levels: int) -> int:
-    return max(0, min(levels - 1, round(value / top * (levels - 1))))
+    return round(max(0.0, min(1.0, value / top)) * (levels - 1))
 
 
 def _join(grid: list[list[int]], before: tuple[int, int, int], now: tuple[int, int, int]) -> None:
