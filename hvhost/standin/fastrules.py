@@ -27,6 +27,7 @@ class FastRules:
         self.core = core
         self.back: deque[int] = deque([0], maxlen=1)  # oriented voltage codes of the last w samples
         self.words: deque[int] = deque([0], maxlen=1)  # voltage words of the last w + 1 + delay samples
+        self._limits: deque[int] = deque([0], maxlen=2)  # envelope plus margin at the last w + 1 samples
         self.last_word = 0
         self.unsettled = True
         self.busy = False
@@ -71,11 +72,14 @@ class FastRules:
         self.i_screen = min(self.over_i, self.level, i_end - 1)
         self.back = deque(self.back, maxlen=self.span)
         self.words = deque(self.words, maxlen=self.span + 1 + settings["delay"])
+        self._limits = deque(self._limits, maxlen=self.span + 1)
         self.unsettled = True
         self._screen()
 
     def _screen(self) -> None:
-        self.v_screen = min(self.over_v, (self.envelope >> 16) + self.margin)
+        limit = (self.envelope >> 16) + self.margin
+        self._limits.append(limit)
+        self.v_screen = min(self.over_v, limit)
 
     def decayed(self, code: int, samples: int) -> int:
         """The bleed envelope's upper edge this many samples after a readback of ``code``."""
@@ -130,10 +134,10 @@ class FastRules:
         top = max(words) * self.gain
         envelope = self.envelope - (self.envelope * self.decay >> 32)
         self.envelope = envelope if envelope > top else top
-        self.unsettled = envelope > top or words[0] != word
+        self._screen()
+        self.unsettled = envelope > top or words[0] != word or self._limits[0] != self._limits[-1]
         if word <= self.present_word:
             self.good = self.core.index
-        self._screen()
 
     def judge(self) -> None:
         """Judge the sample that failed the screen, or that follows one that did; acts through `reaction` or `trip`."""
@@ -165,14 +169,16 @@ class FastRules:
     def above_envelope(self, v: int) -> bool:
         """Whether the readback is above the envelope by more than failing to fall explains.
 
-        A one-quadrant supply cannot pull a charged load down: while the envelope decays a readback above it that
-        does not rise is *slow to fall*, told once; one that rises by the margin above its lowest is above.
+        A one-quadrant supply cannot pull a charged load down: a readback that comes to lie above the envelope since
+        the envelope fell by more over w samples than the readback rose is *slow to fall*, told once; from then on it
+        is above only where it rises by the margin above its lowest.
         """
-        if v <= (self.envelope >> 16) + self.margin:
+        limit = (self.envelope >> 16) + self.margin
+        if v <= limit:
             self._slow = None
             return False
         if self._slow is None:
-            if self.envelope <= max(self.words) * self.gain:
+            if v - self.back[0] >= self._limits[0] - limit:
                 return True
             self._slow = v
             self.core.event(EventKind.SLOW_TO_FALL, v, self.core.index & 0x7FFFFFFF)
