@@ -7,6 +7,7 @@ from typing import Any
 
 from hvhost.record.entries import Json
 from hvhost.record.folder import BLOCKS, META, RESULT, RunFolder
+from hvhost.words.errors import CommandRefused
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,8 +82,6 @@ def unclosed(root: Path) -> tuple[RunFolder, ...]:
 
 def find_run(root: Path, name: str) -> RunFolder:
     """Return the run whose folder name, run number or unique beginning of either is ``name``, or 'last'."""
-    from hvhost.words.errors import CommandRefused
-
     runs = list_runs(root)
     if name == "last" and runs:
         return RunFolder(runs[-1].path)

@@ -77,7 +77,7 @@ def test_a_block_that_no_field_holds_is_kept_as_text(index: int, word: int, code
 
 def test_what_json_cannot_say_becomes_text() -> None:
     """NaN, infinity and foreign objects are recorded as words, never as broken JSON."""
-    assert json_bytes({"a": float("nan"), "b": [float("inf")], "c": {1, 1}}) == b'{"a":"NaN","b":["Infinity"],"c":"{1}"}'
+    assert json_bytes({"a": float("nan"), "b": [float("inf")], "c": {1}}) == b'{"a":"NaN","b":["Infinity"],"c":"{1}"}'
 
 
 def test_an_entry_too_long_to_be_read_back_is_refused() -> None:
