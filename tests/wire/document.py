@@ -1,4 +1,4 @@
-"""Writes the tables and the example session of PROTOCOL.md from the code; ``python -m tests.wire.document`` rewrites it.
+"""Writes the tables and the example session of PROTOCOL.md from the code (``python -m tests.wire.document``).
 
 Between ``<!-- table: name -->`` (or ``<!-- session -->``) and ``<!-- end -->`` everything is made here; the tests
 compare the page with what this makes, and read the tables written by hand.

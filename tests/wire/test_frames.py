@@ -1,5 +1,6 @@
 """Typed frames: every verb both ways, and what is refused."""
 
+import contextlib
 from typing import Any
 
 import pytest
@@ -69,12 +70,10 @@ def test_an_answer_or_event_comes_back(frame: Ok | Refusal | McuEvent) -> None:
 
 @given(st.text(st.characters(min_codepoint=0x20, max_codepoint=0x7E), max_size=80).map(str.encode))
 def test_any_printable_body_is_a_frame_or_a_fault(body: bytes) -> None:
-    """Reading raises `WireFault` or returns a frame, on either side."""
+    """Reading raises `WireFault` or returns a frame, on either side; nothing else is ever raised."""
     for read in (decode_request, lambda b: decode_received(b, "uu")):
-        try:
+        with contextlib.suppress(WireFault):
             read(body)
-        except WireFault as fault:
-            assert str(fault)
 
 
 @pytest.mark.parametrize("body", [

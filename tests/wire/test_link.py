@@ -506,3 +506,22 @@ def test_ok_words_reach_the_caller_untouched() -> None:
     (event,) = link.receive(say("ok 10 info arc 0000002A 0 64 1 Zm9vYg=="), 0.0)
     assert event == Answered(ticket, Info(page=0),
                              Ok(n=10, verb="info", words=("arc", "0000002A", "0", "64", "1", "Zm9vYg==")))
+
+
+def test_a_link_goes_on_from_its_numbers() -> None:
+    """A link resumed from the numbers of another one sends what that one would have sent."""
+    link = greeted()
+    link.request(Info(page=0))
+    link.take_output(0.0)
+    link.receive(say("ok 10 info 0 a=1"), 0.0)
+    link.cut(0, 0.0)
+    link.receive(say("ok 1 cut"), 0.0)
+    link.renew(31, 0.0)
+    assert link.greeting is not None
+    twin = Link.resumed(0.0, link.greeting, link.numbers())
+    assert twin.numbers() == link.numbers()
+    link.receive(block_line(block(100)) * 2, 0.0)  # the twin has no cut to confirm
+    for one in (link, twin):
+        one.request(Again(event=1))
+        one.cut(3, 0.2)
+    assert twin.take_output(0.2) == link.take_output(0.2)
