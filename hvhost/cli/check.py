@@ -12,8 +12,8 @@ from hvhost.plan.sheet import check_sheet
 from hvhost.plan.sniff import sniff_kind
 from hvhost.words.findings import Finding, Grade
 
-ABOUT = """Checks each file by itself and says every fault with its line.  Given a bench, a plan and a run sheet
-together, the three are also preflighted against each other.  Silent where nothing is wrong."""
+ABOUT = """Checks each file by itself and says every fault with its line.  Given one bench, one plan and one run
+sheet, the three are also preflighted against each other.  Silent where nothing is wrong."""
 
 
 def run(argv: list[str]) -> int:
@@ -27,7 +27,7 @@ def run(argv: list[str]) -> int:
     kinds: dict[str, list[Path]] = {"bench": [], "plan": [], "sheet": []}
     for name in options.files:
         findings += _check(Path(name), kinds)
-    if all(kinds.values()) and not any(f.grade is Grade.REFUSE for f in findings):
+    if all(len(paths) == 1 for paths in kinds.values()) and not any(f.grade is Grade.REFUSE for f in findings):
         findings = _together(kinds)
     shown = [f for f in findings if options.notes or f.grade is not Grade.NOTE]
     for finding in shown:

@@ -2,6 +2,7 @@
 
 import argparse
 import sys
+from base64 import b64encode
 from pathlib import Path
 from typing import Any
 
@@ -65,9 +66,9 @@ def request_of(options: argparse.Namespace) -> dict[str, Any]:
 
 
 def read(path: Path) -> str:
-    """The text of a file; raises `FileFault` naming it."""
+    """The text of a file as base64, which keeps a request on one line; raises `FileFault` naming the file."""
     try:
-        return path.read_text(encoding="utf-8")
+        return b64encode(path.read_text(encoding="utf-8").encode("utf-8")).decode("ascii")
     except (OSError, UnicodeDecodeError) as error:
         raise FileFault("a readable text file", getattr(error, "strerror", None) or str(error), str(path)) from None
 

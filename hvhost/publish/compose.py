@@ -128,7 +128,7 @@ class Composer:
             trip_amps=_trip_amps(core), inputs=self._inputs(), run=self._run(run), arm=self._arm(run, now_s),
             pause_s=run.runner.pause_left_s() if run else None, warning_s=self._warning(), seat=seat_words(core),
             events=self._events(), trend=tuple(self.trend.buckets), next_acts=next_acts(core),
-            cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text=core.discharge.text if run and run.cut_tick is not None else "",
+            cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text="",
             bleeds_passed=self._bleeds(), verdict_text=self.verdict_text, quality=self._quality(),
             record=self.record, outlets=outlets)
 

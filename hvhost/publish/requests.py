@@ -4,6 +4,8 @@ No request names a path: files are read by the client and sent as text, so nothi
 """
 
 import secrets
+from base64 import b64decode
+from binascii import Error as Base64Error
 from collections.abc import Callable, Mapping
 from datetime import UTC, date, datetime
 from typing import TYPE_CHECKING, Any
@@ -26,7 +28,7 @@ if TYPE_CHECKING:
     from hvhost.publish.station import Station
 
 Params = Mapping[str, Any]
-TEXT_MAX = 200_000  # characters of a plan or sheet
+TEXT_MAX = 200_000  # characters of a plan or sheet in base64
 PLAIN = frozenset({"arm", "cancel", "set", "lower", "cut", "reset", "seat.take", "seat.release", "seat.acknowledge", "seat.check",
                    "commission"})
 
@@ -59,7 +61,7 @@ class Requests:
 
     def _read(self, params: Params) -> tuple[Plan, RunSheet]:
         name = _text(params, "plan_file", 200)
-        plan, findings = read_plan(name, _text(params, "plan"))
+        plan, findings = read_plan(name, _file(params, "plan"))
         if plan is None:
             raise FileFault("a plan without faults", f"{len(refused(findings))} faults", name,
                             "'hvhost check' lists them", findings=tuple(f.text for f in findings))
@@ -67,7 +69,7 @@ class Requests:
 
     def _sheet(self, params: Params) -> RunSheet:
         if params.get("sheet"):
-            return sheet_from(_text(params, "sheet_file", 200), _text(params, "sheet"))
+            return sheet_from(_text(params, "sheet_file", 200), _file(params, "sheet"))
         values = params.get("values") or {}
         if not isinstance(values, Mapping):
             raise CommandRefused("an object", type(values).__name__, "values")
@@ -189,6 +191,14 @@ def _text(params: Params, key: str, longest: int = TEXT_MAX) -> str:
     if not isinstance(text, str) or len(text) > longest:
         raise CommandRefused(f"text of at most {longest} characters", type(text).__name__, key)
     return text
+
+
+def _file(params: Params, key: str) -> str:
+    """The text of a file, sent as base64 of UTF-8 so that a request stays one printable line."""
+    try:
+        return b64decode(_text(params, key), validate=True).decode("utf-8")
+    except (Base64Error, UnicodeDecodeError):
+        raise CommandRefused("base64 of a text in UTF-8", "something else", key) from None
 
 
 def _topic(finding: Finding) -> str:
