@@ -221,3 +221,7 @@ def diagram() -> str:
     lines.append("what must hold however one arrived")
     lines += [f"  {name}: {'; '.join(c.value for c in consequences)}" for name, _, consequences in HOLDS]
     return "\n".join(lines) + "\n"
+
+
+if __name__ == "__main__":
+    print(diagram(), end="")
