@@ -13,7 +13,7 @@ from hvhost.publish import wording
 from hvhost.publish.digits import best_size, big_lines
 from hvhost.publish.snapshot import EventLine, HoldView, InputJudgement, RunView, Severity, Snapshot, StopState
 from hvhost.publish.trend import braille_plot, nice_top
-from hvhost.publish.wording import Scale, View, fine, left, local_time, measured, printable, span
+from hvhost.publish.wording import Scale, View, fine, known, left, local_time, measured, printable, span
 
 ALERT = "bold white on red"
 STATE = "bold reverse"
@@ -80,8 +80,8 @@ def readbacks(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Tex
 
 def _readings(snapshot: Snapshot) -> tuple[tuple[Scale, float | None], tuple[Scale, float | None]]:
     reading = snapshot.reading
-    return ((wording.volts_scale(snapshot), reading.volts if reading else None),
-            (wording.amps_scale(snapshot), reading.amps if reading else None))
+    return ((wording.volts_scale(snapshot), known(reading.volts) if reading else None),
+            (wording.amps_scale(snapshot), known(reading.amps) if reading else None))
 
 
 def _large(snapshot: Snapshot, view: View, scale: Scale, value: float | None, width: int, rows: int) -> list[str]:
@@ -117,9 +117,9 @@ def bars(snapshot: Snapshot, view: View, width: int) -> list[Text]:
     """Return a bar for volts and one for amps: readback filled, set-point S, limit L, and the room to the limit."""
     reading = None if wording.output_unknown(snapshot, view) else snapshot.reading
     quantities = (
-        (wording.volts_scale(snapshot), reading.volts if reading else None, snapshot.set_volts,
+        (wording.volts_scale(snapshot), known(reading.volts) if reading else None, snapshot.set_volts,
          snapshot.ceiling_volts, snapshot.volts_full, "ceiling"),
-        (wording.amps_scale(snapshot), reading.amps if reading else None, snapshot.set_amps,
+        (wording.amps_scale(snapshot), known(reading.amps) if reading else None, snapshot.set_amps,
          snapshot.trip_amps, snapshot.amps_full, "trip"),
     )
     words = [_margin(scale, value, set_point, limit, name) for scale, value, set_point, limit, _, name in quantities]
@@ -136,12 +136,13 @@ def _margin(scale: Scale, value: float | None, set_point: float | None, limit: f
 
 def _bar(quantity: tuple[Scale, float | None, float | None, float | None, float, str], words: str, cells: int) -> Text:
     scale, value, set_point, limit, full, _ = quantity
-    top = max(full, limit or 0.0, set_point or 0.0) or 1.0
-    filled = 0 if value is None else max(0, min(cells, round(value / top * cells)))
+    ends = [end for end in (known(full), known(limit), known(set_point)) if end is not None and end > 0.0]
+    top = max(ends, default=1.0)
+    filled = 0 if value is None else round(max(0.0, min(1.0, value / top)) * cells)
     drawn = list("█" * filled + "·" * (cells - filled))
-    for mark, place in (("L", limit), ("S", set_point)):
+    for mark, place in (("L", known(limit)), ("S", known(set_point))):
         if place is not None and cells > 0:
-            drawn[max(0, min(cells - 1, round(place / top * cells) - 1))] = mark
+            drawn[max(0, round(max(0.0, min(1.0, place / top)) * cells) - 1)] = mark
     return Text(f" {scale.unit:<2} [{''.join(drawn)}] {words}", style="bold" if "OVER" in words else "")
 
 
@@ -238,11 +239,10 @@ def _arm_lines(snapshot: Snapshot, rows: int) -> list[Text]:
 def hold_clock(hold: HoldView, since_s: float, width: int) -> Text:
     """Return the hold clock with its bar; it stands still while the mean is out of tolerance."""
     elapsed_s = min(hold.elapsed_s + (since_s if hold.inside else 0.0), hold.required_s)
-    words = f"HOLD {span(elapsed_s)} of {span(hold.required_s)} {hold.clock}"
+    words = f"HOLD {span(elapsed_s)} of {span(hold.required_s)}"
+    words += f" {hold.clock}" if hold.inside else " OUT OF TOLERANCE: clock stands"
     if hold.at_most_s is not None:
         words += f", at most {span(hold.at_most_s)}"
-    if not hold.inside:
-        words += ", OUT OF TOLERANCE: clock stands"
     cells = width - len(words) - 3
     if cells >= 6 and hold.required_s > 0.0:
         filled = int(elapsed_s / hold.required_s * cells)

@@ -92,7 +92,7 @@ def _alert_lines(snapshot: Snapshot, view: View, width: int, most: int) -> list[
 def _stacked(snapshot: Snapshot, view: View, width: int, most: int) -> list[Text]:
     """Return the run above the inputs, each over the whole width, in at most ``most`` rows."""
     run = panes.run_lines(snapshot, view, width - 2, 3)[:3]
-    inputs = panes.inputs(snapshot, width - 2, max(1, min(3, most - len(run))))
+    inputs = panes.inputs(snapshot, width - 2, max(1, min(6 - len(run), most - len(run))))
     return [Text.assemble(" ", line) for line in [*run, *inputs][: max(1, most)]]
 
 

@@ -91,6 +91,11 @@ def fine(value: float | None, unit: str, polarity: int = 1, digits: int = 4) -> 
     return f"{text.lstrip('-') if not text.strip('-0.') else text} {prefix}{unit}"
 
 
+def known(value: float | None) -> float | None:
+    """Return the value, None where it is no finite number."""
+    return value if value is not None and math.isfinite(value) else None
+
+
 def measured(value: float, u: float | None, unit: str, polarity: int = 1) -> str:
     """Return the value with its expanded uncertainty (k = 2), both to the second digit of it: (17.996 ± 0.052) kV."""
     if u is None or not math.isfinite(u) or u <= 0.0 or not math.isfinite(value):
@@ -216,7 +221,7 @@ def output_unknown(snapshot: Snapshot, view: View) -> bool:
     The time since the snapshot came counts too, where it is more than the screen's own period explains.
     """
     reading = snapshot.reading
-    if reading is None or reading.volts is None or snapshot.link in (LinkState.NONE, LinkState.LOST):
+    if reading is None or known(reading.volts) is None or snapshot.link in (LinkState.NONE, LinkState.LOST):
         return True
     longest_s = max(snapshot.lease_s, OVERDUE * view.period_s)
     return not view.connected or reading.age_s > snapshot.lease_s or reading.age_s + view.since_s > longest_s

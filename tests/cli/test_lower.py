@@ -1,0 +1,9 @@
+"""``hvhost lower`` as a module: light, documented, and what the command table needs."""
+
+from hvhost.cli import lower
+
+
+def test_the_command_says_in_a_line_what_it_does() -> None:
+    """The overview of commands has one line for it."""
+    assert "cut" in lower.HELP
+    assert "\n" not in lower.HELP

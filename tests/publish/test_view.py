@@ -1,0 +1,76 @@
+"""The whole picture at any size and with any content."""
+
+from dataclasses import replace
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from rich.cells import cell_len
+
+from hvhost.publish.snapshot import EventLine, InputView, Reading, RunView, Severity
+from hvhost.publish.view import fitted, screen
+from hvhost.publish.wording import View
+from tests.pictures.draw import ZONE
+from tests.pictures.states import RUNNING, STATES, TRIPPED
+
+WORDS = st.text(max_size=120)
+
+
+@given(st.sampled_from(sorted(STATES)), st.integers(20, 260), st.integers(3, 90))
+@settings(max_examples=60)
+def test_every_state_fits_every_terminal(state: str, width: int, height: int) -> None:
+    """Exactly ``height`` lines, none wider than ``width``, whatever the size."""
+    snapshot, view = STATES[state]
+    lines = screen(snapshot, view, width, height)
+    assert len(lines) == height
+    assert all(cell_len(line.plain) <= width for line in lines)
+
+
+@given(WORDS, WORDS, WORDS, st.sampled_from([(80, 24), (120, 40)]))
+@settings(max_examples=60)
+def test_no_text_breaks_the_picture(first: str, second: str, third: str, size: tuple[int, int]) -> None:
+    """Any text in any free field, wide characters and control characters too, stays in its place."""
+    snapshot = replace(
+        TRIPPED, bench_title=first, voltage_text=second, seat=third, verdict_text=first, latched=(second, third),
+        run=RunView(run_id=first, plan=second, specimen=third, step_text=first, step_total=3, folder=second),
+        inputs=(InputView(name=first, state=second),) * 9, next_acts=(third,) * 4, power_words=second,
+        events=(EventLine(utc_ns=0, text=third, severity=Severity.TRIP),) * 50, discharge_text=first)
+    lines = screen(snapshot, View(note=third, zone=ZONE), *size)
+    assert len(lines) == size[1]
+    assert all(cell_len(line.plain) <= size[0] for line in lines)
+    assert all(line.plain.isprintable() for line in lines)
+
+
+@given(st.floats(), st.floats(), st.floats(allow_nan=False), st.sampled_from([1, -1]))
+@settings(max_examples=60)
+def test_no_number_breaks_the_picture(volts: float, amps: float, full: float, polarity: int) -> None:
+    """Any reading on any scale is drawn."""
+    snapshot = replace(RUNNING, reading=Reading(volts=volts, amps=amps, age_s=0.01), volts_full=full, amps_full=full,
+                       ceiling_volts=full, polarity=polarity)
+    lines = screen(snapshot, View(zone=ZONE), 80, 24)
+    assert all(cell_len(line.plain) <= 80 for line in lines)
+
+
+@pytest.mark.parametrize("size", [(80, 24), (100, 30), (120, 40), (200, 60)])
+def test_the_first_lines_and_the_last_stay_where_they_are(size: tuple[int, int]) -> None:
+    """Header first, state second, keys last: the eye knows where to look, whatever the state."""
+    for snapshot, view in STATES.values():
+        lines = [line.plain for line in screen(snapshot, replace(view, zone=ZONE), *size)]
+        assert "kV" in lines[0]
+        assert "VOLTAGE" in lines[1]
+        assert "cut" in lines[-1] or "CANNOT STOP" in lines[-1]
+
+
+def test_a_small_terminal_keeps_the_alert_and_the_keys() -> None:
+    """Below 80x24 the weightiest words and the stop keys remain."""
+    snapshot, view = STATES["pausing"]
+    lines = [line.plain for line in screen(snapshot, view, 50, 8)]
+    assert "WILL RE-ENERGISE" in lines[0]
+    assert "SPACE: cut" in lines[-1]
+
+
+def test_a_clipped_line_shows_that_it_is() -> None:
+    """Text that does not fit ends in an ellipsis."""
+    from rich.text import Text
+    (line,) = fitted([Text("abcdefgh")], 5, 1)
+    assert line.plain == "abcd…"
