@@ -51,7 +51,7 @@ def _looser(core: Core, arm: Arm) -> Err | None:
             return Err.RANGE
         if value > settings[key] if setting.arm == "lower" else value < settings[key]:
             return Err.LOOSER
-    return Err.REACTION if arm.pause and arm.pause[0] and core.reaction.refuse(arm.pause) else None
+    return Err.REACTION if arm.pause and core.reaction.refuse(arm.pause) else None
 
 
 def _lacks(bit: Inputs, needs: int) -> Callable[[Core, Arm], bool]:

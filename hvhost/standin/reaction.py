@@ -60,7 +60,7 @@ class Reaction:
     def arm(self, pause: tuple[int, int, int] | None) -> None:
         """A new arm: its reaction, no arcs yet."""
         ticks = self.core.config.ticks
-        self.pause = (pause[0], ticks(pause[1]), ticks(pause[2])) if pause and pause[0] else None
+        self.pause = (pause[0], ticks(pause[1]), ticks(pause[2])) if pause else None
         self.number = self._total = 0
         self._times.clear()
         self._spans.clear()

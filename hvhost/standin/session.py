@@ -199,7 +199,8 @@ class Session:
             f"boot={kept.boots} reset={int(self.reset_cause)} causes={kept.causes:08X} rule={kept.rule} "
             f"tag={kept.tag:08X} mark={kept.mark} settings={settings.checksum if settings else 0:08X} "
             f"blank={int(settings is None)} arm={core.arms} event={core.stream.number} "
-            f"now={core.wire_tick(core.now)} snap={core.snapshot.waiting}")
+            f"now={core.wire_tick(core.now)} snap={core.snapshot.waiting} first={kept.first:08X} at={kept.tick} "
+            f"v={kept.v_code} i={kept.i_code}")
         if request.page >= len(pages):
             return Err.RANGE
         return Done(str(request.page), pages[request.page])

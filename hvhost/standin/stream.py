@@ -36,23 +36,20 @@ class Stream:
         self._head = (0, 0, 0, 0, 0, 0, 0, 0, 0, 0)
 
     def send(self, body: bytes) -> None:
-        """Send one line."""
-        if len(self.out) > OUTPUT_MAX:
-            self.dropped += 1
-            return
-        self.out += seal(body)
+        """Send an answer or an event."""
+        self.send_lines(seal(body))
 
-    def send_lines(self, lines: bytes) -> None:
-        """Send whole lines again."""
-        if len(self.out) > OUTPUT_MAX:
+    def send_lines(self, lines: bytes, limit: int = 2 * OUTPUT_MAX) -> None:
+        """Send whole lines, or drop and count them; blocks are dropped first, so that answers do not wait."""
+        if len(self.out) > limit:
             self.dropped += 1
             return
         self.out += lines
 
     def greet(self, lease_ms: int) -> None:
-        """A session begins: the open block is dropped, blocks are closed by its lease from now on."""
+        """A session begins: blocks leave, and are closed by its lease from now on."""
         config = self.core.config
-        self.codes = []
+        self.close_block()
         self.open = True
         pairs = config.ticks(lease_ms) // 5 // config.sample_ticks
         self.limit = 2 * max(1, min(config.block_pairs, pairs))
@@ -82,4 +79,5 @@ class Stream:
         """Send the open block, if any."""
         if self.codes:
             codes, self.codes = self.codes, []
-            self.send(encode_block(Block(*self._head, tuple(codes)), self.core.config.signs))
+            block = Block(*self._head, tuple(codes))
+            self.send_lines(seal(encode_block(block, self.core.config.signs)), OUTPUT_MAX)

@@ -49,7 +49,7 @@ def test_each_ground_refuses_an_arm_with_its_code_and_an_event(case):
     assert bench.state is (McuState.WARNING if case == "state" else McuState.OFF)
 
 
-@pytest.mark.parametrize("pause", [(4, 200, 10_000), (3, 199, 10_000), (3, 200, 9_999)])
+@pytest.mark.parametrize("pause", [(0, 0, 0), (4, 200, 10_000), (3, 199, 10_000), (3, 200, 9_999)])
 def test_an_arc_reaction_beyond_the_eeproms_bounds_is_refused(pause):
     """Count, rest and window are bounded by the EEPROM (PROTOCOL 11.2)."""
     assert Bench().arm(pause=pause) == "reaction"

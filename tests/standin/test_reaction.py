@@ -182,8 +182,8 @@ def test_one_arc_seen_by_mcu_and_host_at_different_samples_counts_once(offset):
     bench = paused()
     index = bench.event("pausing").b
     bench.pass_ms(150)
-    assert bench.arc(index + offset).words == ("1",) if offset >= -4 else True
     if offset >= -4:
+        assert bench.arc(index + offset).words == ("1",)
         assert bench.event("merged").a == 1
         assert bench.mcu.core.reaction.number == 1
     else:

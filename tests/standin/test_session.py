@@ -114,6 +114,25 @@ def test_any_bytes_yield_answers_and_counts_only(chunks):
     assert bench.state is McuState.OFF
 
 
+FIELDS = st.sampled_from(["0", "1", "7", "65535", "4294967295", "4294967296", "-1", "00", "C0FFEE01", "00000000",
+                          "FFFFFFFF", "warn", "oc", "pause=1,2", "pause=1,2,3", "oc=5", "oc=", "=", "arc=1", "x", ""])
+
+
+@settings(max_examples=150, deadline=None)
+@given(st.lists(st.tuples(st.sampled_from(["hello", "info", "get", "put", "save", "arm", "seg", "renew", "lower", "arc",
+                                           "cut", "reset", "again", "snap", "stored", "ok", "", "b", "nosuch"]),
+                          st.integers(0, 3), st.lists(FIELDS, max_size=7)), max_size=12))
+def test_any_well_sealed_line_is_answered_or_skipped(lines):
+    """Whatever its fields, a request does not end the MCU, and all but renewals get one answer (PROTOCOL 3.4)."""
+    bench = Bench()
+    for verb, step, fields in lines:
+        body = " ".join([verb, str(bench.n + step), f"{bench.session:08X}", *fields])
+        before = len(bench.answers)
+        bench.line(body)
+        assert len(bench.answers) - before == (verb != "renew")
+        assert bench.board.inhibit
+
+
 def test_the_greeting_tells_everything():
     """Four pages and all settings: what the host needs to know, each key once (PROTOCOL 4.8, 4.13)."""
     bench = Bench()

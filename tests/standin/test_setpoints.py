@@ -33,7 +33,7 @@ def test_ten_codes_in_ten_hours_move_by_single_codes():
     assert bench.seg(10, 10, ticks) == ""
     began = core.now
     words = []
-    for part in range(0, 21):
+    for part in range(21):
         core.now = began + ticks * part // 20  # the arithmetic alone: no need to live through ten hours
         core.points.move()
         words.append(core.v_word)
