@@ -4,7 +4,7 @@ A body is ``verb field field ... [key=value ...]`` with single spaces.  The fiel
 optional ones follow as ``key=value`` in any order, unknown keys are skipped.  See PROTOCOL.md sections 3 to 8.
 """
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -15,11 +15,10 @@ from hvhost.wire.blocks import encode_block as encode_block
 from hvhost.wire.blocks import pack_codes as pack_codes
 from hvhost.wire.blocks import type_of_pack as type_of_pack
 from hvhost.wire.blocks import unpack_codes as unpack_codes
+from hvhost.wire.fields import CODE, FLAG, HEX8, NUMBER, VALUE, WORD, Kind, i32, u32, word
 from hvhost.wire.settings import TIGHTENABLE
 from hvhost.words.errors import WireFault
 
-U32 = 0xFFFFFFFF
-I32 = 0x7FFFFFFF
 SNAP_PAIRS = 40  # pairs in one answer to `snap`
 
 
@@ -209,53 +208,6 @@ class McuEvent:
 # ---------------------------------------------------------------- the codec
 
 
-def _integer(low: int, high: int) -> Callable[[str], int]:
-    def read(text: str) -> int:
-        digits = text[1:] if text[:1] == "-" else text
-        if not (digits.isascii() and digits.isdigit()) or len(digits) > 10 or text == "-0":
-            raise WireFault("a decimal integer", repr(text))
-        if digits[0] == "0" and len(digits) > 1:
-            raise WireFault("no leading zero", repr(text))
-        value = int(text)
-        if not low <= value <= high:
-            raise WireFault(f"{low} to {high}", text)
-        return value
-
-    return read
-
-
-def _hex(text: str) -> int:
-    if len(text) != 8 or not set(text) <= set("0123456789ABCDEF"):
-        raise WireFault("eight upper-case hexadecimal digits", repr(text))
-    return int(text, 16)
-
-
-def _word(text: str) -> str:
-    if not text.isascii() or not text.isalnum() or not text.islower():
-        raise WireFault("a lower-case word", repr(text))
-    return text
-
-
-u32, i32, u16, flag = _integer(0, U32), _integer(-I32 - 1, I32), _integer(0, 65535), _integer(0, 1)
-
-
-def _dec(value: Any) -> str:
-    return str(value)
-
-
-def _hex8(value: Any) -> str:
-    return f"{value:08X}"
-
-
-Kind = tuple[Callable[[str], Any], Callable[[Any], str]]
-NUMBER: Kind = (u32, _dec)
-SIGNED: Kind = (i32, _dec)
-CODE: Kind = (u16, _dec)
-FLAG: Kind = (flag, _dec)
-HEX8: Kind = (_hex, _hex8)
-WORD: Kind = (_word, _dec)
-
-
 @dataclass(frozen=True, slots=True)
 class Verb:
     """How one request is written: its class and its positional fields in order."""
@@ -270,7 +222,7 @@ REQUESTS: dict[str, Verb] = {
     "hello": Verb(Hello, (*_N, ("version", NUMBER), ("lease_ms", NUMBER))),
     "info": Verb(Info, (*_N, ("page", NUMBER))),
     "get": Verb(Get, (*_N, ("page", NUMBER))),
-    "put": Verb(Put, (*_N, ("key", WORD), ("value", (_integer(-U32, U32), _dec)))),
+    "put": Verb(Put, (*_N, ("key", WORD), ("value", VALUE))),
     "save": Verb(Save, (*_N, ("checksum", HEX8))),
     "arm": Verb(Arm, (*_N, ("arm", NUMBER), ("tag", HEX8), ("settings", HEX8), ("event", NUMBER))),
     "seg": Verb(Segment, (*_N, ("v", CODE), ("i", CODE), ("ticks", NUMBER))),
@@ -293,8 +245,8 @@ Received = Ok | Refusal | Block | McuEvent
 
 def encode_request(frame: Request) -> bytes:
     """Return the body of a request."""
-    word = VERB_OF[type(frame)]
-    parts = [word, *(write(getattr(frame, name)) for name, (_, write) in REQUESTS[word].fields)]
+    verb = VERB_OF[type(frame)]
+    parts = [verb, *(write(getattr(frame, name)) for name, (_, write) in REQUESTS[verb].fields)]
     if isinstance(frame, Arm):
         if frame.pause is not None:
             parts.append("pause=" + ",".join(map(str, frame.pause)))
@@ -361,10 +313,10 @@ def decode_received(body: bytes, signs: str) -> Received:
         return decode_block(body, signs)
     verb, words, pairs = split_body(body)
     if verb == "ok" and len(words) >= 2:
-        return Ok(n=u32(words[0]), verb=_word(words[1]), words=tuple(words[2:]), pairs=pairs)
+        return Ok(n=u32(words[0]), verb=word(words[1]), words=tuple(words[2:]), pairs=pairs)
     if verb == "err" and len(words) == 3:
-        return Refusal(n=u32(words[0]), verb=_word(words[1]), code=_word(words[2]))
+        return Refusal(n=u32(words[0]), verb=word(words[1]), code=word(words[2]))
     if verb == "ev" and len(words) == 5:
-        return McuEvent(number=u32(words[0]), tick=u32(words[1]), kind=_word(words[2]), a=i32(words[3]),
+        return McuEvent(number=u32(words[0]), tick=u32(words[1]), kind=word(words[2]), a=i32(words[3]),
                         b=i32(words[4]))
     raise WireFault("ok, err, ev or b with their fields", repr(body[:40].decode("ascii")), "received line")

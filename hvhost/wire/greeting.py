@@ -55,6 +55,10 @@ FIELDS: tuple[Field, ...] = (
     Field("event", 3, 0, U32, "", "number of the last event"),
     Field("now", 3, 0, U32, "tick", "the tick at the answer"),
     Field("snap", 3, 0, U32, "", "snapshot that waits to be fetched; 0 where none does"),
+    Field("first", 3, 0, U32, "mask", "the cause that latched first; 0 where nothing is latched", "hex"),
+    Field("at", 3, 0, U32, "tick", "the tick at which it latched"),
+    Field("v", 3, -32_768, 65_535, "code", "voltage code at that tick"),
+    Field("i", 3, -32_768, 65_535, "code", "current code at that tick"),
 )
 INFO_PAGES = 4
 _TOKEN = frozenset("abcdefghijklmnopqrstuvwxyzABCDEFGHIJKLMNOPQRSTUVWXYZ0123456789.-+")
@@ -90,6 +94,10 @@ class McuInfo:
     event: int
     tick: int
     snapshot: int
+    first_cause: int = 0
+    first_tick: int = 0
+    first_v: int = 0
+    first_i: int = 0
 
     @property
     def cause_words(self) -> tuple[str, ...]:
@@ -166,7 +174,8 @@ def info_of(fields: Mapping[str, str | int]) -> McuInfo:
         before_pairs=number("before"), after_pairs=number("after"), boot=number("boot"),
         reset=ResetCause(number("reset")), causes=number("causes"), rule=number("rule"), tag=number("tag"),
         mark=bool(fields["mark"]), settings_checksum=number("settings"), blank=bool(fields["blank"]),
-        arm=number("arm"), event=number("event"), tick=number("now"), snapshot=number("snap"))
+        arm=number("arm"), event=number("event"), tick=number("now"), snapshot=number("snap"),
+        first_cause=number("first"), first_tick=number("at"), first_v=number("v"), first_i=number("i"))
 
 
 def read_settings_page(answer: Ok, page: int) -> tuple[int, ...]:

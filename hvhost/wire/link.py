@@ -53,6 +53,7 @@ from hvhost.wire.frames import (
 from hvhost.wire.greeter import Greeter
 from hvhost.wire.greeting import Greeting
 from hvhost.wire.lines import Garbled, LineReader, seal
+from hvhost.wire.outbox import Outbox
 from hvhost.wire.requests import Requests, Waiting
 from hvhost.wire.stops import WRAP, Stops
 from hvhost.wire.vocabulary import Err, EventKind, Fitted, HostRule
@@ -72,8 +73,8 @@ class Link:
     """One session with one MCU; see the module's docstring for the order of use."""
 
     __slots__ = ("_blocks_before", "_ended_text", "_fitted", "_garbled", "_good", "_greeter", "_heard_s", "_last_s",
-                 "_notices", "_reader", "_renewal", "_renewed_s", "_requests", "_silent", "_stops", "_tail",
-                 "_ticket", "_torn", "greeting", "last_event", "lease_s", "session", "state")
+                 "_notices", "_outbox", "_reader", "_renewed_s", "_requests", "_silent", "_stops", "_ticket",
+                 "greeting", "last_event", "lease_s", "session", "state")
 
     def __init__(self, now_s: float, *, session: int, lease_ms: int, first_stop: int = 1) -> None:
         if not 1 <= session < WRAP:
@@ -90,8 +91,8 @@ class Link:
         self._good = self._garbled = self._blocks_before = self._ticket = 0
         self._heard_s = self._last_s = now_s
         self._renewed_s: float | None = None
-        self._renewal = self._tail = b""
-        self._silent = self._torn = False
+        self._outbox = Outbox()
+        self._silent = False
         self._ended_text = ""
 
     @classmethod
@@ -271,12 +272,12 @@ class Link:
 
         False where nothing is sent: not greeted, a cut not yet confirmed, or sooner than lease/8 after the last one.
         """
-        if self.state is not LinkState.GREETED or self._stops.cutting or self._tail:
+        if self.state is not LinkState.GREETED or self._stops.cutting or self._outbox.rest:
             return False
         if self._renewed_s is not None and now_s - self._renewed_s < self.lease_s / RENEWALS_PER_LEASE:
             return False
         self._renewed_s = now_s
-        self._renewal = seal(encode_request(Renew(session=self.session, index=index % WRAP)))
+        self._outbox.renewal = seal(encode_request(Renew(session=self.session, index=index % WRAP)))
         return True
 
     # ------------------------------------------------------------ stops
@@ -284,7 +285,7 @@ class Link:
     def cut(self, rule: int, now_s: float) -> int:
         """Decide to cut (``rule`` 0 for an operator, else a `HostRule`); works in every state; returns its number."""
         number = self._stops.cut(rule, now_s)
-        self._renewal = b""
+        self._outbox.renewal = b""
         self._drop(DropWhy.STOP)
         return number
 
@@ -336,20 +337,17 @@ class Link:
     def deadline(self) -> float | None:
         """When `timer` and `take_output` next have something to do without new bytes."""
         times = [self._stops.deadline()]
-        if self.state is not LinkState.ENDED:
-            times.append(self._requests.deadline(self._last_s))
+        if self.state is not LinkState.ENDED and not self._outbox.rest:  # a rest waits for room, not for time
+            times.append(self._last_s if self._outbox.renewal else self._requests.deadline(self._last_s))
         if self.state is LinkState.GREETED and not self._silent:
             times.append(self._heard_s + self.lease_s)
-        if self._renewal or self._tail:
-            times.append(self._last_s)
         return min((t for t in times if t is not None), default=None)
 
     def _begin(self, now_s: float) -> list[LinkEvent]:
         """Note the time; after a stall longer than the lease no arm, segment or half-sent line may leave any more."""
         if now_s - self._last_s > self.lease_s and self.state is LinkState.GREETED:
             self._drop(DropWhy.STALL)
-            self._renewal = b""
-            self._torn, self._tail = self._torn or bool(self._tail), b""
+            self._outbox.stale()
         self._last_s = now_s
         events: list[LinkEvent] = []
         if self._notices:
@@ -361,7 +359,7 @@ class Link:
         self._notices = []
 
     def _end(self, why: EndWhy, text: str, events: list[LinkEvent]) -> None:
-        self.state, self._ended_text, self._renewal = LinkState.ENDED, str(why), b""
+        self.state, self._ended_text, self._outbox.renewal = LinkState.ENDED, str(why), b""
         self._drop(DropWhy.ENDED)
         self._flush_notices(events)
         events.append(Ended(why, text))
@@ -372,20 +370,11 @@ class Link:
         """Return all that is due now, stops first; what the port does not take comes back through `unsent`."""
         if now_s - self._last_s > self.lease_s:
             self._notices = self._begin(now_s)
-        out = self._stops.due(now_s)
-        if out:
-            self._tail, self._torn = b"", False  # a stop begins with LF and waits behind nothing
-        elif self._tail:
-            out, self._tail = self._tail, b""
-            return out
-        elif self._torn:
-            out, self._torn = b"\n", False
-        if self._renewal:
-            out, self._renewal = out + self._renewal, b""
-        if self.state is not LinkState.ENDED:
+        out, more = self._outbox.take(self._stops.due(now_s))
+        if more and self.state is not LinkState.ENDED:
             out += self._requests.due(now_s)
         return out
 
     def unsent(self, rest: bytes) -> None:
         """Take back what the port did not accept; it leaves before anything new, but never before a stop."""
-        self._tail = rest
+        self._outbox.rest = rest

@@ -39,7 +39,7 @@ class Device:
                   "after": "64"},
                  {"boot": "4", "reset": "1", "causes": "00100000", "rule": "0", "tag": "00000000", "mark": "0",
                   "settings": f"{checksum:08X}", "blank": "0" if self.settings else "1", "arm": "0", "event": "3",
-                  "now": "77", "snap": "0"})
+                  "now": "77", "snap": "0", "first": "00100000", "at": "0", "v": "0", "i": "0"})
         return " ".join(f"{key}={self.fields.get(key, value)}" for key, value in pages[page].items())
 
     def hear(self, data: bytes) -> list[Request]:

@@ -2,7 +2,7 @@
 
 import re
 
-from hvhost.wire import frames
+from hvhost.wire import fields
 from hvhost.wire.frames import REQUESTS
 from hvhost.wire.lines import LINE_MAX, LineReader
 from hvhost.wire.vocabulary import (
@@ -20,8 +20,8 @@ from tests.wire.scenario import Runner
 from tests.wire.test_vectors import SCENARIOS
 
 TEXT = PAGE.read_text(encoding="utf-8")
-KINDS = {id(frames.NUMBER): "0..4294967295", id(frames.CODE): "0..65535", id(frames.FLAG): "0..1",
-         id(frames.HEX8): "hex8", id(frames.WORD): "word"}
+KINDS = {id(fields.NUMBER): "0..4294967295", id(fields.CODE): "0..65535", id(fields.FLAG): "0..1",
+         id(fields.HEX8): "hex8", id(fields.WORD): "word"}
 
 
 def rows(head: str) -> list[list[str]]:

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from hvhost.wire import frames
+from hvhost.wire import fields, frames
 from hvhost.wire.frames import (
     REQUESTS,
     Arm,
@@ -26,8 +26,8 @@ from hvhost.words.errors import WireFault
 u32 = st.integers(0, 0xFFFFFFFF)
 WORDS = st.text("abcdefghijklmnopqrstuvwxyz", min_size=1, max_size=9)
 VALUES: dict[int, st.SearchStrategy[Any]] = {
-    id(frames.NUMBER): u32, id(frames.HEX8): u32, id(frames.CODE): st.integers(0, 65535),
-    id(frames.FLAG): st.integers(0, 1), id(frames.WORD): WORDS,
+    id(fields.NUMBER): u32, id(fields.HEX8): u32, id(fields.CODE): st.integers(0, 65535),
+    id(fields.FLAG): st.integers(0, 1), id(fields.WORD): WORDS,
 }
 
 
@@ -36,13 +36,13 @@ def requests(draw: st.DrawFn) -> frames.Request:
     """Any request of the table with any fields in range."""
     verb = draw(st.sampled_from(sorted(REQUESTS)))
     spec = REQUESTS[verb]
-    fields = {name: draw(VALUES.get(id(kind), st.integers(-frames.U32, frames.U32))) for name, kind in spec.fields}
+    drawn = {name: draw(VALUES.get(id(kind), st.integers(-fields.U32, fields.U32))) for name, kind in spec.fields}
     if verb == "arm":
-        fields["pause"] = draw(st.none() | st.tuples(u32, u32, u32))
-        fields["tighter"] = draw(st.dictionaries(st.sampled_from(TIGHTENABLE), u32, max_size=4))
+        drawn["pause"] = draw(st.none() | st.tuples(u32, u32, u32))
+        drawn["tighter"] = draw(st.dictionaries(st.sampled_from(TIGHTENABLE), u32, max_size=4))
     if verb == "seg":
-        fields["arc"] = draw(st.none() | u32)
-    return spec.frame(**fields)  # type: ignore[no-any-return]
+        drawn["arc"] = draw(st.none() | u32)
+    return spec.frame(**drawn)  # type: ignore[no-any-return]
 
 
 @given(requests())
