@@ -78,6 +78,15 @@ def _run(args: "list[str]") -> int:
         return error.exit_code
     except BrokenPipeError:
         return 0
+    except Exception as error:
+        import os
+
+        if os.environ.get("HVHOST_TRACEBACK"):
+            raise
+        print(f"hvhost {args[0]}: expected no fault of this program, found {type(error).__name__}: {error}; "
+              "if anything may be energised use the emergency switching off; HVHOST_TRACEBACK=1 shows where",
+              file=sys.stderr)
+        return 70
     except KeyboardInterrupt:
         print(f"hvhost {args[0]}: ended by the operator", file=sys.stderr)
         return 7

@@ -10,6 +10,7 @@ from pathlib import Path
 
 from hvhost.bench.file import load_bench
 from hvhost.bench.model import Bench
+from hvhost.bench.settings_from import shown_setting
 from hvhost.cli import exits
 from hvhost.cli.talk import who_of
 from hvhost.daemon import Daemon
@@ -68,7 +69,7 @@ async def _commission(core: Core, daemon: Daemon, bench: Bench, root: Path, opti
                       serving: "asyncio.Task[None]") -> int:
     await _greeted(core, serving)
     wanted, there = bench.settings(), core.greeting.settings if core.greeting else None
-    table(wanted, there)
+    table(bench, wanted, there)
     if there == wanted:
         print("the settings agree")
         return exits.PASSED
@@ -90,7 +91,7 @@ async def _commission(core: Core, daemon: Daemon, bench: Bench, root: Path, opti
     now = core.greeting.settings if core.greeting else None
     log(root, who, bench, there, now, reply)
     if reply != "ok" or now != wanted:
-        table(wanted, now)
+        table(bench, wanted, now)
         print(f"hvhost commission: expected the bench file's settings, found others: {reply}", file=sys.stderr)
         return exits.REFUSED
     print(f"written and read back: checksum {wanted.checksum:08X}, by {who}")
@@ -104,13 +105,13 @@ async def _reply(core: Core, number: int) -> str:
     return core.replies.get(number, "no answer")
 
 
-def table(wanted: Settings, there: Settings | None) -> None:
-    """Print every setting that differs, both values."""
-    print(f"{'setting':<10} {'MCU':>12} {'bench file':>12}  unit, meaning")
+def table(bench: Bench, wanted: Settings, there: Settings | None) -> None:
+    """Print every setting that differs, both values in SI and in codes."""
+    print(f"{'setting':<10} {'MCU':<30} {'bench file':<30} meaning")
     for key, setting in zip(KEYS, SETTINGS, strict=True):
-        found = "blank" if there is None else str(there[key])
+        found = "blank" if there is None else shown_setting(bench, key, there[key])
         if there is None or there[key] != wanted[key]:
-            print(f"{key:<10} {found:>12} {wanted[key]:>12}  {setting.unit}, {setting.meaning}")
+            print(f"{key:<10} {found:<30} {shown_setting(bench, key, wanted[key]):<30} {setting.meaning}")
 
 
 def log(root: Path, who: str, bench: Bench, before: Settings | None, after: Settings | None, reply: str) -> None:

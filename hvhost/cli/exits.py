@@ -8,6 +8,7 @@ TRIPPED = 4  # a latched cut ended the run
 REFUSED = 5  # asked for what cannot be done, or a file is refused; nothing was done
 CANNOT_CONNECT = 6  # no daemon or no port, busy, forbidden, gone; for a stop: not confirmed
 INTERRUPTED = 7  # ended by the operator, by a lost host or board, or by a record that could not be written
+FAULT = 70  # a fault of this program; HVHOST_TRACEBACK=1 shows where
 
 MEANINGS: dict[int, str] = {
     PASSED: "done, passed",
@@ -18,6 +19,7 @@ MEANINGS: dict[int, str] = {
     REFUSED: "refused, nothing was done",
     CANNOT_CONNECT: "cannot connect, or a stop was not confirmed",
     INTERRUPTED: "interrupted",
+    FAULT: "a fault of this program",
 }
 
 EPILOG = "exit codes: " + "; ".join(f"{code} {meaning}" for code, meaning in MEANINGS.items())

@@ -6,7 +6,6 @@ and the lines that it sends must come again at the same samples; the first place
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
-from pathlib import Path
 from typing import Any
 
 from hvhost.bench.file import bench_from
@@ -106,7 +105,11 @@ def replay(folder: RunFolder) -> Replayed:
         raise RecordFault("a META entry first", "none", str(folder.blocks))
     meta = RunMeta.of(first.content.data)
     memory = Memory()
-    core = core_of(meta, folder.path)
+    try:
+        core = core_of(meta)
+    except (KeyError, TypeError, ValueError) as error:
+        raise RecordFault("a META entry of this version", f"{type(error).__name__}: {error}", str(folder.blocks),
+                          "replay with the version that made the record") from None
     core.journal = memory
     return compare(core, meta.signs, memory, entries)
 
@@ -189,7 +192,7 @@ def _words(told: Told) -> str:
     return f"verdict {rule} ({severity}) at sample {index}: {measured} against {limit}"
 
 
-def core_of(meta: RunMeta, place: Path) -> Core:
+def core_of(meta: RunMeta) -> Core:
     """The core as it stood when the run was opened."""
     bench = bench_from(str(meta.bench["file"]), str(meta.bench["text"]))
     core = Core(bench, meta.opened_mono_s, lambda: 1)
