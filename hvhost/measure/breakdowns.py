@@ -22,7 +22,10 @@ DISCHARGES = Cause.BREAKDOWN | Cause.ARC_COUNT | Cause.ARC_IN_REST
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Breakdown:
-    """One disruptive discharge; ``to_stop_s`` is from the deciding sample to the MCU's stop, None where none came."""
+    """One disruptive discharge; ``to_stop_s`` is the longest time that its stop can have taken, None where none came.
+
+    The discharge began after the last sample that had not fallen; from there to the MCU's stop is an upper bound.
+    """
 
     row: int
     fall_row: int  # the first row below the level
@@ -47,7 +50,7 @@ def breakdowns_of(run: RunData) -> tuple[Breakdown, ...]:
             continue
         fall_row, volts = voltage_before(run, row)
         out.append(Breakdown(row=row, fall_row=fall_row, index=int(run.index(row, row + 1)[0]), at_s=at_s, volts=volts,
-                             seen_by=(who,), arc=arc, to_stop_s=_to_stop(run, at_s)))
+                             seen_by=(who,), arc=arc, to_stop_s=_to_stop(run, fall_row)))
     return tuple(out)
 
 
@@ -83,7 +86,9 @@ def voltage_before(run: RunData, row: int) -> tuple[int, Value]:
     return a + fall, Value(value, float(np.hypot(scale_u(run.meta.voltage, value), scatter)))
 
 
-def _to_stop(run: RunData, at_s: float) -> float | None:
+def _to_stop(run: RunData, fall_row: int) -> float | None:
+    last = max(0, fall_row - 1)
+    at_s = float(run.seconds(last, last + 1)[0])
     stops = [s - at_s for e in run.events if e.kind in (EventKind.CUT, EventKind.PAUSING)
              and (s := run.seconds_of_tick(e.tick)) >= at_s]
     return min(stops) if stops else None

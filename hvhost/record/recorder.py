@@ -124,7 +124,7 @@ class Recorder:
         self._file = file
         self._packer = EntryPacker(mark, signs)
         self._on_failed = on_failed
-        self._queue: deque[Content] = deque()
+        self._queue: deque[Content | tuple[float, Block]] = deque()  # a block as (arrival, block): cheapest to queue
         self._queue_max = queue_max
         self._refused = 0  # entries that a full queue refused since the last LOST entry (the caller's count)
         self._overflowed = 0  # and before it
@@ -186,7 +186,10 @@ class Recorder:
 
     def put_block(self, arrival_s: float, block: Block) -> None:
         """Queue one block; never blocks, never raises."""
-        self.put(BlockEntry(arrival_s, block))
+        if len(self._queue) >= self._queue_max or self._refused:
+            self.put(BlockEntry(arrival_s, block))
+        else:
+            self._queue.append((arrival_s, block))
 
     def health(self) -> RecorderHealth:
         """Say how the recorder is; with nothing unsynced the age is zero."""
@@ -232,9 +235,11 @@ class Recorder:
             if not self._write(parts):
                 return  # the next period tries again with what is queued then
 
-    def _packed(self, entry: Content) -> bytes:
+    def _packed(self, entry: Content | tuple[float, Block]) -> bytes:
         try:
-            return self._packer.pack(entry)
+            if type(entry) is tuple:
+                return self._packer.pack_block(*entry)
+            return self._packer.pack(entry)  # type: ignore[arg-type]  # a tuple is no content
         except PACKING as error:
             self._fail(f"an entry could not be packed: {error}")
             self._unwritten += 1

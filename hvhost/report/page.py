@@ -104,13 +104,13 @@ def _applied(meta: RunMeta, result: Result) -> Iterator[str]:
                         ("time on", f"{result.time_on_s:.2f} s")))
     for hold in result.holds:
         if hold.mean is None:
-            yield from _field(f"hold {hold.number}", f"{hold.name}: no usable sample")
+            yield from _field("hold", f"{hold.name}: no usable sample")
             continue
         over = f"; {hold.over_samples} samples above the tolerance, peak {sign * hold.peak_v / 1e3:.3f} kV" \
             if hold.over_samples else ""
         gap = f"; {hold.missing} samples missing" if hold.missing else ""
         kind = "in all" if hold.clock == "accumulate" else "unbroken"
-        yield from _field(f"hold {hold.number}", (
+        yield from _field("hold", (
             f"{hold.name}: mean {shown(hold.mean, 'kV', 1e-3, sign)} (k = 2, {hold.mean.relative * 100:.2g} %), asked "
             f"{sign * hold.level_v / 1e3:g} kV ± {hold.tolerance * 100:g} %; inside for {hold.inside_s:.2f} s {kind} "
             f"of {hold.asked_s:g} s; half of max - min {hold.ripple_v:.3g} V within the chain's "
@@ -152,7 +152,9 @@ def _arced(meta: RunMeta, result: Result) -> Iterator[str]:
     if not result.breakdowns:
         yield "no disruptive discharge"
     for number, found in enumerate(result.breakdowns, start=1):
-        stop = "no stop followed" if found.to_stop_s is None else f"stopped {found.to_stop_s * 1e3:.1f} ms after"
+        stop = "no stop followed"
+        if found.to_stop_s is not None:
+            stop = f"stopped at most {found.to_stop_s * 1e3:.1f} ms after it began"
         yield from _field(f"breakdown {number}", (
             f"{shown(found.volts, 'kV', 1e-3, meta.polarity)} at {found.at_s:.3f} s (sample {found.index}), seen by "
             f"{' and '.join(found.seen_by)}, {stop}; {found.kind}"))

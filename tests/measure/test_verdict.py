@@ -17,7 +17,8 @@ from tests.record.making import NO_BREAKDOWN, V_SCALE, Case, made_run, program
 PASS, FAIL, OPEN = Decision.PASS, Decision.FAIL, Decision.OPEN
 
 
-@pytest.mark.parametrize(("value", "decision"), [(9.79, PASS), (9.81, OPEN), (10.0, OPEN), (10.19, OPEN), (10.21, FAIL)])
+@pytest.mark.parametrize(("value", "decision"), [(9.79, PASS), (9.81, OPEN), (10.0, OPEN), (10.19, OPEN),
+                                                 (10.21, FAIL)])
 def test_guard_bands_on_an_upper_limit(value: float, decision: Decision) -> None:
     """JCGM 106, 8.3: with U 0.2 and a limit of 10, passed up to 9.8, failed from 10.2, open between."""
     assert below(Value(value, 0.1), 10.0) is decision
@@ -125,7 +126,8 @@ def test_breakdown_above_judges_each_breakdown(tmp_path: Path) -> None:
     assert result_of(tmp_path / "c", case_with(criterion("breakdown above", 9_000.0))).verdict is OPEN
 
 
-@pytest.mark.parametrize("acceptance", [[], [criterion("smells good", 1.0)], [criterion("leakage below", 1.0, hold="x")],
+@pytest.mark.parametrize("acceptance", [[], [criterion("smells good", 1.0)],
+                                        [criterion("leakage below", 1.0, hold="x")],
                                         [criterion("resistance above", 1.0, hold="x")],
                                         [criterion("level held", 1.0, hold="x")]])
 def test_what_cannot_be_judged_is_not_decided(tmp_path: Path, acceptance: list[dict[str, Any]]) -> None:

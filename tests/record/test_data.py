@@ -26,7 +26,8 @@ def folder_of(tmp_path: Path, **changes: object) -> tuple[RunFolder, Scripted]:
 def test_codes_and_heads_equal_those_of_the_entries_one_by_one(tmp_path: Path) -> None:
     """The fast way to arrays and the plain way through entries give the same codes, live and at rest."""
     folder = made_run(tmp_path, Case(hold_s=1.0))
-    plain = [e.content for e in read_blocks(folder.blocks) if isinstance(e, Entry) and isinstance(e.content, BlockEntry)]
+    plain = [e.content for e in read_blocks(folder.blocks)
+             if isinstance(e, Entry) and isinstance(e.content, BlockEntry)]
     v = [c for b in plain for c in b.block.codes[0::2]]
     i = [c for b in plain for c in b.block.codes[1::2]]
     live = load_run(folder)

@@ -42,7 +42,7 @@ def test_a_name_that_is_taken_is_refused(tmp_path: Path) -> None:
 
 def test_a_full_disk_is_refused_before_anything_is_made(tmp_path: Path) -> None:
     """Without room for a run nothing is opened, and the sentence says how much there is."""
-    with pytest.raises(RecordFault, match="MiB free.*make room"):
+    with pytest.raises(RecordFault, match=r"MiB free.*make room"):
         made(tmp_path, free_min=1 << 62)
     assert list(tmp_path.iterdir()) == []
 
@@ -60,7 +60,7 @@ def test_a_place_without_permission_is_refused(tmp_path: Path, monkeypatch: pyte
         raise PermissionError(13, "Permission denied")
 
     monkeypatch.setattr(folder_module, "write_synced", forbidden)
-    with pytest.raises(RecordFault, match="Permission denied.*write permission"):
+    with pytest.raises(RecordFault, match=r"Permission denied.*write permission"):
         made(tmp_path)
     assert not (tmp_path / "20270115T080000Z-0007").exists()
 
