@@ -27,12 +27,13 @@ from hvhost.publish.outlet import Outlet, Publisher
 from hvhost.publish.places import socket_path
 from hvhost.publish.station import CloseJob, Station, end_recording
 from hvhost.record.catalogue import unclosed
+from hvhost.record.folder import RunFolder
 from hvhost.record.recorder import Recorder
 from hvhost.report.closing import recover_and_close
 from hvhost.supervisor import arming
 from hvhost.supervisor.runs import Outcome
 from hvhost.supervisor.states import Permission
-from hvhost.words.errors import CannotConnect, HvhostError, RecordFault
+from hvhost.words.errors import CannotConnect, HvhostError
 
 SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
@@ -77,7 +78,6 @@ class Daemon:
             os.close(port.fd)
             raise
         try:
-            self._recover()
             with contextlib.suppress(NotImplementedError, ValueError):  # no signals outside the main thread
                 for number in (signal.SIGINT, signal.SIGTERM):
                     self._loop.add_signal_handler(number, self.stop)
@@ -86,7 +86,8 @@ class Daemon:
                 self._attach(port)
                 gc.collect()
                 gc.freeze()  # a full collection of what lives for ever would stall the loop
-                tasks = [group.create_task(self._publish()), group.create_task(self._reopen())]
+                tasks = [group.create_task(self._publish()), group.create_task(self._reopen()),
+                         group.create_task(self._recover())]
                 self.ready.set()
                 await self._stop.wait()
                 await self._lower_last()
@@ -124,15 +125,23 @@ class Daemon:
     def _permitted(self) -> bool:
         return self.station.core.state.permission is not Permission.IDLE
 
-    def _recover(self) -> None:
-        """Close what an earlier daemon left open, as interrupted; nothing is resumed (S8)."""
+    async def _recover(self) -> None:
+        """Close what an earlier daemon left open, as interrupted; nothing is resumed (S8), nothing waits for it."""
         root = self.station.runs_root
-        for folder in unclosed(root) if root.exists() else ():
-            try:
-                recover_and_close(folder, utc_ns=self.clock.utc_ns())
-                self.say(f"run {folder.name} was left open: closed as interrupted")
-            except (RecordFault, OSError) as error:
-                self.say(f"run {folder.name} cannot be recovered: {error}")
+        self.station.settled = False
+        try:
+            for folder in unclosed(root) if root.exists() else ():
+                if folder != self.station.folder:
+                    await self._recover_one(folder)
+        finally:
+            self.station.settled = True
+
+    async def _recover_one(self, folder: RunFolder) -> None:
+        try:
+            await asyncio.to_thread(recover_and_close, folder, utc_ns=self.clock.utc_ns())
+            self.say(f"run {folder.name} was left open: closed as interrupted")
+        except (HvhostError, OSError) as error:
+            self.say(f"run {folder.name} cannot be recovered: {error}")
 
     # ------------------------------------------------------------ the port
 

@@ -50,7 +50,7 @@ def request_of(options: argparse.Namespace) -> dict[str, Any]:
                               "reason": options.reason, "repeat_of": options.repeat_of}
     if options.sheet:
         sheet = Path(options.sheet)
-        return {**params, "sheet": read(sheet), "sheet_file": sheet.name}
+        return {**params, "sheet": read(sheet), "sheet_file": sheet.name, "specimen": options.specimen}
     specimen = options.specimen
     if not specimen:
         if not sys.stdin.isatty():

@@ -69,7 +69,12 @@ class Requests:
 
     def _sheet(self, params: Params) -> RunSheet:
         if params.get("sheet"):
-            return sheet_from(_text(params, "sheet_file", 200), _file(params, "sheet"))
+            sheet = sheet_from(_text(params, "sheet_file", 200), _file(params, "sheet"))
+            typed = _text(params, "specimen", 200)
+            if typed and typed != sheet.specimen:
+                raise CommandRefused(f"the run sheet's specimen {sheet.specimen!r}", f"{typed!r} as typed", "specimen",
+                                     "correct one of them: this may be a wrong label")
+            return sheet
         values = params.get("values") or {}
         if not isinstance(values, Mapping):
             raise CommandRefused("an object", type(values).__name__, "values")

@@ -104,6 +104,7 @@ class Station:
         self.folder: RunFolder | None = None
         self.recording: Recording | None = None
         self.closing = 0
+        self.settled = True  # False while earlier runs are being recovered: their evidence waits
         self.failed = ""
         self._write, self._on_close = write, on_close
         self._journal: RunJournal | None = None
@@ -193,7 +194,7 @@ class Station:
         """What follows every step: anchors, evidence, and the close of a run that is over."""
         if self._journal is not None and self.clock.now_s() >= self._anchor_due_s:
             self._anchor()
-        if self.core.evidence.ready:
+        if self.settled and self.core.evidence.ready:
             for snapshot in self.core.evidence.take():
                 self._store(snapshot)
         run = self.core.run
