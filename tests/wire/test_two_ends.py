@@ -23,6 +23,7 @@ from hvhost.wire.link import (
 from hvhost.wire.settings import Settings
 from hvhost.wire.vocabulary import McuState, ResetCause
 from hvhost.words.errors import CommandRefused
+from tests.wire.device import say
 from tests.wire.scenario import ScriptBench
 from tests.wire.scenarios import SETTINGS
 
@@ -165,3 +166,46 @@ def test_pure_noise_moves_nothing(seed: int) -> None:
         assert wire.mcu.state is McuState.OFF
         for event in wire.link.receive(noise.randbytes(5_000), 0.0):
             assert type(event).__name__ == "GarbledIn"
+
+
+def _anything(luck: random.Random, mcu: Mcu, n: int) -> str:
+    """Return a well-formed request with plausible fields: current numbers more often than not."""
+    core = mcu.core
+    checksum = Settings.of(SETTINGS).checksum
+    near = luck.choice
+    return near((
+        f"arm {n} 1234ABCD {core.arms + near((1, 1, 0, 2))} 00000001 {checksum:08X} "
+        f"{core.stream.number - near((0, 0, 1))}" + near(("", " pause=2,500,10000", " oc=1")),
+        f"seg {n} 1234ABCD {luck.randrange(65536)} {luck.randrange(65536)} {luck.randrange(20_000)}"
+        + near(("", " arc=1")),
+        f"reset {n} 1234ABCD {int(mcu.latched):08X} {near((0, 1))}", f"again {n} 1234ABCD {core.stream.number}",
+        f"put {n} 1234ABCD fitted {luck.randrange(1 << 15)}", f"put {n} 1234ABCD warn 3000",
+        f"save {n} 1234ABCD {checksum:08X}", f"snap {n} 1234ABCD 0", f"info {n} 1234ABCD {near((0, 3))}",
+        f"renew 1234ABCD {core.index - near((0, 1, 600))}", f"lower {n} 1234ABCD", f"arc {n} 1234ABCD {core.index}",
+        f"cut {n} {near((0, 0, 4))}", "hello 3221225472 1234ABCD 1 500"))
+
+
+@pytest.mark.parametrize("seed", range(8))
+def test_without_a_press_no_host_can_energise(seed: int) -> None:
+    """Whatever well-formed lines a host sends, without a press the inhibit stays asserted and the relay open."""
+    luck = random.Random(seed)
+    bench = ScriptBench(dict(SETTINGS), {"fall": 20}, McuConfig())
+    mcu = Mcu(bench, Eeprom(Settings.of(SETTINGS)), McuConfig())
+    seen, tick, n = set(), 2_000, 1
+    mcu.feed(say("hello 3221225472 1234ABCD 1 500"), tick)
+    for _ in range(1_500):
+        body = _anything(luck, mcu, n)
+        mcu.feed(say(body), tick)
+        answer = mcu.take_output()
+        if body.startswith("hello"):
+            n = 1
+        elif b" %d " % n in answer and not body.startswith(("renew", "cut", "lower", "arc")):
+            n += 1
+        seen.add(mcu.state)
+        assert bench.inhibit
+        assert bench.clear
+        assert not bench.relay
+        assert mcu.v_word == mcu.i_word == 0
+        tick += luck.choice((1, 10, 100, 1_000))
+        mcu.advance_to(tick)
+    assert seen == {McuState.OFF, McuState.REQUESTED}
