@@ -16,7 +16,7 @@ import os
 import socket
 import struct
 from collections.abc import Callable
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
 from hvhost.publish import jsonrpc
@@ -30,6 +30,7 @@ Handle = Callable[[str, dict[str, Any], Peer], Any]
 # Changes that a watcher is told at once, whatever rate it asked for.
 URGENT = ("link", "permission", "latched", "voltage", "stop", "pause_s", "arm", "warning_s")
 RATE_MOST_HZ = 20.0
+TREND_EVERY_S = 1.0  # the one large field: a column of a wide plot stands for a second and more
 CLOSING_TURNS = 6  # turns of the loop in which an accepted transport opens, or an aborted one closes
 FIELDS = tuple(one.name for one in fields(Snapshot))
 
@@ -143,6 +144,7 @@ class _Connection(asyncio.Protocol):
         self._unread_since_s: float | None = None
         self._rate_hz = 0.0
         self._sent: Snapshot | None = None
+        self._trend_s = float("-inf")
         self._dropped = 0
 
     def connection_made(self, transport: asyncio.BaseTransport) -> None:
@@ -190,8 +192,17 @@ class _Connection(asyncio.Protocol):
             self._end_if_stalled(limits.unread_s)
             return
         self._unread_since_s = None
-        self._transport.write(texts.notification(snapshot, self._sent, self._dropped))
-        self._sent = snapshot
+        shown = self._with_trend_when_due(snapshot)
+        self._transport.write(texts.notification(shown, self._sent, self._dropped))
+        self._sent = shown
+
+    def _with_trend_when_due(self, snapshot: Snapshot) -> Snapshot:
+        """Return the snapshot with the trend that the client has already, where a newer one is not due."""
+        sent = self._sent
+        if sent is None or snapshot.now_s - self._trend_s >= TREND_EVERY_S:
+            self._trend_s = snapshot.now_s
+            return snapshot
+        return snapshot if snapshot.trend is sent.trend else replace(snapshot, trend=sent.trend)
 
     def _due(self, snapshot: Snapshot) -> bool:
         sent = self._sent
@@ -254,7 +265,11 @@ class _FieldTexts:
         known = self._texts.get(name)
         if known is not None and known[0] is value:
             return known[1]
-        text = json.dumps(plain(value), allow_nan=False, separators=(",", ":"))
+        try:
+            # the trend is plain tuples of floats and by far the largest field: no need to walk it twice
+            text = json.dumps(value if name == "trend" else plain(value), allow_nan=False, separators=(",", ":"))
+        except ValueError:
+            text = json.dumps(plain(value), allow_nan=False, separators=(",", ":"))
         self._texts[name] = (value, text)
         return text
 

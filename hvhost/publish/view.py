@@ -40,7 +40,7 @@ def _clipped(line: Text, width: int) -> Text:
     if line.cell_len > width:
         line = line.copy()
         line.truncate(width, overflow="ellipsis")
-    if line.style in (panes.HEAD, ALERT):
+    if line.style in (panes.HEAD, panes.STATE, ALERT):
         line = line.copy()
         line.append(" " * (width - line.cell_len))
     line.no_wrap = True
@@ -85,8 +85,12 @@ def _share(spare: int, height: int) -> tuple[int, int]:
 
 
 def _alert_lines(snapshot: Snapshot, view: View, width: int, most: int) -> list[Text]:
-    lines = [line for alert in wording.alerts(snapshot, view) for line in wrapped(alert, width - 4, 2, "## ")]
-    return [Text(f" {line} ", style=ALERT) for line in lines[:most]]
+    """Return the alerts in reverse; red where something is or may be dangerous, plain where someone is asked to act."""
+    lines = []
+    for alert in wording.alerts(snapshot, view):
+        style = panes.STATE if alert.startswith("REQUESTED") else ALERT
+        lines += [Text(f" {line} ", style=style) for line in wrapped(alert, width - 4, 2, "## ")]
+    return lines[:most]
 
 
 def _stacked(snapshot: Snapshot, view: View, width: int, most: int) -> list[Text]:

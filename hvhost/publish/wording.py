@@ -19,6 +19,7 @@ from hvhost.publish.snapshot import (
     VoltageState,
 )
 
+MOST_DECIMALS = 9  # beyond this an uncertainty is a mistake, not a measurement
 DIGITS = 4  # of the full scale: a bench chain is good for a tenth of a percent
 ENERGISED = frozenset((Permission.RUNNING, Permission.PAUSING, Permission.LOWERING))
 _UNITS = ((1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"))
@@ -98,11 +99,11 @@ def known(value: float | None) -> float | None:
 
 def measured(value: float, u: float | None, unit: str, polarity: int = 1) -> str:
     """Return the value with its expanded uncertainty (k = 2), both to the second digit of it: (17.996 ± 0.052) kV."""
-    if u is None or not math.isfinite(u) or u <= 0.0 or not math.isfinite(value):
+    expanded = known(2.0 * u) if u is not None else None
+    if expanded is None or expanded <= 0.0 or not math.isfinite(value):
         return f"{fine(value, unit, polarity)}, U not known"
-    expanded = 2.0 * u
     factor, prefix = next(((f, p) for f, p in _UNITS if max(abs(value), expanded) >= f), _UNITS[-1])
-    decimals = max(0, 1 - math.floor(math.log10(expanded / factor)))
+    decimals = min(MOST_DECIMALS, max(0, 1 - math.floor(math.log10(max(expanded / factor, 1e-15)))))
     shown = f"{value * polarity / factor:.{decimals}f}"
     shown = shown.lstrip("-") if not shown.strip("-0.") else shown
     return f"({shown} ± {expanded / factor:.{decimals}f}) {prefix}{unit}"

@@ -15,7 +15,7 @@ import pytest
 from hvhost.publish import jsonrpc
 from hvhost.publish.conversation import Peer
 from hvhost.publish.local import LocalLimits, LocalServer
-from hvhost.publish.snapshot import Permission, Snapshot
+from hvhost.publish.snapshot import Permission, Snapshot, TrendBucket
 from hvhost.words.errors import CannotConnect
 from tests.pictures.states import RUNNING
 
@@ -141,6 +141,35 @@ def test_the_rate_is_kept_but_for_what_is_urgent(tmp_path: Path) -> None:
     serve(tmp_path, body)
 
 
+def test_the_trend_is_sent_once_a_second(tmp_path: Path) -> None:
+    """The large field is spared the wire at full rate and is never more than a second behind."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as client:
+            client.send(subscribe(10.0))
+            await turns()
+            for n in range(13):
+                bench.server.offer_nowait(at(1.0 + n * 0.1, trend=RUNNING.trend[: n + 1]))
+            await turns()
+            carried = [len(one["params"]["fields"]["trend"]) for one in lines(client)[1:]
+                       if "trend" in one["params"]["fields"]]
+            assert carried == [1, 11]
+
+    serve(tmp_path, body)
+
+
+def test_a_trend_with_holes_is_sent_too(tmp_path: Path) -> None:
+    """A value that is no number becomes null and does not end the notifications."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as client:
+            client.send(subscribe(10.0))
+            await turns()
+            bench.server.offer_nowait(at(1.0, trend=(TrendBucket(1.0, float("nan"), 1.0, 2.0, 3.0),)))
+            await turns()
+            assert lines(client)[1]["params"]["fields"]["trend"] == [[1.0, None, 1.0, 2.0, 3.0]]
+
+    serve(tmp_path, body)
+
+
 def test_unsubscribing_ends_the_notifications(tmp_path: Path) -> None:
     """A view that has enough gets no more."""
     async def body(bench: Bench) -> None:
@@ -192,7 +221,7 @@ def test_a_stalled_client_loses_notifications_and_slows_nobody(tmp_path: Path) -
             await turns()
             got = 0
             for n in range(2000):
-                bench.server.offer_nowait(at(n * 0.1, trend=RUNNING.trend[: n % 150]))
+                bench.server.offer_nowait(at(n * 1.0, trend=RUNNING.trend[: n % 150]))
                 if n % 4 == 0:
                     await turns(3)
                     got += sum("method" in one for one in lines(reading))
@@ -233,8 +262,8 @@ def test_a_client_stalled_for_long_is_disconnected(tmp_path: Path) -> None:
         with bench.connect() as client:
             client.send(subscribe(20.0))
             await turns()
-            for n in range(3000):
-                bench.server.offer_nowait(at(n * 0.1, trend=RUNNING.trend[: n % 150]))
+            for n in range(1000):
+                bench.server.offer_nowait(at(n * 1.0, trend=RUNNING.trend[: n % 150]))
             await turns()
             assert bench.server.view().clients == 0
 
