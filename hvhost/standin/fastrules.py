@@ -223,9 +223,13 @@ class FastRules:
             core.event(EventKind.INTERFERED, cause, total)
 
     def fall_after_stop(self, v: int) -> bool:
-        """Whether the readback lies more than D below the bleed envelope from the last sample before the stop."""
+        """Whether the readback fell over w samples by more than D, to more than D below the bleed envelope.
+
+        The envelope begins at the last sample before the stop.  A specimen that leaks lets the voltage sink below it
+        slowly: that is a discharge, no collapse.
+        """
         self.stop_envelope -= self.stop_envelope * self.decay >> 32
-        return v < (self.stop_envelope >> 16) - self.drop
+        return v < (self.stop_envelope >> 16) - self.drop and self.back[0] - v > self.drop
 
     def rebase(self) -> None:
         """A fall was acted on: the envelope after the stop begins at the present readback."""

@@ -209,15 +209,14 @@ class Mcu:
             word = core.v_word
             if word != rules.last_word or rules.unsettled:
                 rules.follow(word)
-            back = rules.back
-            if i > rules.i_screen or v > rules.v_screen or back[0] - v > rules.drop or rules.busy:
+            if i > rules.i_screen or v > rules.v_screen or rules.back[0] - v > rules.drop or rules.busy:
                 rules.judge()
-            back.append(v)
         else:
             if i > rules.over_i or rules.busy:
                 rules.watch_off()
             if core.state in PREPARING:
                 core.arming.watch()
+        rules.back.append(v)
 
     def _missed(self) -> None:
         """A conversion failed: its index is taken, the pair is absent, and nothing across it belongs together."""

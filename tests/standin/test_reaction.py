@@ -142,6 +142,19 @@ def test_a_restrike_soon_after_belongs_to_the_arc_a_later_one_latches():
         assert bench.kinds().count("restrike") == (0 if latched else 1)
 
 
+def test_a_specimen_that_leaks_in_the_rest_does_not_latch():
+    """A fall faster than the bleed time but slow against w samples is a discharge, no collapse (PROTOCOL 10.6)."""
+    bench = Bench().energised(pause=(3, 2_000, 10_000))
+    bench.board.tau_s = 0.1
+    assert bench.arc(bench.mcu.core.index).words == ("1",)
+    bench.pass_ms(1_500)
+    assert bench.state is McuState.PAUSING
+    assert "restrike" not in bench.kinds()
+    bench.lower()
+    bench.pass_ms(1_500)
+    assert "offseen" not in bench.kinds()
+
+
 def test_a_readback_above_the_envelope_in_the_rest_latches():
     """With the output inhibited nothing may rise above what bleeds away (PROTOCOL 11.10)."""
     bench = paused((3, 1_000, 10_000))
