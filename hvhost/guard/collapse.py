@@ -3,8 +3,8 @@
 Over a window of w samples the readback fell from ``base`` to ``v``.  Three things explain part of a fall:
 
 * the words: max - min of the voltage words applied over the window and the programming delay before it.  Words are
-  known at each block's first sample and lie on a straight line between (PROTOCOL.md, segments); after the last known
-  one they may have fallen by the slew ceiling;
+  known at each block's first sample only and a segment may have run anywhere between two of them, so the last one
+  known before the window counts as in it; after the last known one they may have fallen by the slew ceiling;
 * the load's own current: with the supply giving nothing (a mains dip, the change from voltage to current control) the
   load discharges output and cable, dv/dt = -i/C, with the current that flowed before the fall.  It never explains
   more than half of the voltage;
@@ -13,7 +13,6 @@ Over a window of w samples the readback fell from ``base`` to ``v``.  Three thin
 All in integer codes, sample by sample in order, so that a replay repeats it to the bit.
 """
 
-from itertools import pairwise
 from typing import NamedTuple
 
 from hvhost.guard.limits import GuardLimits
@@ -126,7 +125,7 @@ def _trial(k: int, samples: Samples, limits: GuardLimits, fallen: Fallen) -> Fal
     if base - samples.v[k] <= limits.drop:
         return NO_FALL
     window_from, index = samples.indices[start], samples.indices[k]
-    low, high = _word_extremes(samples.points, window_from - limits.delay_samples, index)
+    low, high = _word_extremes(samples.points, window_from - limits.delay_samples)
     return fallen._replace(base=base, window_from=window_from, current=_current_before(samples.i, start, limits),
                            word_low=low, word_high=high, started=index, lowest=samples.v[k], energy=0)
 
@@ -145,15 +144,10 @@ def _current_before(i: list[int], start: int, limits: GuardLimits) -> int:
     return max(0, max([min(i[j - 1], i[j]) for j in range(first, start + 1)], default=i[start]))
 
 
-def _word_extremes(points: list[tuple[int, int]], start: int, end: int) -> tuple[int, int]:
-    """Return the least and greatest voltage word from sample ``start`` to the last known point up to ``end``."""
-    words = [word for index, word in points if start <= index <= end]
-    for (index, word), (after, then) in pairwise(points):
-        if index < start < after:
-            # straight line between two known words
-            words.append(word + (then - word) * (start - index) // (after - index))
-    if not words:
-        words = [points[-1][1]]
+def _word_extremes(points: list[tuple[int, int]], start: int) -> tuple[int, int]:
+    """Return the least and greatest voltage word known from the last one at or before sample ``start`` on."""
+    first = max((at for at, (index, _) in enumerate(points) if index <= start), default=0)
+    words = [word for _, word in points[first:]]
     return min(words), max(words)
 
 

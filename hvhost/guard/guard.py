@@ -87,7 +87,7 @@ class Guard:
         if due is None or now_s < due or self._silent or self._arrival_s is None:
             return ()
         self._silent = True
-        silence_ms = int((now_s - self._arrival_s) * 1e3)
+        silence_ms = round((now_s - self._arrival_s) * 1e3)
         severity = Severity.TRIP if self._state in _POWERED or self._state not in LIVE else Severity.EVENT
         return (Verdict(rule=HostRule.STALE, severity=severity, limit=self.limits.stale_ms, measured=silence_ms,
                         index=self._last_index, tick=self._last_tick, text=f"no samples for {silence_ms} ms"),)

@@ -23,6 +23,7 @@ class Counters:
     missed: int = 0  # conversions that the MCU says it missed
     repeated: int = 0  # blocks that begin with a sample seen before: refused
     backward: int = 0  # blocks that lie wholly before the last one: refused
+    empty: int = 0  # blocks without pairs: refused
     off_beat: int = 0  # blocks whose tick does not fit their index
     stale: int = 0
 
@@ -56,7 +57,7 @@ class Assembler:
         v, i = codes[0::2], codes[1::2]
         pairs = len(i)
         if not pairs:
-            counters.repeated += 1
+            counters.empty += 1
             return None
         index, gap = self._place(block.index, pairs)
         if gap < 0:

@@ -9,6 +9,7 @@ from hvhost.wire.frames import Block
 from hvhost.wire.vocabulary import Inputs, McuState
 
 CLOSED = int(Inputs.INTERLOCK | Inputs.EMERGENCY | Inputs.GROUND_OPEN | Inputs.AUXILIARY)
+NONE = Flags(0)
 RAW = Block(0, 0, 0, 0, 4, 0, CLOSED, 0, 0, 0, ())
 
 
@@ -24,7 +25,7 @@ def limits(**changes: Any) -> GuardLimits:
 
 
 def block(index: int, v: Sequence[int], i: Sequence[int], *, v_word: int = 0, i_word: int = 4000,
-          state: int = McuState.ENERGISED, inputs: int = CLOSED, gap: int = 0, flags: Flags = Flags(0),
+          state: int = McuState.ENERGISED, inputs: int = CLOSED, gap: int = 0, flags: Flags = NONE,
           arrival_s: float = 0.0) -> SampleBlock:
     """One block; the tick is ten times the index."""
     return SampleBlock(index=index, tick=10 * index, v=tuple(v), i=tuple(i), v_word=v_word, i_word=i_word,

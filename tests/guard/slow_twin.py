@@ -150,13 +150,12 @@ class Twin:
 
     @staticmethod
     def words(blocks: list[SampleBlock], start: int, last: int) -> tuple[int, int]:
-        """Extremes of the words, on straight lines between the blocks' first samples, at every sample in between."""
+        """Extremes of the words known at any sample of the window; one stays known until the next."""
         known = [(b.index, b.v_word) for b in blocks if b.index <= last]
-        values = []
-        for x in range(min(max(start, known[0][0]), last), last + 1):
-            (x0, w0) = [p for p in known if p[0] <= x][-1]
-            after = [p for p in known if p[0] > x]
-            values.append(w0 if x == x0 else w0 + (after[0][1] - w0) * (x - x0) // (after[0][0] - x0))
+        values = [known[0][1]] if start < known[0][0] else []
+        for x in range(start, last + 1):
+            values += [[word for index, word in known if index <= x][-1]] if x >= known[0][0] else []
+        values.append(known[-1][1])
         return min(values), max(values)
 
 

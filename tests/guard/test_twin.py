@@ -1,5 +1,7 @@
 """The guard against its slow twin, and against itself with the samples cut into other blocks."""
 
+from dataclasses import replace
+
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -82,7 +84,6 @@ def test_verdicts_do_not_depend_on_the_cut_into_blocks(
 
     The one thing that the cut may change is how long words may have fallen unseen, so the slew ceiling is left out.
     """
-    from dataclasses import replace
     limit = replace(limit, fall_q16=0, deviation=500, deviation_samples=20)
     v, i, _ = series(stretches)
     v, i = [10000] * 64 + v, [10] * 64 + i
