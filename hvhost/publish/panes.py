@@ -6,12 +6,21 @@ first.  Colour only repeats what words, capitals, marks or hatching say already;
 
 from collections.abc import Sequence
 
-from rich.cells import cell_len
+from rich.cells import cell_len, set_cell_size
 from rich.text import Text
 
 from hvhost.publish import wording
 from hvhost.publish.digits import best_size, big_lines
-from hvhost.publish.snapshot import EventLine, HoldView, InputJudgement, RunView, Severity, Snapshot, StopState
+from hvhost.publish.snapshot import (
+    EventLine,
+    HoldView,
+    InputJudgement,
+    LinkState,
+    RunView,
+    Severity,
+    Snapshot,
+    StopState,
+)
 from hvhost.publish.trend import braille_plot, nice_top
 from hvhost.publish.wording import Scale, View, fine, known, left, local_time, measured, printable, span
 
@@ -41,31 +50,32 @@ def wrapped(text: str, width: int, most: int, mark: str = "") -> list[str]:
 
 
 def header(snapshot: Snapshot, view: View, width: int) -> Text:
-    """Bench, polarity, rehearsal, and the local time with offset and zone at the right."""
+    """Bench, polarity, rehearsal, and the local time with offset and zone at the right; a long name gives way."""
     sign = "negative (-)" if snapshot.polarity < 0 else "positive (+)"
     name = printable(snapshot.bench_title or snapshot.bench)
     clock = wording.clock_text(snapshot.utc_ns, view.zone)
-    badge = " REHEARSAL: a stand-in, no bench " if snapshot.rehearsal else " "
-    start = f" {name}  {sign} {badge}"
-    room = width - cell_len(start) - len(clock) - 1
-    if room < 1:
-        clock = clock[11:]
-        start = f" {name}  {sign} {' REHEARSAL ' if snapshot.rehearsal else ''}"
-        room = width - cell_len(start) - len(clock) - 1
-    return Text(f"{start}{' ' * max(1, room)}{clock} ", style=HEAD)
+    badge = "  REHEARSAL: a stand-in, no bench" if snapshot.rehearsal else ""
+    if cell_len(name) + len(sign) + len(badge) + len(clock) + 6 > width:
+        clock, badge = clock[11:], badge[:11]
+    end = f"  {sign}{badge}  {clock} "
+    return Text(f" {cells(name, max(1, width - 1 - cell_len(end)))}{end}", style=HEAD)
 
 
-def state_line(snapshot: Snapshot, view: View) -> Text:
-    """State, voltage, power, what became of a cut, link."""
-    line = Text(" ")
-    line.append(f" {wording.state_words(snapshot, view)} ", STATE)
-    parts = [wording.voltage_words(snapshot), printable(snapshot.power_words)]
-    if view.connected:
-        parts += [wording.link_words(snapshot), "" if snapshot.stop is StopState.CUT_NOT_CONFIRMED else snapshot.stop]
-    else:
-        parts += ["NO DAEMON"]
-    line.append("  " + " · ".join(filter(None, parts)), "bold")
-    return line
+def cells(text: str, width: int) -> str:
+    """Return ``text`` in exactly ``width`` cells, with an ellipsis where it was longer."""
+    return set_cell_size(text, width) if cell_len(text) <= width else set_cell_size(text, width - 1) + "…"
+
+
+def state_line(snapshot: Snapshot, view: View, width: int) -> Text:
+    """State, voltage, power, what became of a cut, link; a link that is as it should be gives way first."""
+    words = f" {wording.state_words(snapshot, view)} "
+    stop = "" if snapshot.stop is StopState.CUT_NOT_CONFIRMED else str(snapshot.stop)
+    parts = [wording.voltage_words(snapshot), stop, printable(snapshot.power_words),
+             wording.link_words(snapshot) if view.connected else "NO DAEMON"]
+    rest = " · ".join(filter(None, parts))
+    if view.connected and snapshot.link is LinkState.GREETED and len(words) + cell_len(rest) + 3 > width:
+        rest = " · ".join(filter(None, parts[:-1]))
+    return Text.assemble(" ", (words, STATE), (f"  {rest}", "bold"))
 
 
 def readbacks(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Text]:
@@ -265,12 +275,12 @@ def _timing(run: RunView, snapshot: Snapshot, view: View) -> str:
 
 
 def health(snapshot: Snapshot) -> Text:
-    """Return the record, who has control, the link's counts and what outlets lost."""
+    """Return the record, the link's counts and what outlets lost, and who has control."""
     quality, record = snapshot.quality, snapshot.record
     lost = sum(one.dropped + one.failed for one in snapshot.outlets)
     words = [f"record {'ok' if record.ok else 'FAILED'}{' ' + printable(record.text) if record.text else ''}",
-             f"control {printable(snapshot.seat) or 'free'}",
-             f"garbled {quality.garbled} gaps {quality.gaps} missed {quality.missed}", f"lost {lost}"]
+             f"garbled {quality.garbled} gaps {quality.gaps} missed {quality.missed} lost {lost}",
+             f"control {printable(snapshot.seat) or 'free'}"]
     return Text(" " + " · ".join(words), style="" if record.ok else "bold")
 
 

@@ -6,7 +6,6 @@ left and goes first.  Nothing is read or written here.
 
 from collections.abc import Sequence
 
-from rich.cells import cell_len, set_cell_size
 from rich.text import Text
 
 from hvhost.publish import panes, wording
@@ -17,6 +16,7 @@ from hvhost.publish.wording import View
 LEAST_WIDTH, LEAST_HEIGHT = 80, 24
 FIXED_ROWS = 8  # header, state, reading, two bars, health, next acts, footer
 MOST_ALERTS = 5
+MOST_CAUTIONS = 6  # at 80 columns the caution with its reasons takes four or five: it is never clipped
 WIDE, TALL = 110, 32  # from here on run and inputs stand side by side, and digits grow
 
 
@@ -50,7 +50,7 @@ def _clipped(line: Text, width: int) -> Text:
 def _full(snapshot: Snapshot, view: View, width: int, height: int) -> list[Text]:
     alerts = _alert_lines(snapshot, view, width, MOST_ALERTS)
     words = wording.caution(snapshot)
-    cautions = [Text(f" {line}", style="bold") for line in wrapped(words, width - 2, 4)] if words else []
+    cautions = [Text(f" {line}", style="bold") for line in wrapped(words, width - 2, MOST_CAUTIONS)] if words else []
     spare = height - FIXED_ROWS - len(alerts) - len(cautions)
     readbacks = panes.readbacks(snapshot, view, width, _digit_rows(width, height, spare))
     digits = len(readbacks)
@@ -60,7 +60,7 @@ def _full(snapshot: Snapshot, view: View, width: int, height: int) -> list[Text]
         middle = _stacked(snapshot, view, width, spare - digits - 1)
     spare -= digits + len(middle)
     event_rows, trend_rows = _share(spare, height) if snapshot.trend else (max(0, spare), 0)
-    lines = [panes.header(snapshot, view, width), panes.state_line(snapshot, view), *alerts]
+    lines = [panes.header(snapshot, view, width), panes.state_line(snapshot, view, width), *alerts]
     lines += [*readbacks, panes.reading_line(snapshot, view), *panes.bars(snapshot, view, width)]
     lines += panes.trends(snapshot, width, trend_rows) if trend_rows else []
     lines += [*middle, *cautions, panes.health(snapshot)]
@@ -109,7 +109,7 @@ def _side_by_side(snapshot: Snapshot, view: View, width: int, rows: int) -> list
     for row in range(max(len(left), len(right))):
         line = Text(" ")
         run = left[row] if row < len(left) else Text("")
-        line.append(_cells(run.plain, left_width - 2), run.style)
+        line.append(panes.cells(run.plain, left_width - 2), run.style)
         line.append(" ")
         if row < len(right):
             line.append_text(right[row])
@@ -117,17 +117,12 @@ def _side_by_side(snapshot: Snapshot, view: View, width: int, rows: int) -> list
     return lines
 
 
-def _cells(text: str, width: int) -> str:
-    """Return ``text`` in exactly ``width`` cells, with an ellipsis where it was longer."""
-    return set_cell_size(text, width) if cell_len(text) <= width else set_cell_size(text, width - 1) + "…"
-
-
 def _small(snapshot: Snapshot, view: View, width: int, height: int) -> list[Text]:
     """Return the weightiest words for a terminal below 80x24; the last row is the keys."""
     volts, amps = wording.volts_scale(snapshot), wording.amps_scale(snapshot)
     reading = snapshot.reading
     lines = _alert_lines(snapshot, view, width, max(1, height - 4))
-    lines.append(panes.state_line(snapshot, view))
+    lines.append(panes.state_line(snapshot, view, width))
     if reading is not None and not wording.output_unknown(snapshot, view):
         old = "OLD " if wording.reading_old(snapshot, view) else ""
         lines.append(Text(f" {old}{volts.text(reading.volts)}  {amps.text(reading.amps)}", style="bold"))

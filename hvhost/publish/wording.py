@@ -177,9 +177,9 @@ def voltage_words(snapshot: Snapshot) -> str:
 
 
 def voltage_reason(snapshot: Snapshot) -> str:
-    """Return the daemon's explanation of the voltage's state, '' where it only repeats it."""
+    """Return the daemon's explanation of the voltage's state without the state itself, '' where there is no more."""
     text = printable(snapshot.voltage_text)
-    return "" if text.lower() == str(snapshot.voltage) else text
+    return text[len(snapshot.voltage):].lstrip(" :,.") if text.lower().startswith(str(snapshot.voltage)) else text
 
 
 def alerts(snapshot: Snapshot, view: View) -> list[str]:

@@ -7,7 +7,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from rich.cells import cell_len
 
-from hvhost.publish.snapshot import EventLine, InputView, Reading, RunView, Severity
+from hvhost.bench import cautions
+from hvhost.publish.snapshot import EventLine, InputView, Reading, RunView, Severity, VoltageState
 from hvhost.publish.view import fitted, screen
 from hvhost.publish.wording import View
 from tests.pictures.draw import ZONE
@@ -56,7 +57,8 @@ def test_the_first_lines_and_the_last_stay_where_they_are(size: tuple[int, int])
     """Header first, state second, keys last: the eye knows where to look, whatever the state."""
     for snapshot, view in STATES.values():
         lines = [line.plain for line in screen(snapshot, replace(view, zone=ZONE), *size)]
-        assert "kV" in lines[0]
+        assert "(+)" in lines[0] or "(-)" in lines[0]
+        assert "14:03:22 +01:00 CET" in lines[0]
         assert "VOLTAGE" in lines[1]
         assert "cut" in lines[-1] or "CANNOT STOP" in lines[-1]
 
@@ -74,3 +76,16 @@ def test_a_clipped_line_shows_that_it_is() -> None:
     from rich.text import Text
     (line,) = fitted([Text("abcdefgh")], 5, 1)
     assert line.plain == "abcd…"
+
+
+def test_the_caution_is_never_clipped() -> None:
+    """S6: with a long reason at 80x24 the caution's last word is still read."""
+    snapshot = replace(TRIPPED, voltage=VoltageState.LOST, bench_title="A bench with a very long name, area 3, 4 mA",
+                       voltage_text="measurement lost: the reading fell faster than any discharge through the bleed",
+                       power_words="supply power cut by the relay")
+    lines = [line.plain for line in screen(snapshot, View(zone=ZONE), 80, 24)]
+    text = " ".join(" ".join(lines).split())
+    assert cautions.BEFORE_TOUCHING in text
+    assert "Voltage measurement lost: the reading fell faster" in text
+    assert "14:03:22 +01:00 CET" in lines[0]
+    assert "MEASUREMENT LOST · cut confirmed" in lines[1]
