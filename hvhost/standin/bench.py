@@ -22,6 +22,7 @@ from hvhost.words.errors import UsageFault
 
 TICK_HZ = 10_000  # of every profile
 PIECE_TICKS = 20  # a fault that is to come, or just came, is looked at this often
+EVENTS_KEPT = 1_000  # of the plant, where no truth file takes them
 RESETS = (("mcu-reset", ResetCause.WATCHDOG), ("mcu-brownout", ResetCause.BROWN_OUT))
 
 
@@ -84,6 +85,8 @@ class StandIn:
             self.mcu.advance_to(round(self._inner))
         if faults.version != self._seen:
             self._settle()
+        if self.truth is None and len(self.plant.events) > EVENTS_KEPT:
+            del self.plant.events[:-EVENTS_KEPT]
 
     def feed(self, data: bytes, tick: int | None = None) -> None:
         """Take bytes from the host, now or at a later tick."""
@@ -178,6 +181,8 @@ class Watched:
             since = round((plant.t_s - event.t_s) / self.stretch * bench.config.tick_hz)  # it fell between samples
             truth.event(core.now - since, event.t_s, event.kind, event.value, event.detail)
         plant.events.clear()
+        if core.stream.number < self._event:
+            self._event = 0  # the MCU has booted: its events count from one again
         if core.stream.number != self._event:
             for told in core.stream.kept:
                 if told.kind == EventKind.CUT and told.number > self._event:

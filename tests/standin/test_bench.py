@@ -242,6 +242,22 @@ def test_the_eeprom_may_be_given_blank_or_kept():
         stand_in("nosuch")
 
 
+def test_cuts_after_a_boot_are_in_the_truth():
+    """Event numbers begin anew at a boot; what is cut then is written all the same."""
+    lines: list[str] = []
+    bench = stand_in("demo", 4, truth=TruthLog(lines.append, tick_hz=StandIn.TICK_HZ))
+    host = Host(bench)
+    host.energise()
+    bench.reset()
+    host.n = 0
+    host.say(f"hello 2147483649 {SESSION:08X} 1 500")
+    host.energise()
+    host.say("cut 5 0")
+    host.wait(0.1)
+    whats = [json.loads(line).get("what") for line in lines]
+    assert whats.index("cut") > whats.index("mcu reset")
+
+
 def test_the_truth_file_costs_no_different_bytes():
     """Watching changes nothing of what the MCU does."""
     def played(truth: TruthLog | None) -> bytes:
