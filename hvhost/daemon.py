@@ -10,6 +10,7 @@ import contextlib
 import gc
 import json
 import os
+import pwd
 import secrets
 import signal
 import sys
@@ -211,7 +212,7 @@ class Daemon:
     # ------------------------------------------------------------ requests
 
     def _handle(self, method: str, params: dict[str, Any], peer: Peer) -> Any:
-        who = str(params.pop("as", "")).strip()[:80] or f"uid {peer.uid}"
+        who = str(params.pop("as", "")).strip()[:80] or user_name(peer.uid)
         if method == "seat.take":
             ticket = str(params.get("ticket") or secrets.token_hex(8))
             params["ticket"] = ticket
@@ -260,6 +261,14 @@ class Daemon:
             self.say(f"closing run {job.folder.name}: {error}")
         finally:
             self.station.closed(verdict)
+
+
+def user_name(uid: int) -> str:
+    """The login name of a user, or the number where there is none."""
+    try:
+        return pwd.getpwuid(uid).pw_name
+    except (KeyError, OverflowError):
+        return f"uid {uid}"
 
 
 def _soon(loop: asyncio.AbstractEventLoop, call: Callable[[str], None], reason: str) -> None:

@@ -3,7 +3,7 @@
 from hvhost.cli import exits
 from hvhost.cli.follow import Follower, finish
 from hvhost.cli.run import arm_and_follow, tell_opened
-from hvhost.cli.talk import Bench, parser_of
+from hvhost.cli.talk import Bench, parser_of, ticket_file, write_ticket
 from hvhost.words.errors import UsageFault
 
 ABOUT = """Arms the run that 'hvhost run --prepare' opened.  Without one, and with --specimen, it opens a direct run
@@ -36,4 +36,8 @@ def run(argv: list[str]) -> int:
             raise UsageFault("a prepared run, or --specimen ID for a direct run", "neither", "arm")
         opened = bench.call("direct", specimen=options.specimen, operator=options.operator, reason=options.reason)
         tell_opened(opened)
-        return arm_and_follow(bench, opened["run"], options)
+        write_ticket(bench.path, bench.ticket)  # so that this user's `hvhost set` commands in the same name
+        try:
+            return arm_and_follow(bench, opened["run"], options)
+        finally:
+            ticket_file(bench.path).unlink(missing_ok=True)

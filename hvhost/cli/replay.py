@@ -2,6 +2,7 @@
 
 import argparse
 import json
+from collections.abc import Mapping
 
 from hvhost.cli import exits
 from hvhost.cli.runs import DEFAULT_ROOT, root_of
@@ -23,12 +24,19 @@ def run(argv: list[str]) -> int:
     if options.json:
         print(json.dumps({"inputs": found.inputs, "blocks": found.blocks, "pairs": found.pairs,
                           "verdicts": found.verdicts, "parted": found.parted, "damage": found.damage,
-                          "interfering": dict(found.interfering)}))
+                          "interfering": dict(found.interfering),
+                          "interfering_recorded": found.interfering_recorded}))
     else:
         print(f"{found.inputs} inputs, {found.pairs} pairs, {found.verdicts} verdicts")
-        if found.interfering:
-            print("interfering samples: " + ", ".join(f"{rule} {count}" for rule, count in found.interfering.items()))
+        if found.interfering or found.interfering_recorded:
+            print(f"interfering samples: {_counts(found.interfering)}"
+                  + ("" if found.interfering == (found.interfering_recorded or found.interfering)
+                     else f"; the record counted {_counts(found.interfering_recorded or {})}"))
         if found.damage:
             print(f"{found.damage} damaged places in the record were passed over")
         print(f"parted {found.parted}" if found.parted else "same verdicts at the same samples, same lines sent")
     return exits.FAILED if found.parted else exits.PASSED
+
+
+def _counts(counts: Mapping[str, int]) -> str:
+    return ", ".join(f"{rule} {count}" for rule, count in counts.items()) or "none"

@@ -30,6 +30,7 @@ from hvhost.record.entries import (
 )
 from hvhost.record.folder import RunFolder
 from hvhost.record.meta import RunMeta
+from hvhost.supervisor.arming import interfering
 from hvhost.supervisor.commands import open_run
 from hvhost.supervisor.core import Core
 from hvhost.supervisor.runs import RunSpec
@@ -57,6 +58,7 @@ class Replayed:
     parted: str = ""
     damage: int = 0
     interfering: Mapping[str, int] = field(default_factory=dict)
+    interfering_recorded: Mapping[str, int] | None = None  # as the run's close noted it; None where nothing closed it
 
 
 class Memory:
@@ -127,6 +129,8 @@ def compare(core: Core, signs: str, memory: Memory, entries: Iterator[Entry | Da
             expected += [("sent", line) for line in content.line.split(b"\n") if line]
         elif isinstance(content, NoteEntry) and content.data.get("what") == "verdict":
             expected.append(("verdict", tuple(content.data[key] for key in VERDICT_KEYS)))
+        elif isinstance(content, NoteEntry) and content.data.get("what") == "run closed":
+            found.interfering_recorded = dict(content.data.get("interfering", {}))
         elif feed(core, content, signs, found):
             found.inputs += 1
             if not found.parted:
@@ -136,8 +140,7 @@ def compare(core: Core, signs: str, memory: Memory, entries: Iterator[Entry | Da
     if not found.parted:
         found.parted = _parting(memory.told, expected, found, at_end=True)
     found.verdicts = sum(kind == "verdict" for kind, _ in memory.told)
-    if core.guard is not None:
-        found.interfering = {str(rule): count for rule, count in core.guard.interfering.items() if count}
+    found.interfering = interfering(core)
     return found
 
 
@@ -175,13 +178,23 @@ def _parting(told: list[Told], expected: list[Told], found: Replayed, *, at_end:
     both = min(len(told), len(expected))
     for at in range(found.verdicts, both):
         if told[at] != expected[at]:
-            return f"after {found.pairs} pairs: the record has {_words(expected[at])}, the replay {_words(told[at])}"
+            return (f"after {found.pairs} pairs: the record has {_words(expected[at])}, the replay {_words(told[at])}"
+                    + _judged(told[at:], expected[at:]))
     found.verdicts = both
     if at_end and len(told) != len(expected):
         if len(told) > both:
             return f"after {found.pairs} pairs: the replay has {_words(told[both])}, the record nothing more"
         return f"after {found.pairs} pairs: the record has {_words(expected[both])}, the replay nothing more"
     return ""
+
+
+def _judged(told: list[Told], expected: list[Told]) -> str:
+    """The verdict behind a line that parts, where only one side has one."""
+    mine = next((t for t in told if t[0] == "verdict"), None)
+    theirs = next((t for t in expected if t[0] == "verdict"), None)
+    if mine == theirs:
+        return ""
+    return "".join(f"; {side}: {_words(one)}" for side, one in (("replay", mine), ("record", theirs)) if one)
 
 
 def _words(told: Told) -> str:

@@ -8,7 +8,7 @@ from hvhost.supervisor.runner import Doing, Note, What
 from hvhost.supervisor.runs import ActiveRun, Outcome, Stage
 from hvhost.supervisor.states import LinkState, Move, Permission, Voltage
 from hvhost.wire.frames import Arm, Ok, Refusal, Segment
-from hvhost.wire.vocabulary import Err, Fitted, Inputs
+from hvhost.wire.vocabulary import Err, Fitted, HostRule, Inputs
 from hvhost.words.errors import CommandRefused
 
 if TYPE_CHECKING:
@@ -242,8 +242,14 @@ def close(core: "Core", run: ActiveRun, now_s: float) -> None:
     run.stage = Stage.CLOSED
     core.interlock_opened = False
     core.note(now_s, "run closed", outcome=str(run.outcome), why=run.why, causes=run.causes, host_rule=run.host_rule,
-              voltage=str(core.state.voltage), text=core.discharge.text)
+              interfering=interfering(core), voltage=str(core.state.voltage), text=core.discharge.text)
     core.say(now_s, "note", f"run {run.spec.run_id} closed: {run.outcome}: {run.why}")
+
+
+def interfering(core: "Core") -> dict[str, int]:
+    """Samples that were beyond a limit without being enough to trip, by rule; zeros left out."""
+    counts = core.guard.interfering if core.guard is not None else {}
+    return {HostRule(rule).name.lower().replace("_", " "): count for rule, count in counts.items() if count}
 
 
 def step_text(run: ActiveRun) -> str:
