@@ -14,7 +14,7 @@ from hvhost.guard.verdicts import Severity, Verdict
 from hvhost.wire.vocabulary import HostRule, McuState
 from tests.guard.build import block, cut, limits
 
-# Synthetic circuit-simulation recordings (ngspice, averaged supply with cable, tip resistor, load and converters),
+# Synthetic circuit-simulation recordings (averaged supply with cable, tip resistor, load and converters),
 # cut to 128 samples around the event and given as integer codes.
 SNIPPETS: list[dict[str, Any]] = json.loads((Path(__file__).parent / "snippets.json").read_text())
 
