@@ -47,9 +47,8 @@ def test_a_module_imports_only_from_the_floors_above_its_own(path: Path) -> None
     floor = floor_of(path)
     if not floor:
         return
-    used = {name.split(".")[1] for name in imports_of(ast.parse(path.read_text()))
-            if name.startswith("hvhost.") and (PACKAGE / name.split(".")[1]).with_suffix("").exists()
-            or name.startswith("hvhost.") and (PACKAGE / f"{name.split('.')[1]}.py").exists()}
+    parts = {name.split(".")[1] for name in imports_of(ast.parse(path.read_text())) if name.startswith("hvhost.")}
+    used = {part for part in parts if (PACKAGE / part).is_dir() or (PACKAGE / f"{part}.py").exists()}
     allowed = BESIDE[floor] if floor in BESIDE else set(FLOORS[: FLOORS.index(floor)]) | ALSO.get(floor, set())
     assert used <= allowed | {floor}
 

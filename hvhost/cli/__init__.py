@@ -1,4 +1,4 @@
-"""The commands: one file each, imported only when asked for, so that a stop starts as fast as the interpreter allows."""
+"""The commands: one file each, imported only when asked for, so that a stop starts as fast as it can."""
 
 import sys
 from importlib import import_module

@@ -78,7 +78,7 @@ async def _commission(core: Core, daemon: Daemon, bench: Bench, root: Path, opti
     if core.inputs & Inputs.INTERLOCK:
         raise CommandRefused("the interlock open", "interlock closed", "commission",
                              "open the interlock: settings are written with it open only")
-    if not options.yes and input("write the bench file's values into the MCU? (yes/no) ").strip() != "yes":
+    if not options.yes and not await asyncio.to_thread(_consent):
         print("nothing was written")
         return exits.REFUSED
     who = who_of(options)
@@ -96,6 +96,10 @@ async def _commission(core: Core, daemon: Daemon, bench: Bench, root: Path, opti
         return exits.REFUSED
     print(f"written and read back: checksum {wanted.checksum:08X}, by {who}")
     return exits.PASSED
+
+
+def _consent() -> bool:
+    return input("write the bench file's values into the MCU? (yes/no) ").strip() == "yes"
 
 
 async def _reply(core: Core, number: int) -> str:

@@ -1,4 +1,4 @@
-"""Follows a run from the shell: new event lines as they come, a line of state now and then, Ctrl-C lowers, then cuts."""
+"""Follows a run from the shell: event lines as they come, a line of state now and then, Ctrl-C lowers, then cuts."""
 
 import json
 import signal

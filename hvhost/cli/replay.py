@@ -6,11 +6,11 @@ from collections.abc import Mapping
 
 from hvhost.cli import exits
 from hvhost.cli.runs import DEFAULT_ROOT, root_of
-from hvhost.record.replay import replay
 from hvhost.record.catalogue import find_run
+from hvhost.record.replay import replay
 
-ABOUT = """Gives every recorded input to a fresh core and compares its verdicts and the lines it sends with the record's.
-Passed where they are the same; failed where they part, and it says at which sample."""
+ABOUT = """Gives every recorded input to a fresh core and compares its verdicts and the lines it sends with the
+record's.  Passed where they are the same; failed where they part, and it says at which sample."""
 
 
 def run(argv: list[str]) -> int:

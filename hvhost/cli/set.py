@@ -14,12 +14,13 @@ def run(argv: list[str]) -> int:
     parser.add_argument("amps", metavar="CURRENT", help="such as '1 mA'")
     parser.add_argument("--slew", default="", metavar="RATE", help="such as '500 V/s'")
     options = parser.parse_args(argv)
-    params = {"volts": parse_quantity(options.volts, Dimension.VOLT), "amps": parse_quantity(options.amps, Dimension.AMP)}
+    params = {"volts": parse_quantity(options.volts, Dimension.VOLT),
+              "amps": parse_quantity(options.amps, Dimension.AMP)}
     if options.slew:
         params["slew"] = parse_quantity(options.slew, Dimension.VOLT_PER_SECOND)
     with Bench(options) as bench:
         bench.take_seat()
         done = bench.call("set", **params)
-    print(f"heading for {format_quantity(done['volts'], Dimension.VOLT)}, limit "
-          f"{format_quantity(done['amps'], Dimension.AMP)}, at {format_quantity(done['slew'], Dimension.VOLT_PER_SECOND)}")
+    volts, amps = format_quantity(done["volts"], Dimension.VOLT), format_quantity(done["amps"], Dimension.AMP)
+    print(f"heading for {volts}, limit {amps}, at {format_quantity(done['slew'], Dimension.VOLT_PER_SECOND)}")
     return exits.PASSED

@@ -49,7 +49,8 @@ class Bench:
 
     def call(self, method: str, **params: Any) -> dict[str, Any]:
         """Ask for one method; raises what the daemon raised."""
-        answer = self.client.call(method, {"as": self.who, **({"ticket": self.ticket} if self.ticket else {}), **params})
+        proof = {"ticket": self.ticket} if self.ticket else {}
+        answer = self.client.call(method, {"as": self.who, **proof, **params})
         return answer if isinstance(answer, dict) else {}
 
     def take_seat(self, reason: str = "") -> None:

@@ -29,8 +29,8 @@ if TYPE_CHECKING:
 
 Params = Mapping[str, Any]
 TEXT_MAX = 200_000  # characters of a plan or sheet in base64
-PLAIN = frozenset({"arm", "cancel", "set", "lower", "cut", "reset", "seat.take", "seat.release", "seat.acknowledge", "seat.check",
-                   "commission"})
+PLAIN = frozenset({"arm", "cancel", "set", "lower", "cut", "reset", "seat.take", "seat.release", "seat.acknowledge",
+                   "seat.check", "commission"})
 
 
 class Requests:
@@ -177,7 +177,8 @@ class Requests:
         return {"snapshot": self.station.snapshot().to_json(), "obstacles": arming.obstacles(self.station.core),
                 "stage": str(run.stage) if run else "", "outcome": str(run.outcome) if run and run.outcome else "",
                 "why": run.why if run else "", "run": run.spec.run_id if run else "",
-                "folder": self.station.composer.folder, "arm_input": self.station.core.bench.arm_input, "closing": self.station.closing,
+                "folder": self.station.composer.folder,
+                "arm_input": self.station.core.bench.arm_input, "closing": self.station.closing,
                 "verdict": self.station.composer.verdict_text, "recording": self.station.recording is not None}
 
     def _reply(self, params: Params, who: str) -> dict[str, Any]:
