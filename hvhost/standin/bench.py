@@ -22,7 +22,6 @@ from hvhost.words.errors import UsageFault
 
 TICK_HZ = 10_000  # of every profile
 PIECE_TICKS = 20  # a fault that is to come, or just came, is looked at this often
-EVENTS_KEPT = 1_000  # of the plant, where no truth file takes them
 RESETS = (("mcu-reset", ResetCause.WATCHDOG), ("mcu-brownout", ResetCause.BROWN_OUT))
 
 
@@ -85,8 +84,6 @@ class StandIn:
             self.mcu.advance_to(round(self._inner))
         if faults.version != self._seen:
             self._settle()
-        if self.truth is None and len(self.plant.events) > EVENTS_KEPT:
-            del self.plant.events[:-EVENTS_KEPT]
 
     def feed(self, data: bytes, tick: int | None = None) -> None:
         """Take bytes from the host, now or at a later tick."""
