@@ -69,3 +69,10 @@ def test_the_good_one_is_read() -> None:
     """The body from which the malformed ones are made is itself good."""
     assert decode_block(GOOD, "uu").codes == (0x6F66, 0x626F)
     assert decode_block(GOOD, "uu").pairs == 1
+
+
+@pytest.mark.parametrize("pairs", [1, 8, 32, 63, 64])
+def test_blocks_of_each_length(pairs: int) -> None:
+    """From one pair to sixty-four."""
+    block = Block(1, 2, 3, 4, 5, 1, 6, 7, 8, 9, tuple(range(2 * pairs)))
+    assert decode_block(encode_block(block, "uu"), "uu") == block

@@ -97,3 +97,14 @@ def test_noise_hardly_ever_passes() -> None:
     """A hundred thousand lines of seeded noise give no body."""
     noise = random.Random(20_240_501).randbytes(2_000_000)
     assert not [item for item in LineReader().feed(noise) if isinstance(item, bytes)]
+
+
+def test_the_longest_line_may_arrive_without_its_end() -> None:
+    """511 bytes still wait for their LF; 512 are already too long."""
+    longest = seal(b"y" * 499)
+    reader = LineReader()
+    assert reader.feed(longest[:-1]) == []
+    assert reader.feed(b"\n") == [b"y" * 499]
+    assert reader.feed(b"z" * LINE_MAX) == []
+    assert reader._rest == b""
+    assert reader.feed(b"\n" + longest) == [Garbled("too long", LINE_MAX), b"y" * 499]

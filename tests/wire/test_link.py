@@ -155,11 +155,14 @@ def test_requests_come_back_answered_in_order() -> None:
     """Each ticket returns once, with its request and answer."""
     link = greeted()
     tickets = [link.request(Info(page=3)), link.request(Again(event=1))]
+    assert link.waiting_requests == 2
     (first,) = heard(link.take_output(0.0))
+    assert link.waiting_requests == 2
     assert first == Info(n=10, session=S, page=3)
     (answered,) = link.receive(say("ok 10 info 3 x=1"), 0.0)
     assert isinstance(answered, Answered)
     assert answered.ticket == tickets[0]
+    assert link.waiting_requests == 1
     (second,) = heard(link.take_output(0.0))
     assert second == Again(n=11, session=S, event=1)
     (refused,) = link.receive(say("err 11 again gone"), 0.0)
@@ -514,11 +517,12 @@ def test_a_link_goes_on_from_its_numbers() -> None:
     link.request(Info(page=0))
     link.take_output(0.0)
     link.receive(say("ok 10 info 0 a=1"), 0.0)
+    assert link.renew(31, 0.0)
     link.cut(0, 0.0)
     link.receive(say("ok 1 cut"), 0.0)
-    link.renew(31, 0.0)
     assert link.greeting is not None
     twin = Link.resumed(0.0, link.greeting, link.numbers())
+    assert not twin.renew(63, 0.06)
     assert twin.numbers() == link.numbers()
     link.receive(block_line(block(100)) * 2, 0.0)  # the twin has no cut to confirm
     for one in (link, twin):

@@ -95,6 +95,7 @@ def test_answers_that_fit_nothing() -> None:
     assert requests.answer(Ok(n=1, verb="get")) is None
     assert requests.answer(Ok(n=1, verb="inf")) is None
     assert not requests.expected(Ok(n=5, verb="info"))
+    assert not requests.expected(Ok(n=2, verb="info"))
     assert requests.answer(Ok(n=1, verb="info")) is not None
     assert requests.expected(Ok(n=1, verb="info"))
     assert not requests.expected(Ok(n=1, verb="get"))

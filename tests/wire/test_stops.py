@@ -170,3 +170,16 @@ def test_a_new_cut_starts_over() -> None:
     assert stops.cut(0, 1.0) == 2
     assert stops.cut_state is CutState.SENT
     assert stops.next_number == 3
+
+
+def test_the_deadline_is_the_repeat_or_the_escalation() -> None:
+    """A lower wakes its caller every 20 ms and at 100 ms; a cut only for its repeats."""
+    stops = Stops(7, 1)
+    stops.lower(1.0)
+    stops.due(1.0)
+    assert stops.deadline() == 1.0 + REPEAT_S
+    stops.due(1.09)
+    assert stops.deadline() == 1.0 + ESCALATE_S
+    stops.cut(0, 2.0)
+    stops.due(2.09)
+    assert stops.deadline() == 2.09 + REPEAT_S
