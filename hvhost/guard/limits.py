@@ -90,9 +90,9 @@ class GuardLimits:
 
 FOLLOW_SHARE = 0.05  # the part of a ramp in which the readback must begin to follow
 MISSING_SHARE = 0.05  # of the highest voltage: a set-point from which a readback at zero is missing
-# The load may draw up to twice what it drew before (a load step into current limit) from 0.8 of the stated capacitance.
-# Chosen on labelled circuit simulations: without it mains dips and crossovers trip by the hundred; with it one or two of
-# 73 full arcs, of a loaded supply into a large capacitance, are left to the overcurrent rules and the MCU.
+# The load may draw twice what it drew before (a load step into current limit) from 0.8 of the stated capacitance.
+# Chosen on labelled circuit simulations: without it mains dips and crossovers trip by the hundred in two hours; with it
+# the host misses one or two of 73 full arcs, of a loaded supply with a large capacitance, which are the MCU's alone.
 CAPACITANCE_LEAST = 0.4
 CONTACTS: tuple[tuple[Fitted, Inputs], ...] = (
     (Fitted.EMERGENCY, Inputs.EMERGENCY), (Fitted.GROUND_SWITCH, Inputs.GROUND_OPEN),
