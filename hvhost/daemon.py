@@ -14,7 +14,7 @@ import pwd
 import secrets
 import signal
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Coroutine
 from pathlib import Path
 from typing import Any
 
@@ -24,7 +24,7 @@ from hvhost.ports.descriptor import DescriptorPort
 from hvhost.ports.opening import open_port
 from hvhost.publish.conversation import Peer
 from hvhost.publish.local import LocalServer
-from hvhost.publish.outlet import Outlet, Publisher
+from hvhost.publish.outlet import Host, Outlet, Publisher
 from hvhost.publish.places import socket_path
 from hvhost.publish.station import CloseJob, Station, end_recording
 from hvhost.record.catalogue import unclosed
@@ -39,6 +39,8 @@ from hvhost.words.errors import CannotConnect, HvhostError
 SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
 LAST_LOWER_S = 12.0  # how long the end waits for a lowering
+SERVICE_AGAIN_S = 5.0
+ATTACHED: tuple[Callable[[Bench, Host], None], ...] = ()  # each makes its outlet where the bench file names it
 CLOSE_S = 600.0  # exporting and repacking a day of samples takes minutes
 SLACK_S = 0.0005  # a deadline this much earlier than the set timer is not worth another timer
 
@@ -66,6 +68,10 @@ class Daemon:
         self._timer: asyncio.TimerHandle | None = None
         self._group: asyncio.TaskGroup | None = None
         self._tickets: dict[int, set[str]] = {}
+        self._services: list[tuple[str, Callable[[], Coroutine[Any, Any, None]]]] = []
+        self._tasks: list[asyncio.Task[None]] = []
+        for attach in ATTACHED:
+            attach(bench, self)
 
     # ------------------------------------------------------------ life
 
@@ -87,12 +93,14 @@ class Daemon:
                 self._attach(port)
                 gc.collect()
                 gc.freeze()  # a full collection of what lives for ever would stall the loop
-                tasks = [group.create_task(self._publish()), group.create_task(self._reopen()),
-                         group.create_task(self._recover())]
+                self._tasks = [group.create_task(self._publish()), group.create_task(self._reopen()),
+                               group.create_task(self._recover())]
+                for name, service in self._services:
+                    self.add_service(name, service)
                 self.ready.set()
                 await self._stop.wait()
                 await self._lower_last()
-                for task in tasks:
+                for task in self._tasks:
                     task.cancel()
         finally:
             await self.server.close()
@@ -204,6 +212,29 @@ class Daemon:
         while True:
             self.publisher.publish_nowait(self.station.snapshot(self.publisher.views()))
             await asyncio.sleep(SNAPSHOT_S)
+
+    def ask(self, method: str, params: dict[str, Any], who: str) -> dict[str, Any]:
+        """Carry out one request of an outlet."""
+        try:
+            return self.station.handle(method, params, who)
+        finally:
+            self._schedule()
+
+    def add_service(self, name: str, service: Callable[[], Coroutine[Any, Any, None]]) -> None:
+        """Run a task of an outlet beside everything else; its failure is told and never ends the daemon."""
+        if self._group is None:
+            self._services.append((name, service))
+        else:
+            self._tasks.append(self._group.create_task(self._serve(name, service), name=name))
+
+    async def _serve(self, name: str, service: Callable[[], Coroutine[Any, Any, None]]) -> None:
+        while True:
+            try:
+                await service()
+                return
+            except Exception as error:  # an outlet's fault stays with the outlet
+                self.say(f"{name}: {type(error).__name__}: {error}; tried again in {SERVICE_AGAIN_S:g} s")
+            await asyncio.sleep(SERVICE_AGAIN_S)
 
     def add_outlet(self, outlet: Outlet) -> None:
         """Offer every snapshot to one more outlet."""

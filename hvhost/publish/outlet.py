@@ -6,9 +6,9 @@ from the others and from the daemon; the protective path and the recorder never 
 """
 
 from collections import deque
-from collections.abc import Callable
+from collections.abc import Callable, Coroutine
 from dataclasses import dataclass
-from typing import Protocol
+from typing import Any, Protocol
 
 from hvhost.publish.snapshot import OutletView, Snapshot
 
@@ -118,3 +118,22 @@ class Publisher:
         except Exception:
             return OutletView(name=outlet.name, failed=failed + 1)
         return OutletView(name=seen.name, dropped=seen.dropped, failed=seen.failed + failed, clients=seen.clients)
+
+
+class Host(Protocol):
+    """What the daemon offers to an outlet that it attaches: requests, snapshots, a task of its own, a voice."""
+
+    def ask(self, method: str, params: dict[str, Any], who: str) -> dict[str, Any]:
+        """Carry out one request (see `publish.requests`); stops are on the wire when this returns.
+
+        Raises `HvhostError` where it is refused; nothing was done then.
+        """
+
+    def add_outlet(self, outlet: Outlet) -> None:
+        """Offer every snapshot to this outlet."""
+
+    def add_service(self, name: str, service: Callable[[], Coroutine[Any, Any, None]]) -> None:
+        """Run ``service()`` as a task until the daemon ends; where it fails it is told, and begun anew after a pause."""
+
+    def say(self, text: str) -> None:
+        """Tell the operator of the daemon, in one line."""
