@@ -22,6 +22,7 @@ from hvhost.bench.model import Bench
 from hvhost.ports.clock import SystemClock
 from hvhost.ports.descriptor import DescriptorPort
 from hvhost.ports.opening import open_port
+from hvhost.ports.terminals import may_reopen
 from hvhost.publish.conversation import Peer
 from hvhost.publish.local import LocalServer
 from hvhost.publish.outlet import Host, Outlet, Publisher
@@ -58,7 +59,8 @@ class Daemon:
             runs_root=runs_root or Path(bench.runs_folder).expanduser(), openers=self._open_recorder,
             write=self._write, on_close=self._close_later, port=self.device, rehearsal=rehearsal)
         self.publisher = Publisher()
-        self.server = LocalServer(socket_path(bench.name, socket), self._handle, peer_gone=self._peer_gone)
+        self.server = LocalServer(socket_path(bench.name, socket), self._handle, peer_gone=self._peer_gone,
+                                  note=self._client_note)
         self.publisher.add(self.server)
         self.ready = asyncio.Event()
         self._port: DescriptorPort | None = None
@@ -186,6 +188,8 @@ class Daemon:
             while self._port is None:
                 await asyncio.sleep(REOPEN_S[min(attempt, len(REOPEN_S) - 1)])
                 attempt += 1
+                if not may_reopen(self.device):
+                    continue  # somebody's terminal may have taken the number of the one that was lost
                 with contextlib.suppress(CannotConnect):
                     self._attach(open_port(self.device, self.bench.port.baud))
                     self.say(f"port {self.device} is back")
@@ -261,6 +265,10 @@ class Daemon:
     def _peer_gone(self, peer: Peer) -> None:
         for ticket in self._tickets.pop(peer.number, ()):
             self.station.handle("seat.release", {"ticket": ticket}, "a connection that closed")
+
+    def _client_note(self, text: str) -> None:
+        """Who came and went stands in the record of a run; on the screen it would drown what matters."""
+        self.station.core.note(self.clock.now_s(), "client", text=text)
 
     # ------------------------------------------------------------ records
 

@@ -66,6 +66,7 @@ def clear_boot_latch(rig: Rig) -> None:
 
 def press_when_asked(rig: Rig, done: threading.Event) -> None:
     """Press the stand-in's arm input once for each open request."""
+    pressed_once = False
     try:
         with Client.connect(rig.socket) as bench:
             pressed = False
@@ -74,6 +75,8 @@ def press_when_asked(rig: Rig, done: threading.Event) -> None:
                 requested = shot.get("permission") == "requested"
                 if requested and not pressed:
                     rig.press()
+                    pressed_once = True
                 pressed = requested
     except (HvhostError, OSError) as error:
-        print(f"hvhost: the press could not be simulated: {error}", file=sys.stderr)
+        if not pressed_once and not done.is_set():
+            print(f"hvhost: the press could not be simulated: {error}", file=sys.stderr)

@@ -4,6 +4,7 @@ Only here may the press at the bench be simulated, because the port is one that 
 """
 
 import contextlib
+import ctypes
 import os
 import shutil
 import signal
@@ -19,6 +20,13 @@ from hvhost.words.errors import CannotConnect
 
 START_S = 20.0
 END_S = 30.0
+PR_SET_PDEATHSIG = 1
+
+
+def end_with_parent() -> None:
+    """Ask the kernel to end this child when its parent dies, however it dies (Linux; elsewhere nothing happens)."""
+    with contextlib.suppress(OSError, AttributeError):
+        ctypes.CDLL(None).prctl(PR_SET_PDEATHSIG, signal.SIGTERM)
 
 
 class Rig:
@@ -34,6 +42,9 @@ class Rig:
         self._children: list[subprocess.Popen[str]] = []
 
     def __enter__(self) -> "Rig":
+        for number in (signal.SIGTERM, signal.SIGHUP):  # a closed terminal must not leave anything behind
+            with contextlib.suppress(ValueError):
+                signal.signal(number, _leave)
         try:
             device = self._start_standin()
             arguments = ["serve", str(self._bench), "--port", device, "--socket", self.socket, "--standin"]
@@ -77,6 +88,7 @@ class Rig:
         child = subprocess.Popen(
             [sys.executable, "-m", "hvhost", *arguments], stdin=subprocess.DEVNULL,
             stdout=subprocess.PIPE if piped else log, stderr=log, text=True, start_new_session=True,
+            preexec_fn=end_with_parent,
             env={**os.environ, "PYTHONUNBUFFERED": "1"})
         log.close()
         self._children.append(child)
@@ -111,3 +123,7 @@ class Rig:
     def _last_words(self, name: str) -> str:
         lines = (self.folder / f"{name}.log").read_text(errors="replace").strip().splitlines()
         return lines[-1] if lines else "it ended without a word"
+
+
+def _leave(number: int, frame: object) -> None:
+    raise SystemExit(128 + number)

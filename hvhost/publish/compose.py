@@ -7,7 +7,6 @@ from hvhost.bench.cautions import BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE
 from hvhost.plan.program import HoldStep
 from hvhost.publish.snapshot import (
     EVENTS_KEPT,
-    TREND_KEPT,
     ArmView,
     EventLine,
     HoldView,
@@ -24,9 +23,9 @@ from hvhost.publish.snapshot import (
     Severity,
     Snapshot,
     StopState,
-    TrendBucket,
     VoltageState,
 )
+from hvhost.publish.trend import TrendKeeper
 from hvhost.samples.blocks import Flags, SampleBlock
 from hvhost.supervisor import arming
 from hvhost.supervisor import states as st
@@ -34,7 +33,6 @@ from hvhost.supervisor.core import Core
 from hvhost.supervisor.runs import ActiveRun, Stage
 from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState, cause_words
 
-TREND_BUCKET_S = 0.5
 REQUEST_S = 30.0
 FLAG_WORDS = {Flags.LIMIT_V: "voltage at converter limit", Flags.LIMIT_I: "current at converter limit",
               Flags.REVERSED_V: "voltage reversed", Flags.REVERSED_I: "current reversed", Flags.STALE: "stale",
@@ -63,25 +61,6 @@ INPUTS: tuple[tuple[Inputs, Fitted | None, str, str, str, bool | None], ...] = (
 )
 
 
-class TrendKeeper:
-    """Gathers minima and maxima of the readbacks in buckets; bounded."""
-
-    def __init__(self) -> None:
-        self.buckets: deque[TrendBucket] = deque(maxlen=TREND_KEPT)
-        self._open: list[float] | None = None  # end, v_min, v_max, i_min, i_max
-
-    def take(self, now_s: float, v_min: float, v_max: float, i_min: float, i_max: float) -> None:
-        """Add one block's extremes, SI."""
-        bucket = self._open
-        if bucket is not None and now_s >= bucket[0]:
-            self.buckets.append(TrendBucket(*bucket))
-            bucket = None
-        if bucket is None:
-            self._open = [now_s + TREND_BUCKET_S, v_min, v_max, i_min, i_max]
-            return
-        bucket[1:] = [min(bucket[1], v_min), max(bucket[2], v_max), min(bucket[3], i_min), max(bucket[4], i_max)]
-
-
 class Composer:
     """Makes snapshots of one core; ``utc_of(now_s)`` gives UTC nanoseconds of a monotonic time."""
 
@@ -102,7 +81,7 @@ class Composer:
         if sample is None or sample is self._sample:
             return
         self._sample = sample
-        self.trend.take(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
+        self.trend.add(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
                         core.amps(min(sample.i)), core.amps(max(sample.i)))
 
     def snapshot(self, now_s: float, outlets: tuple[OutletView, ...] = ()) -> Snapshot:
@@ -127,7 +106,7 @@ class Composer:
             ceiling_volts=run.spec.program.v_highest if run and run.stage is not Stage.CLOSED else bench.v_max,
             trip_amps=_trip_amps(core), inputs=self._inputs(), run=self._run(run), arm=self._arm(run, now_s),
             pause_s=run.runner.pause_left_s() if run else None, warning_s=self._warning(), seat=seat_words(core),
-            events=self._events(), trend=tuple(self.trend.buckets), next_acts=next_acts(core),
+            events=self._events(), trend=self.trend.buckets(), next_acts=next_acts(core),
             cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text="",
             bleeds_passed=self._bleeds(), verdict_text=self.verdict_text, quality=self._quality(),
             record=self.record, outlets=outlets)
@@ -240,7 +219,7 @@ def latched_words(core: Core) -> tuple[str, ...]:
 
 def power_words(core: Core) -> str:
     """What stands behind zero: never 'off' where the supply stays powered."""
-    if core.state.permission in st.LIVE:
+    if core.state.permission is not st.Permission.IDLE:
         return ""
     if core.bench.programming_only:
         return "programmed to zero, supply still powered"

@@ -133,7 +133,7 @@ class Host(Protocol):
         """Offer every snapshot to this outlet."""
 
     def add_service(self, name: str, service: Callable[[], Coroutine[Any, Any, None]]) -> None:
-        """Run ``service()`` as a task until the daemon ends; where it fails it is told, and begun anew after a pause."""
+        """Run ``service()`` as a task until the daemon ends; its failure is told, and it begins anew after a pause."""
 
     def say(self, text: str) -> None:
         """Tell the operator of the daemon, in one line."""
