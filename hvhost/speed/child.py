@@ -55,6 +55,11 @@ class Device:
         os.close(self.fd)
 
     @property
+    def process(self) -> int:
+        """The child's process number."""
+        return self._child.pid
+
+    @property
     def answers(self) -> int:
         """The descriptor on which answers come."""
         return self._from.fileno()

@@ -1,12 +1,14 @@
 """B2: from the bytes of an offending sample to the cut on the wire, beside a bare echo of the same line.
 
-Both sides run on one event loop through the port that the daemon uses; the far end is a process of its own and times
-what it asks: from its write to the first byte that comes back.  Before every trip the core is put back to where it
-held the voltage, so each one is the first.
+Both sides run on one event loop through the port that the daemon uses; the far end is a process of its own, on another
+core where there is one, and times what it asks: from its write to the first byte that comes back.  Before every trip
+the core is put back to where it held the voltage, so each one is the first; the same is done before every echo, so
+that both find the processor's caches in the same state.
 """
 
 import asyncio
 import copy
+import gc
 import os
 from collections.abc import Callable
 from typing import Any
@@ -29,7 +31,14 @@ OVERCURRENT = 30_000  # code: far above every limit, and no collapse of the volt
 def measure(setting: Setting) -> list[Line]:
     """Return the lines of B2: at ordinary priority, and in real time where that is permitted."""
     bench = _Trips(setting)
+    cores = os.sched_getaffinity(0)
     try:
+        if len(cores) > 1:
+            own, far = sorted(cores)[:2]
+            os.sched_setaffinity(0, {own})
+            os.sched_setaffinity(bench.device.process, {far})
+        gc.collect()
+        gc.freeze()  # as the daemon does
         sides = asyncio.run(bench.take(setting, "ordinary priority"))
         lines = [_median(sides, 3.5, "median, ordinary priority")]
         if bench.device.fifo(DEVICE_FIFO) and set_fifo(HOST_FIFO):
@@ -42,6 +51,8 @@ def measure(setting: Setting) -> list[Line]:
             setting.say("SCHED_FIFO is not permitted here: its two bounds are not judged")
         return lines
     finally:
+        gc.unfreeze()
+        os.sched_setaffinity(0, cores)
         bench.close()
 
 
@@ -108,15 +119,14 @@ class _Trips:
             trips = k % 4 in (0, 3)
             act[0] = station.feed if trips else port.write_nowait
             (ours if trips else other).append(
-                tuple([await self._one(trips) for _ in range(setting.per_block)]))
+                tuple([await self._one() for _ in range(setting.per_block)]))
             setting.say(f"{name}, block {k // 2 + 1} of {setting.blocks}")
         port.close()
         os.close(port.fd)
         return Sides(ours=tuple(ours), other=tuple(other))
 
-    async def _one(self, trips: bool) -> float:
-        if trips:
-            self.again()
+    async def _one(self) -> float:
+        self.again()
         loop, done = asyncio.get_running_loop(), asyncio.Event()
         loop.add_reader(self.device.answers, done.set)
         self.device.ask(self.line)
