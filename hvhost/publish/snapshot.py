@@ -205,6 +205,34 @@ class RecordView:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class LoopView:
+    """How late the daemon's event loop was (see `publish.stalls`), in seconds.
+
+    ``longest_s`` and ``p999_s`` since it began, ``recent_s`` in about the last hour, ``run_s`` since the run was
+    opened; ``own_s`` is the most of a lateness that this process itself can have caused; ``turn_s`` the longest turn,
+    ``piece_s`` the longest single piece of work and ``piece`` its name.
+    """
+
+    longest_s: float = 0.0
+    recent_s: float = 0.0
+    p999_s: float = 0.0
+    own_s: float = 0.0
+    run_s: float = 0.0
+    turn_s: float = 0.0
+    piece: str = ""
+    piece_s: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class DiskView:
+    """Room on the disk of the runs folder, in bytes; below ``floor_b`` no run is opened and a running one is lowered."""
+
+    free_b: float = 0.0
+    floor_b: float = 0.0
+    ok: bool = True
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class OutletView:
     """What one outlet could not deliver (S12)."""
 
@@ -268,6 +296,8 @@ class Snapshot:
     quality: LinkQuality = LinkQuality()
     record: RecordView = RecordView()
     outlets: tuple[OutletView, ...] = ()
+    loop: LoopView = LoopView()
+    disk: DiskView = DiskView()
 
     def to_json(self) -> dict[str, Any]:
         """Return plain values; not-finite numbers become None."""
