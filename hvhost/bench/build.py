@@ -2,6 +2,7 @@
 
 from typing import Any
 
+from hvhost.bench.broker import broker_of
 from hvhost.bench.document import (
     BenchFile,
     CurrentMonitorBlock,
@@ -127,4 +128,5 @@ def bench_of(f: BenchFile, *, file: str, text: str, sha256: str, findings: tuple
         port=Port(device=f.port.device, baud=f.port.baud), runs_folder=f.runs.folder,
         slow_channels=tuple(SlowChannel(name=c.name, kind=c.kind.value, address=c.address, query=c.query,
                                         every_s=c.every, uncertainty=c.uncertainty) for c in f.slow_channels),
+        broker=broker_of(f.mqtt, f.bench),
         file=file, text=text, sha256=sha256, findings=findings, **_supply(f), **_wiring(f))

@@ -10,6 +10,7 @@ from typing import Annotated
 
 from pydantic import Field
 
+from hvhost.bench.broker import MqttBlock
 from hvhost.bench.model import CutMeans, GroundDevice
 from hvhost.words.fields import (
     Amps,
@@ -360,3 +361,4 @@ class BenchFile(Block):
     limits: LimitsBlock
     arcs: ArcsBlock
     slow_channels: tuple[SlowChannelBlock, ...] = ()
+    mqtt: MqttBlock | None = None

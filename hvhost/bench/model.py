@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 from datetime import date
 from enum import StrEnum
 
+from hvhost.bench.broker import Broker
 from hvhost.bench.scaling import Calibration, Channel, Scale
 from hvhost.wire.settings import Settings
 from hvhost.wire.vocabulary import Fitted
@@ -154,6 +155,7 @@ class Bench:
     text: str
     sha256: str
     findings: tuple[Finding, ...]
+    broker: Broker | None = None
 
     def settings(self) -> Settings:
         """The MCU settings that this bench asks for, in codes."""
