@@ -49,12 +49,14 @@ class Log:
 
     def __init__(self, fd: int = 2, style: Style = Style.PLAIN, *, bench: str = "", prefixed: bool = False,
                  utc_ns: Callable[[], int] = time.time_ns, lines_max: int = LINES_MAX) -> None:
-        self.style, self.bench, self.dropped = style, bench, 0
+        self.style, self.bench = style, bench
         self._fd, self._utc_ns = fd, utc_ns
         self._prefixed = prefixed or style is Style.JOURNAL
         self._lines: deque[bytes] = deque()
         self._lines_max = lines_max
-        self._untold = 0
+        self._crowded_out = 0  # the caller's count
+        self._unwritten = 0  # the thread's
+        self._told = 0
         self._wake, self._idle = threading.Event(), threading.Event()
         self._idle.set()
         self._thread: threading.Thread | None = None
@@ -68,9 +70,9 @@ class Log:
         lines = self._lines
         if len(lines) >= self._lines_max:
             lines.popleft()
-            self._drop()
-        elif self._untold:
-            missing, self._untold = self._untold, 0
+            self._crowded_out += 1
+        elif missing := self.dropped - self._told:
+            self._told += missing
             lines.append(self._line("attention", f"{missing} lines of the log were dropped: nobody read them", {}))
         lines.append(self._line(level, text, fields))
         self._idle.clear()
@@ -83,9 +85,10 @@ class Log:
         """Wait a little for what is queued; what a reader does not take by then is lost with the process."""
         self._idle.wait(wait_s)
 
-    def _drop(self) -> None:
-        self.dropped += 1
-        self._untold += 1
+    @property
+    def dropped(self) -> int:
+        """Lines that nobody will read."""
+        return self._crowded_out + self._unwritten
 
     def _line(self, level: str, text: str, fields: Mapping[str, object]) -> bytes:
         text = printable(text)
@@ -109,7 +112,7 @@ class Log:
                 except IndexError:  # the other side dropped it meanwhile
                     break
                 if not self._written(line):
-                    self._drop()
+                    self._unwritten += 1
             self._idle.set()
 
     def _written(self, line: bytes) -> bool:

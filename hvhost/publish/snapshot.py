@@ -225,7 +225,7 @@ class LoopView:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class DiskView:
-    """Room on the disk of the runs folder, in bytes; below ``floor_b`` no run is opened and a running one is lowered."""
+    """Room on the disk of the runs folder, in bytes: below ``floor_b`` no run is opened, an open one is lowered."""
 
     free_b: float = 0.0
     floor_b: float = 0.0

@@ -57,13 +57,14 @@ class Spread:
             self.longest_s = seconds
 
     def quantile(self, share: float) -> float:
-        """The upper edge of the bucket below which this share lies, at most the longest; 0 where nothing was counted."""
+        """The upper edge of the bucket below which this share lies, at most the longest; 0 where there is none."""
         wanted = share * self.count
         seen = 0
         for at, count in enumerate(self._counts):
             seen += count
             if seen >= wanted and seen:
-                return min(self.longest_s, FINEST_S * 2.0 ** (at / PER_OCTAVE))
+                edge_s: float = FINEST_S * 2.0 ** (at / PER_OCTAVE)
+                return min(self.longest_s, edge_s)
         return self.longest_s
 
 
