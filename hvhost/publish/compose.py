@@ -27,11 +27,12 @@ from hvhost.publish.snapshot import (
 )
 from hvhost.publish.trend import TrendKeeper
 from hvhost.samples.blocks import Flags, SampleBlock
-from hvhost.supervisor import arming
 from hvhost.supervisor import states as st
 from hvhost.supervisor.core import Core
-from hvhost.supervisor.runs import ActiveRun, Stage
-from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState, cause_words
+from hvhost.supervisor.driving import step_text
+from hvhost.supervisor.runs import ActiveRun, Stage, told_causes
+from hvhost.supervisor.stopping import cut_words
+from hvhost.wire.vocabulary import Fitted, Inputs, McuState
 
 REQUEST_S = 30.0
 FLAG_WORDS = {Flags.LIMIT_V: "voltage at converter limit", Flags.LIMIT_I: "current at converter limit",
@@ -99,7 +100,7 @@ class Composer:
             polarity=bench.polarity, rehearsal=self.rehearsal, port=self.port,
             link=LinkState(core.state.link.value), link_text=core.link_text, permission=permission, phase=phase,
             latched=latched_words(core), voltage=self._voltage(), voltage_text=core.discharge.text,
-            power_words=power_words(core), stop=StopState(core.cut_words(now_s)),
+            power_words=power_words(core), stop=StopState(cut_words(core, now_s)),
             set_volts=bench.voltage.program.value(sample.v_word) if sample else None,
             set_amps=bench.current.program.value(sample.i_word) if sample else None, reading=reading,
             block_s=core.block_span_s or 0.032, lease_s=bench.lease_s, volts_full=bench.v_max, amps_full=bench.i_max,
@@ -167,7 +168,7 @@ class Composer:
         return RunView(
             run_id=spec.run_id, kind=spec.kind, plan=spec.plan, specimen=spec.specimen, operator=spec.operator,
             step_number=min(runner.at + 1, len(spec.program.steps)), step_total=len(spec.program.steps),
-            step_name=step.name if step else "", step_text=arming.step_text(run), elapsed_s=elapsed,
+            step_name=step.name if step else "", step_text=step_text(run), elapsed_s=elapsed,
             remaining_s=max(0.0, spec.program.duration_s - elapsed) if spec.kind == "plan" else None, hold=hold,
             next_reading_s=runner.next_reading_s() if run.stage is Stage.LIVE else None, arcs=run.arcs,
             arcs_allowed=spec.program.reaction.count if spec.program.reaction else None, folder=self.folder,
@@ -213,8 +214,7 @@ class Composer:
 
 def latched_words(core: Core) -> tuple[str, ...]:
     """The latched causes in words, the host's with its rule."""
-    rule = HostRule(core.host_rule).name.lower().replace("_", " ") if core.host_rule in set(HostRule) else "?"
-    return tuple(f"host: {rule}" if word == "host" else word for word in cause_words(core.state.latched))
+    return told_causes(core.state.latched, core.host_rule)
 
 
 def power_words(core: Core) -> str:

@@ -189,7 +189,8 @@ class Station:
     def record_failed(self, reason: str) -> None:
         """The recorder cannot go on: the second table lowers whatever runs."""
         self.failed = reason
-        self.core.recorder_ready = False
+        self.core.recorder_failed(self.clock.now_s())
+        self.flush()
 
     def after(self) -> None:
         """What follows every step: anchors, evidence, and the close of a run that is over."""

@@ -4,26 +4,28 @@
 cut before anything else is looked at.  The first half of `_block` is the protective call chain (judge, stop, renew);
 everything after the yield - journal, runner, discharge, screens' figures - follows it.  Nothing here waits, logs to
 a file or reads a clock; the same core runs on a serial port, under a virtual clock, and on a recording.
+
+What belongs together lives beside this: `hearing` (events and answers), `linking` (greeting and losing an MCU),
+`arming` and `driving` (a run), `stopping` (decided stops), `commands` (what people ask).
 """
 
 from collections import deque
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import Any
 
 from hvhost.bench.model import Bench
-from hvhost.bench.settings_from import compare_settings
 from hvhost.guard.guard import Guard
-from hvhost.guard.limits import limits_of
 from hvhost.guard.verdicts import Severity, Verdict
 from hvhost.samples.assembler import Assembler
-from hvhost.samples.blocks import Orientation, SampleBlock
-from hvhost.supervisor import arming, hearing
+from hvhost.samples.blocks import SampleBlock
+from hvhost.supervisor import arming, commands, driving, hearing, linking, stopping
+from hvhost.supervisor.aftermath import AftermathReader
+from hvhost.supervisor.catchup import EventBook
 from hvhost.supervisor.discharge import Chain, Discharge
 from hvhost.supervisor.evidence import Evidence
-from hvhost.supervisor.journal import Journal, NoJournal
-from hvhost.supervisor.runner import Measured
-from hvhost.supervisor.runs import ActiveRun, Outcome, Stage
+from hvhost.supervisor.notes import Measured
+from hvhost.supervisor.runs import ActiveRun, Outcome, Stage, rule_word
 from hvhost.supervisor.seat import Seat
 from hvhost.supervisor.states import (
     LIVE,
@@ -38,96 +40,86 @@ from hvhost.supervisor.states import (
     moved,
     owed,
 )
-from hvhost.wire.events import BlockIn, CutState, Ended, Greeted, LinkEvent
-from hvhost.wire.frames import Block, McuEvent, encode_answer
+from hvhost.supervisor.telling import Teller
+from hvhost.wire.events import BlockIn, LinkEvent
+from hvhost.wire.frames import Block
 from hvhost.wire.greeting import Greeting
 from hvhost.wire.link import Link
 from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState
 from hvhost.words.findings import Finding
 
-LOG_KEPT = 200
-CONFIRM_S = 1.0  # a cut not confirmed after this is told as such (S7)
-RELINK_S = 0.5  # pause before a new session is tried
+LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least this often
+ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
+WRAP, HALF = 1 << 32, 1 << 31
 
 
-@dataclass(frozen=True, slots=True)
-class LogLine:
-    """One line for people: number, host monotonic time, how loud ('note', 'attention', 'trip'), text."""
-
-    number: int
-    now_s: float
-    severity: str
-    text: str
-
-
-class Core:
+class Core(Teller):
     """Everything that decides about one bench."""
 
     def __init__(self, bench: Bench, now_s: float, sessions: Callable[[], int]) -> None:
-        self.bench = bench
-        self.journal: Journal = NoJournal()
+        super().__init__()
+        self.bench, self._sessions = bench, sessions
         self.state = State()
         self.seat = Seat()
         self.run: ActiveRun | None = None
-        self.log: deque[LogLine] = deque(maxlen=LOG_KEPT)
         self.evidence = Evidence()
+        self.aftermath = AftermathReader()
+        self.events = EventBook()
+        self.late = False  # the event being heard was told late: it moves no state
+        self.causes_asked = -1  # the last event when unknown causes were asked for
         self.settings_findings: tuple[Finding, ...] = ()
         self.greeting: Greeting | None = None
         self.link: Link | None = None
         self.link_text = "not connected"
+        self.next_stop = 1
+        self.relink_at: float | None = None
+        self.silent = False  # no line for a lease, not yet believed
         self.assembler: Assembler | None = None
         self.guard: Guard | None = None
         self.sample: SampleBlock | None = None
         self.sampled = False  # a block of this session was judged
         self.measured: Measured | None = None
-        self.inputs = 0
-        self.last_event = 0
+        self.inputs = self.inputs_tick = 0
         self.arm_count = 0
         self.host_rule = 0
         self.recorder_ready = True
-        self.asked_again = -1  # the last event when missing events were asked for
         self.interlock_opened = True  # since the last run
-        self.block_s = now_s
-        self.stop_decided_s: float | None = None
+        self.block_s = self.awake_s = self._stepped_s = now_s
+        self.stop_decided_s: float | None = None  # of a cut that is not confirmed
         self.warning_ends_tick: int | None = None
-        self.replies: dict[int, str] = {}
         self.arm_open_s: float | None = None
         self.block_span_s = 0.0
-        self._sessions = sessions
-        self._next_stop = 1 + sessions() % (1 << 30)  # random: an answer left in a buffer must not match
-        self._relink_at: float | None = None
-        self._log_number = 0
+        self.arcs_judged: deque[int] = deque(maxlen=ARCS_KEPT)  # sample indices, low 31 bits
+        self.last_tick: int | None = None  # of the last block, as the wire counts
+        self._t_s = 0.0  # ticks passed since the greeting, in seconds; runs on through wraps and runs
         self._v_gain = abs(bench.voltage.monitor.gain)
         self._i_gain = abs(bench.current.monitor.gain)
         self._v_zero = self._i_zero = 0.0
         self.discharge = Discharge(Chain(
             touch_v=bench.touch_v, bleed_s=bench.bleed_s, bleeds=bench.bleeds,
-            down_slew_v_per_s=bench.down_slew_v_per_s, u_zero_v=bench.voltage.monitor.u(0.0),
+            slew_v_per_s=max(bench.slew_v_per_s, bench.down_slew_v_per_s), u_zero_v=bench.voltage.monitor.u(0.0),
             measured_here=bench.monitor_powered_after_cut and bench.monitor_at_specimen))
 
     # ------------------------------------------------------------ the shell's side
 
     def connect(self, now_s: float) -> bytes:
         """The port is open: begin a new session and return its first bytes."""
-        self.link = Link(now_s, session=self._sessions(), lease_ms=round(self.bench.lease_s * 1000),
-                         first_stop=self._next_stop)
-        self.block_s, self.sampled = now_s, False
-        self._relink_at = None
-        self.link_text = "greeting"
+        linking.begin(self, now_s)
         return self.take_output(now_s)
 
     def port_gone(self, now_s: float, reason: str) -> None:
         """The port is gone: whatever ran is interrupted, and nothing may be said about the voltage."""
         if self.link is not None:
-            self._next_stop = self.link.next_stop
-        self.link, self._relink_at = None, None
-        self._lose(now_s, f"port lost: {reason}")
+            self.next_stop = self.link.next_stop
+        self.link, self.relink_at = None, None
+        linking.lose(self, now_s, f"port lost: {reason}")
 
     def receive(self, data: bytes, now_s: float) -> Iterator[bytes]:
         """Take bytes; yield what to write, each piece as soon as it is due."""
         link = self.link
         if link is None:
             return
+        self._step(now_s)
         for event in link.receive(data, now_s):
             if type(event) is BlockIn:
                 yield from self._block(event.block, now_s)
@@ -137,25 +129,31 @@ class Core:
     def timer(self, now_s: float) -> bytes:
         """Step by time alone; return what to write."""
         self.journal.timer(now_s)
-        if self.link is None:
+        link = self.link
+        if link is None:
             return b""
-        for event in self.link.timer(now_s):
+        self._step(now_s)
+        for event in link.timer(now_s):
             hearing.hear(self, event, now_s)
-        if self.guard is not None and self.state.permission is not Permission.IDLE:
-            self._act(self.guard.check_time(now_s), now_s)
-        if self._relink_at is not None and now_s >= self._relink_at:
-            self._next_stop = self.link.next_stop
+        linking.look_silent(self, now_s)
+        if self.relink_at is not None and now_s >= self.relink_at:
             return self.connect(now_s)
-        arming.expire(self, now_s)
+        if (self.guard is not None and self.state.permission is not Permission.IDLE
+                and now_s - self.awake_s >= self.bench.lease_s):
+            verdicts = self.guard.check_time(now_s)
+            self._stop_by(verdicts, now_s)
+            self._tell(verdicts, now_s)
         self.settle(now_s)
         return self.take_output(now_s)
 
     def deadline(self, now_s: float) -> float | None:
         """When `timer` next has something to do."""
-        times = [t for t in (self.link.deadline() if self.link else None, self._relink_at) if t is not None]
+        times = [t for t in (self.link.deadline() if self.link else None, self.relink_at) if t is not None]
+        if self.silent:
+            times.append(self.awake_s + self.bench.lease_s)
         if self.state.permission is not Permission.IDLE:
-            times.append(self.block_s + self.bench.lease_s + 0.001)
-            times.append(now_s + 0.25)
+            times.append(max(self.block_s, self.awake_s) + self.bench.lease_s + 0.001)
+            times.append(now_s + LOOK_S)
         return min(times, default=None)
 
     def take_output(self, now_s: float) -> bytes:
@@ -167,33 +165,70 @@ class Core:
             self.journal.sent(now_s, data)
         return data
 
+    def command(self, now_s: float, name: str, args: Mapping[str, Any], who: str) -> dict[str, Any]:
+        """Take one command; raises `CommandRefused`; what it puts on the wire is fetched by `take_output`."""
+        self._step(now_s)
+        commands.admit(self, name, args)
+        self.journal.command(now_s, {"name": name, "args": dict(args), "who": who})
+        result = commands.COMMANDS[name](self, now_s, args, who)
+        self.settle(now_s)
+        return result
+
+    def recorder_failed(self, now_s: float) -> None:
+        """The recorder cannot go on: the second table lowers whatever runs."""
+        self.recorder_ready = False
+        self.settle(now_s)
+
+    def opening_state(self) -> dict[str, Any]:
+        """What a replay needs to begin where a run was opened."""
+        return linking.opening_state(self)
+
+    def resume(self, greeting: Greeting, state: Mapping[str, Any], now_s: float, link: Link) -> None:
+        """Stand where `opening_state` was taken: for a replay."""
+        linking.resume(self, greeting, state, now_s, link)
+
+    def _step(self, now_s: float) -> None:
+        """Notice a stall of the host itself: the silence before it says nothing about the MCU."""
+        if now_s - self._stepped_s > self.bench.lease_s:
+            self.awake_s = now_s
+            if self.state.permission is not Permission.IDLE:
+                self.say(now_s, "attention", f"the host stood still for {now_s - self._stepped_s:.2f} s")
+        self._stepped_s = now_s
+
     # ------------------------------------------------------------ the protective call chain
 
     def _block(self, block: Block, now_s: float) -> Iterator[bytes]:
         link, assembler, guard = self.link, self.assembler, self.guard
         assert link is not None
         assert assembler is not None
+        assert guard is not None
         sample = assembler.take(block, now_s)
+        if sample is None:  # seen before, or older: counted, kept, not judged twice
+            self.journal.block(now_s, block)
+            return
+        failed: Exception | None = None
         verdicts: tuple[Verdict, ...] = ()
-        if sample is not None and guard is not None:
+        try:
             verdicts = guard.judge(sample)
             if verdicts:
                 self._stop_by(verdicts, now_s)
-            link.renew(sample.last_index & 0xFFFFFFFF, now_s)
-            data = link.take_output(now_s)
-            if data:
-                yield data
-                self.journal.block(now_s, block)
-                self.journal.sent(now_s, data)
-                block = None  # type: ignore[assignment]
-        if block is not None:
-            self.journal.block(now_s, block)
-        if sample is not None:
-            self._tell(verdicts, now_s)
-            self._follow(sample, now_s)
-            data = self.take_output(now_s)
-            if data:
-                yield data
+        except Exception as error:  # a guard that cannot judge must not keep the lease alive
+            failed = error
+            link.cut(HostRule.ASSERTION, now_s)
+        link.renew(sample.last_index & 0xFFFFFFFF, now_s)
+        data = link.take_output(now_s)
+        if data:
+            yield data
+        self.journal.block(now_s, block)
+        if data:
+            self.journal.sent(now_s, data)
+        if failed is not None:
+            stopping.cut_for(self, HostRule.ASSERTION, now_s, f"the guard failed: {type(failed).__name__}: {failed}")
+        self._tell(verdicts, now_s)
+        self._follow(sample, now_s)
+        data = self.take_output(now_s)
+        if data:
+            yield data
 
     def _stop_by(self, verdicts: tuple[Verdict, ...], now_s: float) -> None:
         """Turn verdicts into stops on the wire, at once."""
@@ -205,26 +240,24 @@ class Core:
             elif verdict.severity is Severity.ARC:
                 link.arc(verdict.index, now_s)
 
-    def _act(self, verdicts: tuple[Verdict, ...], now_s: float) -> None:
-        self._stop_by(verdicts, now_s)
-        self._tell(verdicts, now_s)
-
     def _tell(self, verdicts: tuple[Verdict, ...], now_s: float) -> None:
         """Write down what was judged, after the wire has it."""
         for verdict in verdicts:
-            name = HostRule(verdict.rule).name.lower().replace("_", " ")
+            name = rule_word(verdict.rule)
             self.note(now_s, "verdict", rule=name, severity=str(verdict.severity), limit=verdict.limit,
                       measured=verdict.measured, index=verdict.index, tick=verdict.tick, text=verdict.text)
             if verdict.severity is Severity.EVENT:
                 self.say(now_s, "attention", f"{name}: {verdict.text}")
                 continue
             self.say(now_s, "trip", f"guard: {name}: {verdict.text}")
-            if verdict.severity is Severity.TRIP:
-                self.host_rule = int(verdict.rule)
-                self.stopping(now_s)
-                if self.run is not None:
-                    self.run.host_rule = int(verdict.rule)
-                    self.run.end(Outcome.TRIPPED, f"host: {name}: {verdict.text}")
+            if verdict.severity is Severity.ARC:
+                self.arcs_judged.append(verdict.index & hearing.INDEX_BITS)
+                continue
+            self.host_rule = int(verdict.rule)
+            stopping.decided(self, now_s)
+            if self.run is not None and self.run.open:
+                self.run.host_rule = int(verdict.rule)
+                self.run.end(Outcome.TRIPPED, f"host: {name}: {verdict.text}")
 
     # ------------------------------------------------------------ what follows
 
@@ -237,50 +270,75 @@ class Core:
 
     def _follow(self, sample: SampleBlock, now_s: float) -> None:
         """Everything about a judged block that is not protective."""
-        self.sample, self.block_s, self.sampled = sample, now_s, True
+        if self.state.link is LinkState.LOST:
+            return  # the tail of a session that is over; nothing of it is shown or believed
+        self._measure(sample, now_s)
+        hearing.inputs_changed(self, sample.inputs, sample.tick, now_s)
+        self.events.told(sample.event)
+        if sample.event >= self.events.last:
+            self.mcu_in(McuState(sample.state), sample.tick, now_s)
+        hearing.ask_events(self, now_s)
+        if sample.latched and not self.state.latched:
+            hearing.ask_causes(self)
+        self.aftermath.block()
+        run = self.run
+        if run is not None:
+            self._follow_run(run, sample, now_s)
+        self._voltage(now_s)
+        self.settle(now_s)
+
+    def _measure(self, sample: SampleBlock, now_s: float) -> None:
+        """Take the block's figures and its time; time goes by the wire's ticks, through wraps."""
+        tick = sample.raw.tick
+        if self.last_tick is not None:
+            self._t_s += ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
+        self.last_tick = tick
+        self.sample, self.block_s, self.sampled, self.silent = sample, now_s, True, False
         pairs = sample.pairs
-        ticks = pairs * sample.sample_ticks
-        self.measured = measured = Measured(
-            index=sample.index, tick=sample.tick, ticks=ticks, pairs=pairs,
+        self.measured = Measured(
+            index=sample.index, tick=sample.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
             volts=self._v_zero + self._v_gain * sum(sample.v) / pairs,
             amps=self._i_zero + self._i_gain * sum(sample.i) / pairs,
             volts_max=self._v_zero + self._v_gain * max(sample.v))
-        if sample.inputs != self.inputs:
-            hearing.inputs_changed(self, sample.inputs, now_s)
-        if sample.event >= self.last_event:
-            self.mcu_in(McuState(sample.state), sample.tick, now_s)
-        if sample.latched and not self.state.latched:
-            hearing.ask_events(self)
-        run = self.run
-        if run is not None:
-            if run.stage is Stage.LIVE:
-                run.runner.block(measured)
-                arming.drive(self, run, now_s)
-            elif run.stage is Stage.DISCHARGING:
-                arming.close_when_discharged(self, run, now_s)
-        self._voltage(measured)
-        self.settle(now_s)
 
-    def _voltage(self, measured: Measured) -> None:
-        t_s = measured.tick / self.tick_hz
+    def _follow_run(self, run: ActiveRun, sample: SampleBlock, now_s: float) -> None:
+        assert self.measured is not None
+        if run.stage is Stage.ARMED:
+            arming.ask_again(self, run, now_s)
+        elif run.stage is Stage.LIVE and not run.ended:
+            if sample.state == McuState.PAUSING:
+                run.arcs = max(run.arcs, sample.arc)  # one that the host saw before the pause makes no event
+            run.runner.block(self.measured)
+            driving.drive(self, run, now_s)
+        elif run.stage is Stage.DISCHARGING:
+            arming.close_when_discharged(self, run, now_s)
+
+    def _voltage(self, now_s: float) -> None:
+        measured = self.measured
+        assert measured is not None
         grounded = bool(self.bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH)
                         and not self.inputs & Inputs.GROUND_OPEN)
         live = self.state.permission in LIVE
-        voltage = self.discharge.take(t_s, measured.volts, self.bench.voltage.monitor.u(max(0.0, measured.volts)),
+        voltage = self.discharge.take(self._t_s, measured.volts, self.bench.voltage.monitor.u(max(0.0, measured.volts)),
                                       live=live, grounded=grounded)
         if voltage is not self.state.voltage:
             self.state = replace(self.state, voltage=voltage)
-            self.note(self.block_s, "voltage", state=str(voltage), text=self.discharge.text)
+            self.note(now_s, "discharge", voltage=str(voltage), text=self.discharge.text)
 
     def mcu_in(self, mcu: McuState, tick: int, now_s: float) -> None:
         """The MCU reports this state, by an event or by a block at least as new as the last event."""
-        move = MOVE_OF[mcu]
+        if self.late:
+            return
+        run = self.run
+        if (mcu in (McuState.REQUESTED, McuState.PROVING) and self.state.permission is Permission.IDLE
+                and run is not None and run.stage is Stage.ARMED and run.requested_s is None and not run.ended):
+            arming.accepted(self, run, now_s)  # its event and its answer were lost
         before = self.state.permission
-        after = moved(before, move)
+        after = moved(before, MOVE_OF[mcu])
         if after is None:
             if self.link is not None and not self.link_stopping:
                 self.say(now_s, "trip", f"the MCU reports {mcu.name.lower()} while {before} is permitted: cut")
-                self.cut_for(HostRule.DISAGREEMENT, now_s)
+                stopping.cut_for(self, HostRule.DISAGREEMENT, now_s)
             after = Permission.IDLE if mcu is McuState.OFF else before
         if after is not before:
             self.permit(after, now_s)
@@ -303,9 +361,10 @@ class Core:
         for _ in range(len(Consequence)):
             run = self.run
             facts = Facts(
-                run_open=run is not None, direct=run is not None and run.spec.kind == "direct",
+                run_open=run is not None and run.open, direct=run is not None and run.spec.kind == "direct",
                 seat_empty_s=self.seat.empty_s(now_s), recorder_ready=self.recorder_ready,
-                block_age_s=now_s - self.block_s, lease_s=self.bench.lease_s, stopping=self.link_stopping)
+                block_age_s=now_s - max(self.block_s, self.awake_s), lease_s=self.bench.lease_s,
+                stopping=self.link_stopping)
             asked = owed(self.state, facts)
             if not asked:
                 return
@@ -315,24 +374,32 @@ class Core:
     def _obey(self, consequence: Consequence, now_s: float) -> None:
         match consequence:
             case Consequence.CUT_DISAGREEMENT:
-                self.cut_for(HostRule.DISAGREEMENT, now_s)
+                stopping.cut_for(self, HostRule.DISAGREEMENT, now_s)
             case Consequence.CUT_STALE:
-                self.cut_for(HostRule.STALE, now_s)
+                stopping.cut_for(self, HostRule.STALE, now_s)
             case Consequence.LOWER_RECORDER:
-                self.lower_for(Outcome.RECORD_FAILED, "the recorder failed: the run is lowered", now_s)
+                stopping.lower_for(self, Outcome.RECORD_FAILED, "the recorder failed: the run is lowered", now_s)
             case Consequence.LOWER_SEAT:
-                self.lower_for(Outcome.LOWERED, "nobody has had control for 10 s", now_s)
+                stopping.lower_for(self, Outcome.LOWERED, "nobody has had control for 10 s", now_s)
             case Consequence.END_INTERRUPTED:
                 if self.run is not None:
                     self.run.end(Outcome.INTERRUPTED, self.link_text)
-                    arming.close(self, self.run, now_s)
             case Consequence.PERMISSION_IDLE:
                 self.permit(Permission.IDLE, now_s)
             case Consequence.VOLTAGE_UNKNOWN:
                 self.discharge.unknown("no readback")
                 self.state = replace(self.state, voltage=Voltage.UNKNOWN)
 
-    # ------------------------------------------------------------ acts
+    # ------------------------------------------------------------ figures
+
+    def new_session(self) -> int:
+        """A session number that was not used before."""
+        return self._sessions()
+
+    @property
+    def last_event(self) -> int:
+        """Number of the last event of the MCU that is known."""
+        return self.events.last
 
     @property
     def link_stopping(self) -> bool:
@@ -349,6 +416,11 @@ class Core:
         """Sample pairs per second of the greeted MCU."""
         return self.greeting.info.rate_hz if self.greeting else None
 
+    def zeros(self, v_code: int, i_code: int) -> None:
+        """Take the raw codes above which the assembler counts, and so the SI value of its zero."""
+        self._v_zero = self.bench.voltage.monitor.value(v_code)
+        self._i_zero = self.bench.current.monitor.value(i_code)
+
     def volts(self, code: float) -> float:
         """Oriented volts of an oriented code above zero."""
         return self._v_zero + self._v_gain * code
@@ -357,129 +429,6 @@ class Core:
         """Oriented amps of an oriented code above zero."""
         return self._i_zero + self._i_gain * code
 
-    def cut_for(self, rule: HostRule, now_s: float) -> None:
-        """Decide to cut; the caller's output carries it."""
-        if self.link is None:
-            return
-        self.link.cut(rule, now_s)
-        self.stopping(now_s)
-        if rule is not HostRule.OPERATOR:
-            self.host_rule = int(rule)
-            name = rule.name.lower().replace("_", " ")
-            self.say(now_s, "trip", f"cut: {name}")
-            if self.run is not None:
-                self.run.host_rule = int(rule)
-                self.run.end(Outcome.TRIPPED, f"host: {name}")
-
-    def stopping(self, now_s: float) -> None:
-        """Remember when a cut was decided, for the confirmation's time limit."""
-        if self.stop_decided_s is None:
-            self.stop_decided_s = now_s
-
-    def lower_for(self, outcome: Outcome, why: str, now_s: float) -> None:
-        """Decide to lower; the run ends with this outcome."""
-        if self.link is None:
-            return
-        self.link.lower(now_s)
-        self.say(now_s, "attention", f"lower: {why}")
-        self.note(now_s, "stop", how="lower", why=why)
-        if self.run is not None:
-            self.run.end(outcome, why)
-
-    def cut_words(self, now_s: float) -> str:
-        """What became of the last cut, in the words of S7."""
-        state = self.link.cut_state if self.link is not None else CutState.NONE
-        if state is CutState.CONFIRMED:
-            self.stop_decided_s = None
-            return "" if self.state.permission in LIVE else "cut confirmed"
-        if self.stop_decided_s is None:
-            return ""
-        if self.link is None or now_s - self.stop_decided_s > CONFIRM_S:
-            return "cut not confirmed: use the emergency switching off"
-        return "cut sent"
-
-    # ------------------------------------------------------------ linking
-
-    def greeted(self, event: Greeted, now_s: float) -> None:
-        """The MCU has told what it is: compare its settings, take over its causes, follow its samples."""
-        greeting = self.greeting = event.greeting
-        info = greeting.info
-        self.last_event, self.arm_count = info.event, info.arm
-        self.state = replace(self.state, latched=info.causes)
-        self.host_rule = info.rule
-        settings = greeting.settings or self.bench.settings()
-        findings = compare_settings(self.bench, greeting.settings) if greeting.settings else ()
-        self.settings_findings = findings
-        agreed = greeting.settings is not None and not findings
-        self.state = replace(self.state, link=LinkState.GREETED if agreed else LinkState.OBSERVE)
-        self.link_text = (f"greeted {info.firmware}, boot {info.boot}" if agreed else
-                          "observe only: " + ("settings blank or damaged" if greeting.settings is None
-                                              else "; ".join(f.text for f in findings)))
-        self._v_zero = self.bench.voltage.monitor.value(settings["vzero"])
-        self._i_zero = self.bench.current.monitor.value(settings["izero"])
-        self.block_span_s = info.block_pairs * info.sample_ticks / info.tick_hz
-        self.fresh_judgement()
-        self.say(now_s, "note" if agreed else "attention", self.link_text)
-        if info.causes:
-            self.say(now_s, "attention", f"latched: {', '.join(info.cause_words)}")
-        if info.snapshot:
-            self.evidence.begin(self, info.snapshot)
-
-    def fresh_judgement(self) -> None:
-        """Begin samples and guard anew (at a greeting, and at a run's opening so that a replay can begin there)."""
-        assert self.greeting is not None
-        info = self.greeting.info
-        orientation = Orientation.of(self.greeting.settings or self.bench.settings(), info)
-        self.assembler = Assembler(orientation, info.tick_hz, info.sample_ticks, stale_s=self.bench.lease_s)
-        self.guard = Guard(limits_of(self.bench, None, None, rate_hz=info.rate_hz))
-
-    def opening_state(self) -> dict[str, Any]:
-        """What a replay needs to begin where a run was opened."""
-        assert self.link is not None
-        return {"link": self.link.numbers(), "last_event": self.last_event, "arm_count": self.arm_count,
-                "latched": self.state.latched, "host_rule": self.host_rule, "inputs": self.inputs,
-                "interlock_opened": self.interlock_opened, "seat_held": self.seat.holder is not None}
-
-    def resume(self, greeting: Greeting, state: Mapping[str, Any], now_s: float, link: Link) -> None:
-        """Stand where `opening_state` was taken: for a replay."""
-        self.link, self.block_s, self.sampled = link, now_s, True
-        self.greeted(Greeted(greeting), now_s)
-        self.last_event, self.arm_count = int(state["last_event"]), int(state["arm_count"])
-        self.host_rule, self.inputs = int(state["host_rule"]), int(state["inputs"])
-        self.interlock_opened = bool(state["interlock_opened"])
-        self.state = replace(self.state, latched=int(state["latched"]))
-
-    def ended(self, event: Ended, now_s: float) -> None:
-        """The session is over: what ran is interrupted; a new session is tried after a pause."""
-        self._lose(now_s, f"{event.why}: {event.text}" if event.text else str(event.why))
-        self._relink_at = now_s + RELINK_S
-
-    def _lose(self, now_s: float, text: str) -> None:
-        self.link_text = text
-        self.say(now_s, "trip" if self.state.permission is not Permission.IDLE else "attention", f"link lost: {text}")
-        self.state = replace(self.state, link=LinkState.LOST)
-        if self.run is not None and not self.run.ended:
-            self.run.end(Outcome.INTERRUPTED, text)
-        self.settle(now_s)
-        if self.run is not None:
-            arming.close(self, self.run, now_s)
-
-    # ------------------------------------------------------------ telling
-
-    def say(self, now_s: float, severity: str, text: str) -> None:
-        """Add a line for people, and keep it in the record."""
-        self._log_number += 1
-        self.log.append(LogLine(self._log_number, now_s, severity, text))
-        self.note(now_s, "event", severity=severity, text=text)
-
-    def note(self, now_s: float, what: str, **data: Any) -> None:
-        """Write down a conclusion."""
-        self.journal.note(now_s, {"what": what, "t_mono": now_s, **data})
-
-    def heard(self, frame: McuEvent, now_s: float) -> None:
-        """Journal a line of the MCU that is no block."""
-        self.journal.line(now_s, encode_answer(frame))
-
     def index_at(self, tick: int) -> int:
         """The index of the first sample at or after an unwrapped tick, from the last block's beat."""
         sample = self.sample
@@ -487,18 +436,8 @@ class Core:
             return 0
         return sample.index + -(-(tick - sample.tick) // sample.sample_ticks)
 
-    def reply(self, ticket: int, text: str) -> None:
-        """Keep how a request ended, for whoever asked; the oldest go first."""
-        self.replies[ticket] = text
-        while len(self.replies) > 64:
-            del self.replies[next(iter(self.replies))]
-
-    def command(self, now_s: float, name: str, args: Mapping[str, Any], who: str) -> dict[str, Any]:
-        """Take one command; raises `CommandRefused`; what it puts on the wire is fetched by `take_output`."""
-        from hvhost.supervisor.commands import obey
-
-        self.journal.command(now_s, {"name": name, "args": dict(args), "who": who})
-        result = obey(self, now_s, name, args, who)
-        self.settle(now_s)
-        return result
-
+    def time_at(self, tick: int) -> float:
+        """Seconds of tick time at a tick, from the last block's."""
+        if self.last_tick is None:
+            return self._t_s
+        return self._t_s + ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz

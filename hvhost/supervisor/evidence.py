@@ -35,9 +35,14 @@ class Evidence:
 
     def __init__(self) -> None:
         self.ready: list[Snapshot] = []
-        self.fetching = False  # from the first request until it is stored
+        self.fetching = False  # from the first request until it is stored or given up
         self._number = 0
         self._codes: list[int] = []
+
+    def forget(self) -> None:
+        """A new session: what was being fetched is fetched anew from its first pair."""
+        self._number, self._codes, self.fetching = 0, [], False
+        self.ready.clear()
 
     def begin(self, core: "Core", number: int) -> None:
         """Ask for a snapshot from its first pair on."""
@@ -49,23 +54,30 @@ class Evidence:
     def part(self, core: "Core", answer: Ok | Refusal, now_s: float) -> None:
         """Take one answer; ask for the next part, or hand the whole on."""
         if isinstance(answer, Refusal):
-            core.say(now_s, "attention", f"snapshot {self._number} cannot be fetched: {answer.code}")
-            self._number, self.fetching = 0, False
+            self.give_up(core, str(answer.code), now_s)
             return
         try:
             snapshot = self._read(core, answer)
         except (WireFault, ValueError) as error:
-            core.say(now_s, "attention", f"snapshot {self._number} is malformed: {error}")
-            self._number, self.fetching = 0, False
+            self.give_up(core, f"malformed: {error}", now_s)
             return
         if snapshot is None:
             self._ask(core)
             return
         self.ready.append(snapshot)
-        del self.ready[:-4]
         core.note(now_s, "snapshot", number=snapshot.number, kind=snapshot.kind, tag=snapshot.tag,
                   trigger=snapshot.trigger, index=snapshot.index, lost=snapshot.lost, codes=list(snapshot.codes))
-        core.say(now_s, "note", f"snapshot {snapshot.number} fetched: {snapshot.total} pairs around the {snapshot.kind}")
+        core.say(now_s, "note",
+                 f"snapshot {snapshot.number} fetched: {snapshot.total} pairs around the {snapshot.kind}")
+
+    def give_up(self, core: "Core", why: str, now_s: float) -> None:
+        """It cannot be fetched in this session; the MCU keeps it."""
+        core.say(now_s, "attention", f"snapshot {self._number} was not fetched: {why}; the MCU keeps it")
+        self._number, self.fetching = 0, False
+
+    def stored(self) -> None:
+        """The shell has stored it (or never will): nothing waits for it any more."""
+        self.fetching = False
 
     def take(self) -> list[Snapshot]:
         """Hand over the snapshots that wait to be stored."""

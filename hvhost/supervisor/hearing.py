@@ -4,8 +4,9 @@ from collections.abc import Callable
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
-from hvhost.supervisor import arming
-from hvhost.supervisor.runs import Outcome, Stage
+from hvhost.supervisor import arming, driving, linking, stopping
+from hvhost.supervisor.catchup import KEPT
+from hvhost.supervisor.runs import Outcome, Stage, told_causes
 from hvhost.wire.events import (
     Answered,
     CutConfirmed,
@@ -22,7 +23,18 @@ from hvhost.wire.events import (
 )
 from hvhost.wire.frames import Again, Arm, McuEvent, Ok, Refusal, Segment, Snap, encode_answer
 from hvhost.wire.link import LinkState as WireState
-from hvhost.wire.vocabulary import CAUSE_WORDS, Cause, CutWhy, EventKind, Inputs, LowerWhy, McuState
+from hvhost.wire.vocabulary import (
+    CAUSE_WORDS,
+    ERR_NUMBERS,
+    Cause,
+    CutWhy,
+    Err,
+    EventKind,
+    HostRule,
+    Inputs,
+    LowerWhy,
+    McuState,
+)
 from hvhost.words.errors import CommandRefused
 
 if TYPE_CHECKING:
@@ -34,6 +46,7 @@ LOWER_WORDS: dict[int, str] = {LowerWhy.HOST: "asked for", LowerWhy.LAPSE: "host
                                LowerWhy.SESSION: "a new session"}
 CUTS: dict[int, CutWhy] = {int(why): why for why in CutWhy}
 WORDS: dict[int, str] = {int(cause): word for cause, word in CAUSE_WORDS.items()}
+INDEX_BITS = 0x7FFFFFFF  # of a sample index in an event
 INPUT_WORDS = {
     Inputs.INTERLOCK: ("interlock closed", "interlock open"),
     Inputs.EMERGENCY: ("emergency contact closed", "emergency contact open"),
@@ -58,20 +71,22 @@ def hear(core: "Core", event: LinkEvent, now_s: float) -> None:
     elif isinstance(event, GarbledIn):
         core.journal.garbled(now_s, event.garbled.reason, event.garbled.size)
     elif isinstance(event, Greeted):
-        core.greeted(event, now_s)
+        linking.greeted(core, event.greeting, now_s)
     elif isinstance(event, Ended):
-        core.ended(event, now_s)
+        linking.ended(core, event, now_s)
     elif isinstance(event, Dropped):
         dropped(core, event, now_s)
     elif isinstance(event, Escalated):
-        core.stopping(now_s)
+        stopping.decided(core, now_s)
         core.say(now_s, "trip", f"{event.verb} was not answered: cut")
     elif isinstance(event, CutConfirmed):
+        core.stop_decided_s = None
+        core.note(now_s, "cut", number=event.number, confirmed=True)
         core.say(now_s, "note", "cut confirmed: answered, and every read-back is in its cut position")
     elif isinstance(event, Fault):
         core.say(now_s, "attention", f"the device said what it cannot mean: {event.what}")
     elif isinstance(event, Silent):
-        core.say(now_s, "attention", f"no line from the MCU for {event.age_s:.2f} s")
+        linking.silent(core, event.age_s, now_s)
 
 
 def answered(core: "Core", event: Answered, now_s: float) -> None:
@@ -81,9 +96,12 @@ def answered(core: "Core", event: Answered, now_s: float) -> None:
     if isinstance(frame, Arm):
         arming.arm_answered(core, event.ticket, answer, now_s)
     elif isinstance(frame, Segment):
-        arming.segment_answered(core, answer, now_s)
+        driving.segment_answered(core, event.ticket, frame, answer, now_s)
     elif isinstance(frame, Snap):
         core.evidence.part(core, answer, now_s)
+    elif isinstance(frame, Again):
+        core.events.done(gone=isinstance(answer, Refusal))
+        core.aftermath.answered()
     elif isinstance(answer, Refusal):
         core.say(now_s, "attention", f"the MCU refused {answer.verb}: {answer.code}")
 
@@ -91,43 +109,68 @@ def answered(core: "Core", event: Answered, now_s: float) -> None:
 def dropped(core: "Core", event: Dropped, now_s: float) -> None:
     """A request was given up."""
     core.reply(event.ticket, f"given up: {event.why}")
-    run = core.run
-    if isinstance(event.request, Arm) and run is not None and run.stage is Stage.ARMED and not event.sent:
-        run.end(Outcome.CANCELLED, f"the arm was not sent: {event.why}")
-        arming.close(core, run, now_s)
-    elif isinstance(event.request, Arm | Segment):
+    if isinstance(event.request, Arm):
+        arming.arm_dropped(core, event, now_s)
+    elif isinstance(event.request, Segment):
+        driving.segment_dropped(core, event, now_s)
+    elif isinstance(event.request, Snap):
+        core.evidence.give_up(core, str(event.why), now_s)
+    elif isinstance(event.request, Again):
+        core.events.done()
+        core.aftermath.answered()
+    else:
         core.say(now_s, "attention", f"{type(event.request).__name__.lower()} given up: {event.why}")
 
 
-def ask_events(core: "Core") -> None:
-    """Ask again for the events that may tell which causes are latched."""
-    link = core.link
-    if link is None or link.state is not WireState.GREETED or link.waiting_requests or core.asked_again >= core.last_event:
+def ask_events(core: "Core", now_s: float) -> None:
+    """Ask again for events that are missing; write down those that are gone (8.9)."""
+    book, link = core.events, core.link
+    lost = book.settle()
+    if lost:
+        core.note(now_s, "lost events", first=lost[0], last=lost[-1], numbers=lost)
+        core.say(now_s, "attention", f"events of the MCU are lost: {', '.join(map(str, lost))}")
+    wanted = book.wanted()
+    if wanted is None or link is None or link.state is not WireState.GREETED:
         return
-    core.asked_again = core.last_event
     try:
-        link.request(Again(event=max(1, core.last_event - 15)))
+        link.request(Again(event=wanted))
     except CommandRefused:
         return
+    book.asked()
+
+
+def ask_causes(core: "Core") -> None:
+    """The MCU shows a latch whose causes are not known: have its last events told again, once."""
+    book, link = core.events, core.link
+    if link is None or link.state is not WireState.GREETED or book.asking or core.causes_asked == book.last:
+        return
+    core.causes_asked = book.last
+    try:
+        link.request(Again(event=max(1, book.last - KEPT + 1)))
+    except CommandRefused:
+        return
+    book.asked()
 
 
 def mcu_event(core: "Core", event: McuEvent, now_s: float) -> None:
-    """A numbered event: keep the count without gaps, then act on its kind."""
-    fresh = event.number > core.last_event
-    if fresh and event.number > core.last_event + 1 and core.last_event:
-        core.say(now_s, "attention", f"events {core.last_event + 1} to {event.number - 1} are missing")
-        core.note(now_s, "lost events", first=core.last_event + 1, last=event.number - 1)
-    core.last_event = max(core.last_event, event.number)
+    """A numbered event: keep the count without gaps, then act on its kind, late or not."""
+    news, late = core.events.heard(event.number)
+    core.aftermath.heard(event)
     tick = core.assembler.clock.unwrap(event.tick, now_s) if core.assembler else event.tick
     if event.kind == EventKind.CAUSE:
         caused(core, event, tick, now_s)
-    if not fresh:
+    if not news:
         return
-    if core.guard is not None:
+    if core.guard is not None and not late:
         core.guard.heard(event.kind, tick)
     act = _ACTS.get(event.kind)
-    if act is not None:
+    if act is None:
+        return
+    core.late = late  # what is told late moves no state: newer blocks and events have
+    try:
         act(core, event, tick, now_s)
+    finally:
+        core.late = False
 
 
 def caused(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
@@ -138,20 +181,31 @@ def caused(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.state = replace(core.state, latched=core.state.latched | cause)
     if cause == Cause.HOST_RULE:
         core.host_rule = event.b
-    word = WORDS.get(cause, f"cause {cause:X}")
+    word = ", ".join(told_causes(cause, core.host_rule)) or f"cause {cause:X}"
     core.say(now_s, "trip", f"latched: {word}")
     run = core.run
-    if run is not None and run.stage in (Stage.ARMED, Stage.LIVE, Stage.DISCHARGING):
-        run.causes |= cause
-        if cause == Cause.BREAKDOWN and run.arc_tick is None:
-            run.arc_tick = tick
-        if run.stage is not Stage.DISCHARGING or not run.ended:
-            run.end(Outcome.TRIPPED, word)
+    if run is None or run.stage not in (Stage.ARMED, Stage.LIVE, Stage.DISCHARGING):
+        return
+    run.causes |= cause
+    if cause == Cause.HOST_RULE:
+        run.host_rule = event.b
+    fell = cause == Cause.BREAKDOWN or (cause == Cause.HOST_RULE and event.b == HostRule.BREAKDOWN)
+    if fell and run.arc_tick is None:
+        run.arc_tick = tick
+    # the events of one tick come as cut, void, cause: what latched with the cut ended the run, what latched after it
+    # (a relay that does not open) is a cause on the record and no other end
+    if run.open or not run.ended or run.cut_tick is None or tick <= run.cut_tick:
+        run.end(Outcome.TRIPPED, word)
 
 
-def inputs_changed(core: "Core", inputs: int, now_s: float) -> None:
-    """Contacts or read-backs moved."""
+def inputs_changed(core: "Core", inputs: int, tick: int, now_s: float) -> None:
+    """Contacts or read-backs as they were at this tick; what is older than what is known changes nothing."""
+    if tick < core.inputs_tick:
+        return
+    core.inputs_tick = tick
     changed = inputs ^ core.inputs
+    if not changed:
+        return
     core.inputs = inputs
     for bit, (on, off) in INPUT_WORDS.items():
         if changed & bit and core.sample is not None:
@@ -162,9 +216,17 @@ def inputs_changed(core: "Core", inputs: int, now_s: float) -> None:
 
 def _requested(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     run = core.run
+    core.arm_count = max(core.arm_count, event.a)
     if run is not None and run.stage is Stage.ARMED and event.a == run.arm:
         arming.accepted(core, run, now_s)
     core.mcu_in(McuState.REQUESTED, tick, now_s)
+
+
+def _refused(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
+    word = next((str(code) for code, number in ERR_NUMBERS.items() if number == event.b), str(event.b))
+    core.note(now_s, "refused", arm=event.a, why=word)
+    if word == Err.INPUT:
+        core.say(now_s, "attention", "the arm input is stuck: pressed before the request, or for more than 3 s")
 
 
 def _pressed(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
@@ -180,9 +242,9 @@ def _warning(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.warning_ends_tick = tick + event.b
     core.say(now_s, "attention", f"warning: energises in {event.b / core.tick_hz:.1f} s")
     core.mcu_in(McuState.WARNING, tick, now_s)
-    if core.run is not None:
+    if core.run is not None and core.run.stage is Stage.ARMED:
         core.run.runner.begin()
-        arming.drive(core, core.run, now_s)
+        driving.drive(core, core.run, now_s)
 
 
 def _energised(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
@@ -194,19 +256,21 @@ def _energised(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
         core.say(now_s, "attention", "energised")
         core.note(now_s, "energised", tick=tick, index=core.index_at(tick))
         run.runner.energised(tick, core.index_at(tick))
-        arming.drive(core, run, now_s)
+        driving.drive(core, run, now_s)
 
 
 def _segment(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
-    if core.run is not None:
-        core.run.runner.segment_started(tick)
-        arming.drive(core, core.run, now_s)
+    run = core.run
+    if run is not None and run.open:
+        run.runner.segment_started(event.a, tick)
+        driving.drive(core, run, now_s)
 
 
 def _hold(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
-    if core.run is not None:
-        core.run.runner.ran_dry(event.a, tick, core.index_at(tick))
-        arming.drive(core, core.run, now_s)
+    run = core.run
+    if run is not None and run.stage is Stage.LIVE and not run.ended:
+        run.runner.ran_dry(event.a, tick, core.index_at(tick))
+        driving.drive(core, run, now_s)
 
 
 def _lowering(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
@@ -221,13 +285,15 @@ def _lowering(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
 def _pausing(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.mcu_in(McuState.PAUSING, tick, now_s)
     run = core.run
-    if run is not None:
-        run.arcs += 1
-        index = core.index_at(tick)
-        core.say(now_s, "trip", f"arc {event.a}: pausing")
-        core.note(now_s, "arc", arc=event.a, seen_by="MCU", tick=tick, index=index, volts=run.runner.v_before)
-        run.runner.paused(event.a, tick, index)
-        arming.drive(core, run, now_s)
+    if run is None or not run.open:
+        return
+    run.arcs = max(run.arcs + 1, event.a)
+    by = "host" if event.b & INDEX_BITS in core.arcs_judged else "MCU"
+    index, volts = core.index_at(tick), run.runner.holding.peak_v
+    core.say(now_s, "trip", f"arc {event.a}: pausing")
+    core.note(now_s, "arc", arc=event.a, seen_by=by, tick=tick, index=index, volts=volts)
+    run.runner.paused(event.a, tick, index)
+    driving.drive(core, run, now_s)
 
 
 def _resumed(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
@@ -239,9 +305,9 @@ def _cut(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     why = CUTS.get(event.a)
     core.say(now_s, "attention", f"cut: {why.name.lower().replace('_', ' ') if why else event.a}")
     core.note(now_s, "cut", tick=tick, index=core.index_at(tick), why=event.a, number=event.b)
-    core.discharge.cut(tick / core.tick_hz)
+    core.discharge.cut(core.time_at(tick))
     run = core.run
-    if run is not None and run.stage in (Stage.ARMED, Stage.LIVE):
+    if run is not None and run.stage in (Stage.ARMED, Stage.LIVE, Stage.DISCHARGING):
         run.cut_tick = tick
         if why in (CutWhy.LAPSE, CutWhy.SESSION, CutWhy.BOOT):
             run.end(Outcome.INTERRUPTED, f"cut: {why.name.lower()}")
@@ -265,6 +331,15 @@ def _told(text: str) -> Act:
     return act
 
 
+def _inputs(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
+    inputs_changed(core, event.a & 0xFFFFFFFF, tick, now_s)
+
+
+def _saved(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
+    core.say(now_s, "attention", "settings saved: a new session reads them")
+    linking.again(core, now_s)
+
+
 def _interfered(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
     core.note(now_s, "interfered", rule=WORDS.get(event.a, str(event.a)), count=event.b, tick=tick)
 
@@ -278,6 +353,7 @@ def _void(core: "Core", event: McuEvent, tick: int, now_s: float) -> None:
 
 
 _ACTS: dict[str, Act] = {
+    EventKind.REFUSED: _refused,
     EventKind.REQUESTED: _requested,
     EventKind.PRESSED: _pressed,
     EventKind.PROVEN: _proven,
@@ -297,7 +373,8 @@ _ACTS: dict[str, Act] = {
     EventKind.INTERFERED: _interfered,
     EventKind.OFF_SEEN: _off_seen,
     EventKind.RESET: _reset,
-    EventKind.SAVED: _told("settings saved"),
+    EventKind.INPUTS: _inputs,
+    EventKind.SAVED: _saved,
     EventKind.SNAPSHOT: _snapshot,
     EventKind.LOST: _told("snapshot {a} lost"),
 }

@@ -5,7 +5,7 @@ from enum import StrEnum
 
 from hvhost.plan.program import Program
 from hvhost.supervisor.runner import Runner
-from hvhost.wire.vocabulary import HostRule, cause_words
+from hvhost.wire.vocabulary import HOST_RULE_WORDS, HostRule, cause_words
 
 
 class Stage(StrEnum):
@@ -29,6 +29,15 @@ class Outcome(StrEnum):
     RECORD_FAILED = "record failed"
     CANCELLED = "cancelled"
     FAILED = "failed"
+
+
+# The first outcome stands, but a later one takes the place of these while the end is still under way: what happens on
+# the way down belongs to the run.  An interruption is told by who was not there to see the rest.
+OUTRANKED: dict[Outcome, frozenset[Outcome]] = {
+    Outcome.TRIPPED: frozenset({Outcome.FINISHED, Outcome.LOWERED, Outcome.CUT, Outcome.FAILED}),
+    Outcome.INTERRUPTED: frozenset({Outcome.FINISHED, Outcome.LOWERED}),
+    Outcome.CUT: frozenset({Outcome.LOWERED}),
+}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -58,6 +67,7 @@ class ActiveRun:
     asked_by: str = ""
     arm: int = 0
     arm_tries: int = 0
+    arm_again: bool = False  # refused as stale: asked once more when the next block has told the last event
     requested_s: float | None = None
     energised_tick: int | None = None
     cut_tick: int | None = None
@@ -66,21 +76,37 @@ class ActiveRun:
     host_rule: int = 0
     arcs: int = 0
     arm_ticket: int = 0
-    segment_tickets: set[int] = field(default_factory=set)
+    segments: dict[int, int] = field(default_factory=dict)  # ticket of each unanswered segment: the runner's stretch
 
     @property
     def ended(self) -> bool:
         """Whether the outcome is settled (the discharge may still be followed)."""
         return self.outcome is not None
 
+    @property
+    def open(self) -> bool:
+        """Whether the run is armed or live."""
+        return self.stage in (Stage.ARMED, Stage.LIVE)
+
     def end(self, outcome: Outcome, why: str) -> None:
-        """Settle the outcome; the first reason stands, except that a trip outranks an operator's or a plan's end."""
-        if self.outcome is None or (outcome is Outcome.TRIPPED and self.outcome in (
-                Outcome.FINISHED, Outcome.LOWERED, Outcome.CUT, Outcome.FAILED)):
+        """Settle the outcome; see `OUTRANKED`; a closed run's stands for ever."""
+        if self.stage is Stage.CLOSED:
+            return
+        if outcome is Outcome.INTERRUPTED and self.stage is Stage.DISCHARGING and self.ended:
+            return  # the end itself was seen
+        if self.outcome is None or self.outcome in OUTRANKED.get(outcome, ()):
             self.outcome, self.why = outcome, why
 
     def cause_text(self) -> str:
         """The latched causes in words, with the host's rule where one cut."""
-        words = [w if w != "host" else f"host: {HostRule(self.host_rule).name.lower().replace('_', ' ')}"
-                 for w in cause_words(self.causes)]
-        return ", ".join(words)
+        return ", ".join(told_causes(self.causes, self.host_rule))
+
+
+def rule_word(rule: int) -> str:
+    """The word of a host's rule; a number that this version does not know is told as such."""
+    return HOST_RULE_WORDS[HostRule(rule)] if rule in set(HostRule) else f"rule {rule}"
+
+
+def told_causes(causes: int, rule: int) -> tuple[str, ...]:
+    """The words of a set of causes, the host's with its rule."""
+    return tuple(f"host: {rule_word(rule)}" if word == "host" else word for word in cause_words(causes))

@@ -25,8 +25,9 @@ class Seat:
         """Give the seat to ``name``; from another holder only with a reason.  Returns who had it."""
         before = self.holder
         if before is not None and before.ticket != ticket and not reason:
-            raise CommandRefused("the seat to be free, or a reason for taking it over", f"control is with {before.name}",
-                                 "seat", "ask them to release it, or take it over with --reason TEXT")
+            raise CommandRefused("the seat to be free, or a reason for taking it over",
+                                 f"control is with {before.name}", "seat",
+                                 "ask them to release it, or take it over with --reason TEXT")
         self.holder = Holder(name=name, ticket=ticket)
         self.empty_since_s = None
         if before is None or before.ticket != ticket:

@@ -150,11 +150,11 @@ class State:
 class Facts:
     """What the second table looks at besides the state itself."""
 
-    run_open: bool = False
+    run_open: bool = False  # a run is armed or live
     direct: bool = False
     seat_empty_s: float = 0.0
     recorder_ready: bool = True
-    block_age_s: float = 0.0
+    block_age_s: float = 0.0  # since the last block, or since the host woke from a stall of its own
     lease_s: float = 0.5
     stopping: bool = False  # a stop was decided and is not confirmed yet
 
@@ -179,11 +179,12 @@ HOLDS: tuple[tuple[str, Condition, tuple[Consequence, ...]], ...] = (
     ("link lost while anything is permitted",
      lambda s, f: s.link is LinkState.LOST and s.permission is not Permission.IDLE,
      (Consequence.END_INTERRUPTED, Consequence.PERMISSION_IDLE)),
-    ("link not greeted, voltage claimed",
-     lambda s, f: s.link in (LinkState.NONE, LinkState.LOST) and s.voltage is not Voltage.UNKNOWN,
+    ("voltage claimed without a link or a block within the lease",
+     lambda s, f: s.voltage is not Voltage.UNKNOWN and (s.link in (LinkState.NONE, LinkState.LOST)
+                                                        or f.block_age_s > f.lease_s),
      (Consequence.VOLTAGE_UNKNOWN,)),
-    ("energised or pausing without a run",
-     lambda s, f: s.permission in RUNNING | {Permission.PAUSING} and not f.run_open and not f.stopping,
+    ("anything permitted but the way down, without a run",
+     lambda s, f: s.permission not in (Permission.IDLE, Permission.LOWERING) and not f.run_open and not f.stopping,
      (Consequence.CUT_DISAGREEMENT,)),
     ("no block within the lease while anything is permitted",
      lambda s, f: s.permission is not Permission.IDLE and f.block_age_s > f.lease_s and not f.stopping,

@@ -1,0 +1,113 @@
+"""The clock of a hold: when it runs, what stops or restarts it, when readings are due.
+
+The clock starts when the mean of the readback over the step's window enters the tolerance (IEC 60060-1 counts the
+test's duration from there).  A continuous clock that leaves the tolerance, or that an arc interrupts, fails or begins
+anew as the plan says; an accumulating one counts the blocks inside.
+"""
+
+from collections import deque
+from collections.abc import Mapping
+
+from hvhost.plan.program import HOLD_START, WINDOW_S, HoldClock, HoldStep, Step, WhenOut
+from hvhost.supervisor.notes import Measured, Note, What
+
+PEAK_BLOCKS = 6  # what stood before a collapse is the highest reading of so many blocks
+
+
+class Holding:
+    """Window, clock and readings of the step being worked on; notes go to the list that is given."""
+
+    def __init__(self, tick_hz: int, notes: list[Note]) -> None:
+        self.elapsed_s = 0.0
+        self.inside = False
+        self.restarts = 0
+        self._tick_hz, self._notes = tick_hz, notes
+        self._window: deque[Measured] = deque()
+        self._begun: int | None = None  # tick at which the clock started
+        self._due: deque[float] = deque()
+
+    def begin(self, step: Step) -> None:
+        """A step begins; its clock, if it has one, stands."""
+        self._begun = None
+        self.elapsed_s, self.inside = 0.0, False
+        self._due = deque(step.readings_s if isinstance(step, HoldStep) else ())
+
+    def observe(self, measured: Measured, step: Step | None) -> None:
+        """Take one block into the window, whatever the run does."""
+        window = self._window
+        window.append(measured)
+        span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
+        while len(window) > 1 and measured.end_tick - window[1].tick >= span:
+            window.popleft()
+
+    def take(self, step: HoldStep, measured: Measured, origins: Mapping[str, int]) -> tuple[bool, str]:
+        """Judge one block of a hold; returns whether the hold is done, and why it failed ('' where it has not)."""
+        volts, amps = self._mean()
+        now, index = measured.end_tick, measured.end_index
+        inside = abs(volts - step.v) <= step.tolerance * abs(step.v)
+        if inside and self._begun is None:
+            self._begun = now
+            self._notes.append(Note(what=What.CLOCK_STARTED, tick=now, index=index, step=step, volts=volts, amps=amps))
+        elif step.clock is HoldClock.ACCUMULATE:
+            self.elapsed_s += measured.ticks / self._tick_hz if inside and self.inside else 0.0
+        elif inside and self._begun is not None:
+            self.elapsed_s = (now - self._begun) / self._tick_hz
+        elif self._begun is not None:
+            why = f"mean {volts:.6g} V outside {step.tolerance * 100:g} % of {step.v:g} V after {self.elapsed_s:.1f} s"
+            failed = self._broken(step, why, now, index)
+            if failed:
+                return False, failed
+        self.inside = inside
+        self._take_readings(step, now, index, (volts, amps), origins)
+        return self.elapsed_s >= step.hold_s and not self._due, ""
+
+    def interrupted(self, step: HoldStep, tick: int, index: int) -> str:
+        """An arc stopped the output in the hold; returns why the hold failed, '' where it goes on after the pause."""
+        self.inside = False
+        if step.clock is HoldClock.ACCUMULATE or self._begun is None:
+            return ""
+        return self._broken(step, f"interrupted by an arc after {self.elapsed_s:.1f} s", tick, index)
+
+    def next_reading_s(self, step: Step | None, tick: int, origins: Mapping[str, int]) -> float | None:
+        """Seconds until the next reading is due, None when none is or its origin has not come yet."""
+        if not self._due or not isinstance(step, HoldStep):
+            return None
+        origin = self._origin(step, origins)
+        return None if origin is None else self._due[0] - (tick - origin) / self._tick_hz
+
+    @property
+    def peak_v(self) -> float:
+        """The highest readback of the last blocks: what stood before a collapse."""
+        return max((m.volts_max for m in list(self._window)[-PEAK_BLOCKS:]), default=0.0)
+
+    # ------------------------------------------------------------ inside
+
+    def _mean(self) -> tuple[float, float]:
+        pairs = sum(m.pairs for m in self._window)
+        volts = sum(m.volts * m.pairs for m in self._window) / pairs
+        amps = sum(m.amps * m.pairs for m in self._window) / pairs
+        return volts, amps
+
+    def _origin(self, step: HoldStep, origins: Mapping[str, int]) -> int | None:
+        return self._begun if step.origin == HOLD_START else origins.get(step.origin)
+
+    def _broken(self, step: HoldStep, why: str, tick: int, index: int) -> str:
+        """A continuous clock is broken: the text of the failure, or '' and the clock and its readings anew."""
+        text = f"{step.place}: {step.name}: {why}"
+        if step.when_out is WhenOut.FAIL:
+            return text
+        self._begun = None
+        self.elapsed_s = 0.0
+        self.restarts += 1
+        self._due = deque(step.readings_s)
+        self._notes.append(Note(what=What.CLOCK_RESTARTED, tick=tick, index=index, step=step, text=text))
+        return ""
+
+    def _take_readings(self, step: HoldStep, now: int, index: int, mean: tuple[float, float],
+                       origins: Mapping[str, int]) -> None:
+        origin = self._origin(step, origins)
+        while self._due and origin is not None:
+            if (now - origin) / self._tick_hz < self._due[0]:
+                break
+            self._notes.append(Note(what=What.READING, tick=now, index=index, step=step, volts=mean[0], amps=mean[1],
+                                    reading_s=self._due.popleft()))
