@@ -24,6 +24,7 @@ from hvhost.bench.model import (
     Unattended,
 )
 from hvhost.bench.saying import delay_samples
+from hvhost.bench.service import service_of
 from hvhost.bench.settings_from import fitted_mask
 from hvhost.words.findings import Finding
 
@@ -128,5 +129,5 @@ def bench_of(f: BenchFile, *, file: str, text: str, sha256: str, findings: tuple
         port=Port(device=f.port.device, baud=f.port.baud), runs_folder=f.runs.folder,
         slow_channels=tuple(SlowChannel(name=c.name, kind=c.kind.value, address=c.address, query=c.query,
                                         every_s=c.every, uncertainty=c.uncertainty) for c in f.slow_channels),
-        broker=broker_of(f.mqtt, f.bench),
+        service=service_of(f.daemon), broker=broker_of(f.mqtt, f.bench),
         file=file, text=text, sha256=sha256, findings=findings, **_supply(f), **_wiring(f))

@@ -12,6 +12,7 @@ from pydantic import Field
 
 from hvhost.bench.broker import MqttBlock
 from hvhost.bench.model import CutMeans, GroundDevice
+from hvhost.bench.service import DaemonBlock
 from hvhost.words.fields import (
     Amps,
     AmpsOrZero,
@@ -362,3 +363,4 @@ class BenchFile(Block):
     arcs: ArcsBlock
     slow_channels: tuple[SlowChannelBlock, ...] = ()
     mqtt: MqttBlock | None = None
+    daemon: DaemonBlock | None = None

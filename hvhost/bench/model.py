@@ -9,6 +9,7 @@ from enum import StrEnum
 
 from hvhost.bench.broker import Broker
 from hvhost.bench.scaling import Calibration, Channel, Scale
+from hvhost.bench.service import Service
 from hvhost.wire.settings import Settings
 from hvhost.wire.vocabulary import Fitted
 from hvhost.words.findings import Finding
@@ -156,6 +157,7 @@ class Bench:
     sha256: str
     findings: tuple[Finding, ...]
     broker: Broker | None = None
+    service: Service = Service()
 
     def settings(self) -> Settings:
         """The MCU settings that this bench asks for, in codes."""

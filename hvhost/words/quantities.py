@@ -31,6 +31,7 @@ class Dimension(StrEnum):
     PERCENT = "percentage"
     PERCENT_PER_SECOND = "percentage per time"
     COULOMB = "charge"
+    BYTE = "size"
     NUMBER = "number"
     INTEGER = "whole number"
 
@@ -66,6 +67,7 @@ UNITS: dict[Dimension, dict[str, Fraction]] = {
     Dimension.PERCENT: {"%": Fraction(1, 100), "ppm": Fraction(1, 10**6)},
     Dimension.PERCENT_PER_SECOND: _per_time({"%": Fraction(1, 100)}, _TIMES),
     Dimension.COULOMB: _prefixed("C", "pnµm-"),
+    Dimension.BYTE: _prefixed("B", "-kMGT"),  # IEC 80000-13: decimal prefixes
     Dimension.NUMBER: {"": Fraction(1)},
     Dimension.INTEGER: {"": Fraction(1)},
 }
@@ -85,6 +87,7 @@ EXAMPLES: dict[Dimension, str] = {
     Dimension.PERCENT: "1 %",
     Dimension.PERCENT_PER_SECOND: "2 %/s",
     Dimension.COULOMB: "45 µC",
+    Dimension.BYTE: "2 GB",
     Dimension.NUMBER: "1.25",
     Dimension.INTEGER: "3",
 }
