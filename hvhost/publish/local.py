@@ -1,8 +1,9 @@
 """The local control socket: the outlet and the way in for commands, over a Unix socket.
 
 Lines are JSON-RPC 2.0 (see :mod:`hvhost.publish.jsonrpc`); commands go to one synchronous handler that the daemon
-gives.  The server itself answers ``subscribe`` {rate_hz}, ``unsubscribe`` and ``snapshot``.  A subscriber gets
-notifications ``snapshot`` with the fields that changed since the last one it was sent.
+gives.  The server itself answers ``subscribe`` {rate_hz}, ``unsubscribe``, ``snapshot`` and ``readings`` {every}.  A
+subscriber gets notifications ``snapshot`` with the fields that changed since the last one it was sent, or
+``readings`` (see :mod:`hvhost.publish.readings`).
 
 Nobody can slow anybody: writing never waits; a client that does not read loses notifications, counted, and is
 disconnected when it leaves too much unread for too long.  Its stops are taken all the same, also the last bytes of
@@ -23,6 +24,7 @@ from hvhost.publish import jsonrpc
 from hvhost.publish.conversation import Conversation, Peer, TalkLimits
 from hvhost.publish.jsonrpc import RpcFault
 from hvhost.publish.listening import BACKLOG, ListeningSocket
+from hvhost.publish.readings import EVERY_MOST, Backlog, ReadingsFeed
 from hvhost.publish.snapshot import OutletView, Snapshot, plain
 
 Handle = Callable[[str, dict[str, Any], Peer], Any]
@@ -57,8 +59,9 @@ class LocalServer:
     name = "local"
 
     def __init__(self, path: str, handle: Handle, *, peer_gone: Callable[[Peer], None] | None = None,
-                 note: Callable[[str], None] | None = None, limits: LocalLimits | None = None) -> None:
-        self.path, self.limits = path, limits or LocalLimits()
+                 note: Callable[[str], None] | None = None, limits: LocalLimits | None = None,
+                 readings: ReadingsFeed | None = None) -> None:
+        self.path, self.limits, self.readings = path, limits or LocalLimits(), readings
         self._handle, self._peer_gone, self._note = handle, peer_gone or _ignore, note or _ignore
         self._connections: dict[int, _Connection] = {}
         self._number = self._dropped = self._faults = 0
@@ -93,19 +96,24 @@ class LocalServer:
     def offer_nowait(self, snapshot: Snapshot) -> None:
         """Keep the snapshot and notify the subscribers that are due."""
         self._latest = snapshot
+        if self.readings is not None:
+            self._dropped += self.readings.spread()
         for connection in tuple(self._connections.values()):
             connection.notify(snapshot, self._texts)
+            connection.drain()
 
     def view(self) -> OutletView:
         """Return the notifications dropped, the faults met and the clients connected."""
         return OutletView(name=self.name, dropped=self._dropped, failed=self._faults, clients=len(self._connections))
 
     def call(self, method: str, params: dict[str, Any], peer: Peer) -> Any:
-        """Carry out one request: the server's own three, else the daemon's."""
+        """Carry out one request: the server's own four, else the daemon's."""
         if method == "snapshot":
             return None if self._latest is None else self._latest.to_json()
         if method in ("subscribe", "unsubscribe"):
             return self._connections[peer.number].subscribe(method, params)
+        if method == "readings":
+            return self._connections[peer.number].ask_readings(params)
         return self._handle(method, params, peer)
 
     def admit(self, connection: "_Connection", uid: int, pid: int) -> Peer:
@@ -124,6 +132,7 @@ class LocalServer:
     def left(self, connection: "_Connection") -> None:
         """Forget a connection that ended."""
         if self._connections.pop(connection.peer.number, None) is not None:
+            connection.no_readings()
             self._faults += connection.talk.faults
             self._note(f"{connection.peer.text} left")
             self._peer_gone(connection.peer)
@@ -146,6 +155,7 @@ class _Connection(asyncio.Protocol):
         self._sent: Snapshot | None = None
         self._trend_s = float("-inf")
         self._dropped = 0
+        self._backlog: Backlog | None = None
 
     def connection_made(self, transport: asyncio.BaseTransport) -> None:
         assert isinstance(transport, asyncio.Transport)
@@ -180,6 +190,39 @@ class _Connection(asyncio.Protocol):
             raise RpcFault(jsonrpc.INVALID_PARAMS, f"expected rate_hz from 0 to {RATE_MOST_HZ:g}")
         self._rate_hz, self._sent = float(rate_hz), None
         return {"rate_hz": self._rate_hz}
+
+    def ask_readings(self, params: dict[str, Any]) -> dict[str, Any]:
+        """Begin the readings, ``every`` samples a point, or end them with 0; returns what is in force."""
+        every, feed = params.get("every", 1), self._server.readings
+        if not isinstance(every, int) or isinstance(every, bool) or not 0 <= every <= EVERY_MOST \
+                or set(params) - {"every"}:
+            raise RpcFault(jsonrpc.INVALID_PARAMS, f"expected every, a whole number from 0 to {EVERY_MOST}")
+        self.no_readings()
+        if every:
+            backlog = Backlog(every)
+            if feed is None or not feed.add(backlog):
+                raise RpcFault(jsonrpc.REFUSED, "expected fewer clients with different stretches of readings")
+            self._backlog = backlog
+        return {"every": every}
+
+    def no_readings(self) -> None:
+        """End the readings of this client."""
+        if self._backlog is not None and self._server.readings is not None:
+            self._server.readings.remove(self._backlog)
+        self._backlog = None
+
+    def drain(self) -> None:
+        """Write readings that wait, as many as the client takes."""
+        if self._transport is None or self._backlog is None or self._transport.is_closing():
+            return
+        while self._transport.get_write_buffer_size() <= self._server.limits.unread_notify:
+            line = self._backlog.take()
+            if line is None:
+                return
+            self._transport.write(line)
+
+    def resume_writing(self) -> None:
+        self.drain()
 
     def notify(self, snapshot: Snapshot, texts: "_FieldTexts") -> None:
         """Write what changed since the last notification, where it is due and the client reads."""
