@@ -12,6 +12,7 @@ from hvhost.bench.document import (
     VoltageMonitorBlock,
     VoltageProgramBlock,
 )
+from hvhost.bench.instrument import instrument_of
 from hvhost.bench.model import (
     ArcBounds,
     Bench,
@@ -129,5 +130,5 @@ def bench_of(f: BenchFile, *, file: str, text: str, sha256: str, findings: tuple
         port=Port(device=f.port.device, baud=f.port.baud), runs_folder=f.runs.folder,
         slow_channels=tuple(SlowChannel(name=c.name, kind=c.kind.value, address=c.address, query=c.query,
                                         every_s=c.every, uncertainty=c.uncertainty) for c in f.slow_channels),
-        service=service_of(f.daemon), broker=broker_of(f.mqtt, f.bench),
+        service=service_of(f.daemon), broker=broker_of(f.mqtt, f.bench), instrument=instrument_of(f.instrument),
         file=file, text=text, sha256=sha256, findings=findings, **_supply(f), **_wiring(f))

@@ -9,6 +9,7 @@ from datetime import date
 
 from hvhost.bench.broker import check_mqtt
 from hvhost.bench.document import BenchFile
+from hvhost.bench.instrument import check_instrument
 from hvhost.bench.range_checks import RANGE_CHECKS
 from hvhost.bench.safety_checks import SAFETY_CHECKS
 from hvhost.bench.saying import NOTE, REASON, Say
@@ -19,7 +20,7 @@ from hvhost.words.textfile import Reading
 EXPIRES_SOON_DAYS = 30  # long enough to have a chain calibrated
 
 Check = Callable[[BenchFile, Say], Iterator[Finding]]
-CHECKS: tuple[Check, ...] = (*SAFETY_CHECKS, *RANGE_CHECKS, check_mqtt)
+CHECKS: tuple[Check, ...] = (*SAFETY_CHECKS, *RANGE_CHECKS, check_mqtt, check_instrument)
 
 
 def cross_findings(reading: Reading[BenchFile]) -> tuple[Finding, ...]:

@@ -11,6 +11,7 @@ from typing import Annotated
 from pydantic import Field
 
 from hvhost.bench.broker import MqttBlock
+from hvhost.bench.instrument import InstrumentBlock
 from hvhost.bench.model import CutMeans, GroundDevice
 from hvhost.bench.service import DaemonBlock
 from hvhost.words.fields import (
@@ -364,3 +365,4 @@ class BenchFile(Block):
     slow_channels: tuple[SlowChannelBlock, ...] = ()
     mqtt: MqttBlock | None = None
     daemon: DaemonBlock | None = None
+    instrument: InstrumentBlock | None = None

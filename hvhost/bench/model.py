@@ -8,6 +8,7 @@ from datetime import date
 from enum import StrEnum
 
 from hvhost.bench.broker import Broker
+from hvhost.bench.instrument import Instrument
 from hvhost.bench.scaling import Calibration, Channel, Scale
 from hvhost.bench.service import Service
 from hvhost.wire.settings import Settings
@@ -158,6 +159,7 @@ class Bench:
     findings: tuple[Finding, ...]
     broker: Broker | None = None
     service: Service = Service()
+    instrument: Instrument | None = None
 
     def settings(self) -> Settings:
         """The MCU settings that this bench asks for, in codes."""

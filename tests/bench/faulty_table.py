@@ -91,6 +91,22 @@ TABLE: dict[str, tuple[Row, ...]] = {
         (97, REFUSE, "ground.energy", "the energy that the resistor may", "nothing"),
         (97, REFUSE, "ground.resistor", "the discharge resistor of the grounding", "nothing"),
     ),
+    "instrument-network.yaml": (
+        (130, NOTE, "instrument.listen", "", "'192.0.2.20:5025', open to 192.0.2.0/28"),
+    ),
+    "instrument-open-to-all.yaml": (
+        (130, REFUSE, "instrument.listen", "an address of this machine alone, or the key 'allow'", "'0.0.0.0:5025'"),
+    ),
+    "instrument-places.yaml": (
+        (130, REFUSE, "instrument.listen", "an address of this machine and a port", "'localhost:5025'"),
+        (132, REFUSE, "instrument.allow.1", "an address or network such as", "'bench-pc'"),
+        (133, REFUSE, "instrument.allow.2", "a network no wider than /16", "'10.0.0.0/8'"),
+        (134, REFUSE, "instrument.allow.3", "an address or network such as", "'192.0.2.7/24'"),
+    ),
+    "instrument-port.yaml": (
+        (130, REFUSE, "instrument.listen", "a port from 1 to 65535", "70000"),
+        (131, REFUSE, "instrument.password", "one of allow, listen", "'password'"),
+    ),
     "interlock-by-software.yaml": (
         (85, REFUSE, "interlock.hard_wired", "yes, above the touch threshold", "no"),
         (87, REFUSE, "interlock.emergency_hard_wired", "yes, above the touch threshold", "no"),
