@@ -27,6 +27,7 @@ from hvhost.publish.conversation import Peer
 from hvhost.publish.local import LocalServer
 from hvhost.publish.outlet import Host, Outlet, Publisher
 from hvhost.publish.places import socket_path
+from hvhost.publish.readings import ReadingsFeed, figures_of
 from hvhost.publish.station import CloseJob, Station, end_recording
 from hvhost.record.catalogue import unclosed
 from hvhost.record.folder import RunFolder
@@ -59,8 +60,10 @@ class Daemon:
             runs_root=runs_root or Path(bench.runs_folder).expanduser(), openers=self._open_recorder,
             write=self._write, on_close=self._close_later, port=self.device, rehearsal=rehearsal)
         self.publisher = Publisher()
+        self.readings = ReadingsFeed(lambda: figures_of(self.station.core, self.station.utc_of))
+        self.station.composer.listeners.append(self.readings.take)
         self.server = LocalServer(socket_path(bench.name, socket), self._handle, peer_gone=self._peer_gone,
-                                  note=self._client_note)
+                                  note=self._client_note, readings=self.readings)
         self.publisher.add(self.server)
         self.ready = asyncio.Event()
         self._port: DescriptorPort | None = None

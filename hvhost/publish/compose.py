@@ -74,16 +74,17 @@ class Composer:
         self._seq = 0
         self._lines: deque[EventLine] = deque(maxlen=EVENTS_KEPT)
         self._line_number = 0
-        self._sample: SampleBlock | None = None
+        self.listeners: list[Callable[[SampleBlock], None]] = []  # each must return at once
 
     def look(self) -> None:
-        """Take the newest block into the trend; called after each read."""
-        sample, core = self.core.sample, self.core
-        if sample is None or sample is self._sample:
-            return
-        self._sample = sample
-        self.trend.add(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
-                        core.amps(min(sample.i)), core.amps(max(sample.i)))
+        """Take the blocks that came into the trend, and hand them to whoever listens; called after each read."""
+        core, fresh = self.core, self.core.fresh
+        while fresh:
+            sample = fresh.popleft()
+            self.trend.add(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
+                           core.amps(min(sample.i)), core.amps(max(sample.i)))
+            for listener in self.listeners:
+                listener(sample)
 
     def snapshot(self, now_s: float, outlets: tuple[OutletView, ...] = ()) -> Snapshot:
         """Return the whole picture at this time."""

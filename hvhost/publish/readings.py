@@ -21,6 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hvhost.samples.blocks import Flags, SampleBlock
+from hvhost.supervisor.core import Core
 from hvhost.wire.vocabulary import McuState
 
 BLOCKS_KEPT = 2_048  # blocks waiting to be sent: 6 s of the fastest stream, 64 s at 1,000 pairs a second
@@ -45,6 +46,17 @@ class Figures:
     i_gain: float
     tick_hz: float
     utc_ns: Callable[[int], int]  # UTC of an unwrapped tick
+
+
+def figures_of(core: Core, utc_of: Callable[[float], int]) -> Figures | None:
+    """The figures of a core's session; ``utc_of`` gives the UTC of a monotonic time; None before the greeting."""
+    assembler = core.assembler
+    if assembler is None:
+        return None
+    clock = assembler.clock
+    return Figures(v_zero=core.volts(0), v_gain=core.volts(1) - core.volts(0), i_zero=core.amps(0),
+                   i_gain=core.amps(1) - core.amps(0), tick_hz=core.tick_hz,
+                   utc_ns=lambda tick: utc_of(clock.host_s(tick)))
 
 
 @dataclass(frozen=True, slots=True)

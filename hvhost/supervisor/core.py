@@ -50,6 +50,7 @@ from hvhost.words.findings import Finding
 
 LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least this often
 ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
+FRESH_KEPT = 512  # judged blocks that nobody has looked at yet: more than one read can hold
 WRAP, HALF = 1 << 32, 1 << 31
 
 
@@ -77,6 +78,7 @@ class Core(Teller):
         self.assembler: Assembler | None = None
         self.guard: Guard | None = None
         self.sample: SampleBlock | None = None
+        self.fresh: deque[SampleBlock] = deque(maxlen=FRESH_KEPT)  # for whoever shows every block
         self.sampled = False  # a block of this session was judged
         self.measured: Measured | None = None
         self.inputs = self.inputs_tick = 0
@@ -294,6 +296,7 @@ class Core(Teller):
             self._t_s += ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
         self.last_tick = tick
         self.sample, self.block_s, self.sampled, self.silent = sample, now_s, True, False
+        self.fresh.append(sample)
         pairs = sample.pairs
         self.measured = Measured(
             index=sample.index, tick=sample.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
