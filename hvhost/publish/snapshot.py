@@ -10,18 +10,17 @@ that is not finite becomes None, never a number.  ``from_json`` takes them back,
 and raises :class:`WireFault` for a value of the wrong kind.
 """
 
-import math
-import types
-import typing
-from dataclasses import dataclass, fields, is_dataclass
+from dataclasses import dataclass, fields
 from enum import StrEnum
-from functools import cache
-from typing import Any, NamedTuple, Self
+from typing import Any, NamedTuple, Self, cast
 
-from hvhost.words.errors import WireFault
+from hvhost.publish.values import plain as plain
+from hvhost.publish.values import typed
 
 EVENTS_KEPT = 50  # lines of events in a snapshot: a wall monitor's height
 TREND_KEPT = 240  # buckets of the trend: two per braille cell of a wide screen
+COURSE_KEPT = 120  # corners of the plan's course that is still to come
+EVIDENCE_KEPT = 120  # buckets of the last arc's or trip's snapshot
 
 
 class LinkState(StrEnum):
@@ -102,6 +101,29 @@ class TrendBucket(NamedTuple):
     i_max: float
 
 
+class CoursePoint(NamedTuple):
+    """A corner of the course that the plan is to take: volts at ``t_s`` (host monotonic seconds), lines between."""
+
+    t_s: float
+    volts: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class EvidenceView:
+    """The MCU's last snapshot at the converter's full rate: ``points`` with ``t_s`` counted from the trigger.
+
+    ``kind`` is 'arc' or 'trip'; ``span_s`` is the stretch of one bucket (no peak within it is averaged away);
+    ``number`` is the MCU's; ``lost`` says that a later one overwrote another before it was stored.
+    """
+
+    kind: str
+    number: int
+    text: str = ""
+    span_s: float = 0.0
+    points: tuple[TrendBucket, ...] = ()
+    lost: bool = False
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Reading:
     """The last block's readback: means, extremes, standard uncertainties (k = 1) and age at the snapshot's time."""
@@ -129,18 +151,31 @@ class InputView:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class HoldView:
-    """The hold clock: ``clock`` is 'continuous' or 'accumulate'; ``inside`` says that it counts now."""
+    """The hold clock: ``clock`` is 'continuous' or 'accumulate'; ``inside`` says that it counts now.
+
+    ``begun`` is False until the mean enters ``tolerance`` (a fraction) of ``volts``, and again after a restart;
+    ``step_s`` is the time since the step began, which ends at ``at_most_s`` in any case.
+    """
 
     elapsed_s: float
     required_s: float
     clock: str = "continuous"
     at_most_s: float | None = None
     inside: bool = True
+    begun: bool = True
+    restarts: int = 0
+    volts: float | None = None
+    tolerance: float | None = None
+    step_s: float | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RunView:
-    """The run that stands, or the last one until the next arm."""
+    """The run that stands, or the last one until the next arm.
+
+    ``remaining_s`` is the longest that it may still take, pauses and retreats included; ``expected_s`` is what is to
+    come if nothing hinders it (None: not known).
+    """
 
     run_id: str
     kind: str = "plan"
@@ -153,6 +188,7 @@ class RunView:
     step_text: str = ""
     elapsed_s: float = 0.0
     remaining_s: float | None = None
+    expected_s: float | None = None
     hold: HoldView | None = None
     next_reading_s: float | None = None
     arcs: int = 0
@@ -248,7 +284,9 @@ class Snapshot:
 
     ``block_s`` is the span of one sample block and ``lease_s`` the lease: a reading older than two blocks is shown
     as old, one older than the lease not at all (S13).  ``power_words`` says what stands behind zero: with
-    programming alone 'programmed to zero, supply still powered', never 'off'.
+    programming alone 'programmed to zero, supply still powered', never 'off'.  ``trend`` is the whole run, ``recent``
+    the last minute; ``course`` begins at the present and is what the plan has still to come.  ``stopped_by`` names who
+    stopped the bench under the one in control, until that one acknowledges.
     """
 
     utc_ns: int
@@ -286,8 +324,12 @@ class Snapshot:
     pause_s: float | None = None
     warning_s: float | None = None
     seat: str = ""
+    stopped_by: str = ""
     events: tuple[EventLine, ...] = ()
     trend: tuple[TrendBucket, ...] = ()
+    recent: tuple[TrendBucket, ...] = ()
+    course: tuple[CoursePoint, ...] = ()
+    evidence: EvidenceView | None = None
     next_acts: tuple[str, ...] = ()
     cautions: tuple[str, ...] = ()
     discharge_text: str = ""
@@ -306,66 +348,4 @@ class Snapshot:
     @classmethod
     def from_json(cls, data: object) -> Self:
         """Return the snapshot that ``to_json`` wrote; raises WireFault at the field that is of the wrong kind."""
-        return typing.cast(Self, _typed(data, cls, "snapshot"))
-
-
-@cache
-def _hints(kind: type) -> dict[str, Any]:
-    """Return field name -> resolved type of a dataclass."""
-    return typing.get_type_hints(kind)
-
-
-def plain(value: Any) -> Any:
-    """Return a field's value as plain JSON values; not-finite numbers become None."""
-    if isinstance(value, StrEnum):
-        return str(value)
-    if isinstance(value, float):
-        return value if math.isfinite(value) else None
-    if isinstance(value, tuple):
-        return [plain(item) for item in value]
-    if is_dataclass(value):
-        return {field.name: plain(getattr(value, field.name)) for field in fields(value)}
-    return value
-
-
-def _typed(value: Any, kind: Any, place: str) -> Any:
-    """Return ``value`` as an instance of the annotation ``kind``, or raise WireFault naming ``place``."""
-    origin = typing.get_origin(kind)
-    if origin in (types.UnionType, typing.Union):
-        inner = next(part for part in typing.get_args(kind) if part is not type(None))
-        return None if value is None else _typed(value, inner, place)
-    if origin is tuple:
-        item = typing.get_args(kind)[0]
-        return tuple(_typed(part, item, f"{place}[{n}]") for n, part in enumerate(_need(value, list, place)))
-    if issubclass(kind, StrEnum):
-        try:
-            return kind(_need(value, str, place))
-        except ValueError:
-            raise WireFault(" | ".join(map(repr, map(str, kind))), repr(value)[:60], place) from None
-    if is_dataclass(kind):
-        return _typed_fields(_need(value, dict, place), kind, place)
-    if issubclass(kind, TrendBucket):
-        numbers = [_typed(part, float, place) for part in _need(value, list, place)]
-        if len(numbers) != len(TrendBucket._fields):
-            raise WireFault("five numbers", f"{len(numbers)}", place)
-        return TrendBucket(*numbers)
-    if kind is float:
-        return float(_need(value, (int, float), place))
-    return _need(value, kind, place)
-
-
-def _typed_fields(data: dict[str, Any], kind: Any, place: str) -> Any:
-    hints = _hints(kind)
-    known = {name: _typed(data[name], hints[name], f"{place}.{name}") for name in hints if name in data}
-    try:
-        return kind(**known)
-    except TypeError:
-        missing = sorted(name for name in hints if name not in data)
-        raise WireFault("every field without a default", f"missing among {', '.join(missing)}"[:200], place) from None
-
-
-def _need(value: Any, kind: Any, place: str) -> Any:
-    if (isinstance(value, bool) and kind is not bool) or not isinstance(value, kind):
-        wanted = "number" if isinstance(kind, tuple) else kind.__name__
-        raise WireFault(wanted, repr(value)[:60], place)
-    return value
+        return cast(Self, typed(data, cls, "snapshot"))
