@@ -10,7 +10,7 @@ from enum import StrEnum
 from hvhost.bench.broker import Broker
 from hvhost.bench.instrument import Instrument
 from hvhost.bench.scaling import Calibration, Channel, Scale
-from hvhost.bench.service import Service
+from hvhost.bench.service import DEFAULT, Service
 from hvhost.wire.settings import Settings
 from hvhost.wire.vocabulary import Fitted
 from hvhost.words.findings import Finding
@@ -158,7 +158,7 @@ class Bench:
     sha256: str
     findings: tuple[Finding, ...]
     broker: Broker | None = None
-    service: Service = Service()
+    service: Service = DEFAULT
     instrument: Instrument | None = None
 
     def settings(self) -> Settings:

@@ -26,6 +26,9 @@ class Service:
     disk_floor_b: float = DISK_FLOOR_B
 
 
+DEFAULT = Service()
+
+
 def service_of(block: DaemonBlock | None) -> Service:
     """The section as the program works with it; a file without it gets the defaults."""
-    return Service() if block is None else Service(disk_floor_b=block.disk_floor)
+    return DEFAULT if block is None else Service(disk_floor_b=block.disk_floor)

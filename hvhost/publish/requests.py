@@ -124,6 +124,7 @@ class Requests:
         if checked.program is None or not checked.passed:
             raise FileFault("a preflight without faults", f"{len(refused(checked.findings))} faults", title,
                             "'hvhost check' lists them", findings=tuple(f.text for f in checked.findings))
+        station.machine.require_room()
         given = self._reasons(checked, params, who)
         hindered = [o for o in arming.obstacles(core) if o.startswith(("link", "permission"))]
         if hindered or (core.run is not None and core.run.stage is not Stage.CLOSED) or station.recording is not None:

@@ -6,14 +6,15 @@ then records and composes.  Closing a run (Parquet, measures, page, manifest) ta
 
 import re
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, Protocol
 
 from hvhost.bench.model import Bench
 from hvhost.publish.compose import Composer
+from hvhost.publish.machine import Machine
 from hvhost.publish.requests import Requests
-from hvhost.publish.snapshot import RecordView, Snapshot
+from hvhost.publish.snapshot import DiskView, RecordView, Snapshot
 from hvhost.record.entries import AnchorEntry, CommandEntry, GarbledEntry, LineEntry, NoteEntry, SentEntry, TimerEntry
 from hvhost.record.folder import RunFolder
 from hvhost.record.manifest import append_revision
@@ -99,6 +100,7 @@ class Station:
                  rehearsal: bool = False) -> None:
         self.clock, self.runs_root, self.openers, self.rehearsal = clock, runs_root, openers, rehearsal
         self.core = Core(bench, clock.now_s(), sessions)
+        self.machine = Machine(bench, runs_root, rehearsal=rehearsal)
         self.composer = Composer(self.core, self.utc_of, port=port, rehearsal=rehearsal)
         self.requests = Requests(self)
         self.folder: RunFolder | None = None
@@ -171,7 +173,8 @@ class Station:
     def snapshot(self, outlets: tuple[Any, ...] = ()) -> Snapshot:
         """The picture now."""
         self._record_view()
-        return self.composer.snapshot(self.clock.now_s(), outlets)
+        return replace(self.composer.snapshot(self.clock.now_s(), outlets),
+                       loop=self.machine.loop_view(self.clock.now_s()), disk=self.machine.disk)
 
     # ------------------------------------------------------------ the record
 
@@ -183,6 +186,7 @@ class Station:
         self.composer.trend.clear()
         self._journal = RunJournal(opened.recording, self.utc_of)
         self.core.journal = self._journal
+        self.machine.gauge.run_opened()
         self._anchor_due_s = 0.0
         self._anchor()
 
@@ -191,6 +195,17 @@ class Station:
         self.failed = reason
         self.core.recorder_failed(self.clock.now_s())
         self.flush()
+
+    def look_at_machine(self, disk: DiskView) -> None:
+        """What was found of the disk, a moment ago and by another thread; what runs on too little room is lowered."""
+        machine = self.machine
+        machine.disk = disk
+        if not disk.ok and self.recording is not None and not self.failed:
+            self.core.say(self.clock.now_s(), "attention", machine.disk_text)
+            self.record_failed(machine.disk_text)
+            self.after()
+        if warning := machine.warning():
+            self.core.say(self.clock.now_s(), "attention", warning)
 
     def after(self) -> None:
         """What follows every step: anchors, evidence, and the close of a run that is over."""
@@ -201,6 +216,7 @@ class Station:
                 self._store(snapshot)
         run = self.core.run
         if run is not None and run.stage is Stage.CLOSED and self.recording is not None and self.folder is not None:
+            self.core.note(self.clock.now_s(), "machine", **self.machine.note())
             job = CloseJob(folder=self.folder, recording=self.recording, run=run)
             self.core.journal, self._journal, self.recording = NoJournal(), None, None
             self.closing += 1
