@@ -53,7 +53,7 @@ class Daemon:
             self.process.wait()
 
     def reporting(self) -> float:
-        """Seconds from the start until it reports a greeted, passive bench with a reading; raises where it never does."""
+        """Seconds from the start until it reports a greeted, passive bench with a reading; raises where it does not."""
         while time.perf_counter() - self.begun < START_S:
             try:
                 with Client.connect(self.socket) as bench:
