@@ -22,6 +22,11 @@ _pools: list[ThreadPoolExecutor] = []
 _results: dict[str, Future[None]] = {}
 
 
+def pytest_configure(config: pytest.Config) -> None:
+    """Tell pytest of this folder's mark."""
+    config.addinivalue_line("markers", "long: a scenario of half a minute or more; it is begun before the others")
+
+
 def _begin(items: list[pytest.Item]) -> None:
     _hold()
     pool = ThreadPoolExecutor(AT_ONCE, thread_name_prefix="scenario")

@@ -45,7 +45,7 @@ current_limit: 2 mA
 steps:
 {steps}
 acceptance:
-  - criterion: no breakdown
+  - {{{criterion}}}
 """
 RAMP_THEN_HOLD = """\
   - ramp: {to: 8 kV, rate: 4 kV/s}
@@ -71,9 +71,9 @@ def wait(condition: Condition, what: str, seconds: float = LONG_S) -> Any:
     return found
 
 
-def plan_text(steps: str, *, specimen: str = "", extra: str = "") -> str:
+def plan_text(steps: str, *, specimen: str = "", extra: str = "", criterion: str = "criterion: no breakdown") -> str:
     """A plan file with these steps."""
-    return PLAN.format(steps=steps.rstrip(), specimen=specimen, extra=extra)
+    return PLAN.format(steps=steps.rstrip(), specimen=specimen, extra=extra, criterion=criterion)
 
 
 class Child:
