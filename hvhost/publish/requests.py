@@ -7,6 +7,7 @@ import secrets
 from base64 import b64decode
 from binascii import Error as Base64Error
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 from datetime import UTC, date, datetime
 from typing import TYPE_CHECKING, Any
 
@@ -90,6 +91,11 @@ class Requests:
         return preflight(plan, sheet, core.bench, history=self.history(), today=self._today(), tick_hz=info.tick_hz,
                          queue=info.queue)
 
+    def _on_this_machine(self, checked: Preflight) -> Preflight:
+        """The same with what this machine adds; it is no part of what is hashed."""
+        found = self.station.machine.findings()
+        return replace(checked, findings=(*checked.findings, *found)) if found else checked
+
     def _today(self) -> date:
         return datetime.fromtimestamp(self.station.clock.utc_ns() // 1_000_000_000, UTC).date()
 
@@ -103,8 +109,7 @@ class Requests:
 
     def _preflight(self, params: Params, who: str) -> dict[str, Any]:
         plan, sheet = self._read(params)
-        checked = self._check(plan, sheet)
-        return _checked(checked)
+        return _checked(self._on_this_machine(self._check(plan, sheet)))
 
     def _run(self, params: Params, who: str) -> dict[str, Any]:
         self.station.core.seat.require(str(params.get("ticket", "")))
@@ -121,6 +126,7 @@ class Requests:
     def _open(self, kind: str, title: str, plan: Plan | None, sheet: RunSheet, checked: Preflight, params: Params,
               who: str) -> dict[str, Any]:
         station, core = self.station, self.station.core
+        checked = self._on_this_machine(checked)
         if checked.program is None or not checked.passed:
             raise FileFault("a preflight without faults", f"{len(refused(checked.findings))} faults", title,
                             "'hvhost check' lists them", findings=tuple(f.text for f in checked.findings))
