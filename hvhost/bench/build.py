@@ -2,6 +2,7 @@
 
 from typing import Any
 
+from hvhost.bench.archive import archive_of
 from hvhost.bench.broker import broker_of
 from hvhost.bench.document import (
     BenchFile,
@@ -131,4 +132,5 @@ def bench_of(f: BenchFile, *, file: str, text: str, sha256: str, findings: tuple
         slow_channels=tuple(SlowChannel(name=c.name, kind=c.kind.value, address=c.address, query=c.query,
                                         every_s=c.every, uncertainty=c.uncertainty) for c in f.slow_channels),
         service=service_of(f.daemon), broker=broker_of(f.mqtt, f.bench), instrument=instrument_of(f.instrument),
+        archive=archive_of(f.archive),
         file=file, text=text, sha256=sha256, findings=findings, **_supply(f), **_wiring(f))

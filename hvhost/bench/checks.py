@@ -7,6 +7,7 @@ and ends only the checks that need it.  S-numbers are the safety rules of the de
 from collections.abc import Callable, Iterator
 from datetime import date
 
+from hvhost.bench.archive import check_archive
 from hvhost.bench.broker import check_mqtt
 from hvhost.bench.document import BenchFile
 from hvhost.bench.instrument import check_instrument
@@ -20,7 +21,7 @@ from hvhost.words.textfile import Reading
 EXPIRES_SOON_DAYS = 30  # long enough to have a chain calibrated
 
 Check = Callable[[BenchFile, Say], Iterator[Finding]]
-CHECKS: tuple[Check, ...] = (*SAFETY_CHECKS, *RANGE_CHECKS, check_mqtt, check_instrument)
+CHECKS: tuple[Check, ...] = (*SAFETY_CHECKS, *RANGE_CHECKS, check_mqtt, check_instrument, check_archive)
 
 
 def cross_findings(reading: Reading[BenchFile]) -> tuple[Finding, ...]:

@@ -10,6 +10,7 @@ from typing import Annotated
 
 from pydantic import Field
 
+from hvhost.bench.archive import ArchiveBlock
 from hvhost.bench.broker import MqttBlock
 from hvhost.bench.instrument import InstrumentBlock
 from hvhost.bench.model import CutMeans, GroundDevice
@@ -366,3 +367,4 @@ class BenchFile(Block):
     mqtt: MqttBlock | None = None
     daemon: DaemonBlock | None = None
     instrument: InstrumentBlock | None = None
+    archive: ArchiveBlock | None = None

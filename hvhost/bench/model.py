@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 from datetime import date
 from enum import StrEnum
 
+from hvhost.bench.archive import Archive
 from hvhost.bench.broker import Broker
 from hvhost.bench.instrument import Instrument
 from hvhost.bench.scaling import Calibration, Channel, Scale
@@ -160,6 +161,7 @@ class Bench:
     broker: Broker | None = None
     service: Service = DEFAULT
     instrument: Instrument | None = None
+    archive: Archive | None = None
 
     def settings(self) -> Settings:
         """The MCU settings that this bench asks for, in codes."""
