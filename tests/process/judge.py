@@ -5,6 +5,7 @@ Numbers of the protocol that it needs (states, causes) are written out here from
 
 import json
 from collections.abc import Callable
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -60,7 +61,7 @@ def stopped(line: Line) -> bool:
 
 def assert_words_never_rise(states: list[Line]) -> None:
     """No voltage word is above the one before it."""
-    for before, after in zip(states, states[1:], strict=False):
+    for before, after in pairwise(states):
         assert after["v_word"] <= before["v_word"], f"the word rose: {before} then {after}"
 
 

@@ -18,7 +18,7 @@ RENEW_S = 0.05
 
 
 class RawHost:
-    """One connection to a board behind ``tcp:HOST:PORT``; a thread reads, and renews while ``judged`` gives an index."""
+    """One connection to a board behind ``tcp:HOST:PORT``; a thread reads, and renews by ``judged``."""
 
     def __init__(self, device: str, *, lease_ms: int = 500) -> None:
         host, _, port = device[4:].rpartition(":")

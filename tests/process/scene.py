@@ -123,8 +123,8 @@ class Child:
 class Scene:
     """One bench of processes; see the module's text."""
 
-    def __init__(self, *, profile: str = "demo", bench: str = "demo", changes: tuple[tuple[str, str], ...] = SHORT_BLEED,
-                 commissioned: bool = True) -> None:
+    def __init__(self, *, profile: str = "demo", bench: str = "demo",
+                 changes: tuple[tuple[str, str], ...] = SHORT_BLEED, commissioned: bool = True) -> None:
         self.folder = Path(tempfile.mkdtemp(prefix="hvt-"))
         self.profile, self.commissioned = profile, commissioned
         self.socket, self.control_path = str(self.folder / "d.sock"), str(self.folder / "s.sock")
@@ -186,7 +186,7 @@ class Scene:
             "standin", "standin", "--profile", self.profile, "--seed", "5", *line, "--eeprom", str(eeprom),
             "--set", f"supply.bleed_ohm={bleed}", "--control", self.control_path, "--truth", str(self.truth.path),
             *arguments)
-        text = wait(lambda: "truth " in made.out and made.out or self._ended(made), "the stand-in's port")
+        text = wait(lambda: ("truth " in made.out and made.out) or self._ended(made), "the stand-in's port")
         name = next(line.partition(" ")[2] for line in text.splitlines() if line.startswith("port "))
         self.device = f"tcp:{name}" if tcp else self._linked(name)
         wait(lambda: os.path.exists(self.control_path), "the control socket")

@@ -13,7 +13,7 @@ import pyte
 
 
 class Terminal:
-    """``hvhost ARGUMENTS`` on a pseudo-terminal; ``reading = False`` stops taking its output, as a stalled view does."""
+    """``hvhost ARGUMENTS`` on a pseudo-terminal; ``reading = False`` stops taking its output."""
 
     def __init__(self, *arguments: str, columns: int = 80, rows: int = 24, cwd: Path | None = None) -> None:
         self.master, slave = os.openpty()

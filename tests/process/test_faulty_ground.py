@@ -1,4 +1,4 @@
-"""Port missing, busy, forbidden, not ours; folder not writable, disk full: a sentence with the remedy, a code, no output.
+"""Port missing, busy, forbidden, not ours; no folder, disk full: a sentence with the remedy, a code, no output.
 
 Nothing is energised in any of them, and nobody is shown a traceback.
 """
@@ -16,7 +16,8 @@ from tests.process.judge import ENERGISED, LOWERING, OFF, assert_never_released,
 from tests.process.scene import CONFIGS, RAMP_THEN_HOLD, Child, Scene, plan_text, wait
 
 CANNOT_CONNECT, REFUSED = 6, 5
-BABBLE = [b"$GPGGA,123519,4807.038,N\r\n", b"\xff\x00\x80 garbage \x01\n", b"b 0 0 0 0 0 0 0 0 0 0 1 AAAA\n", b"ok ok ok\n"]
+BABBLE = [b"temp=23.4 C, humidity=41\r\n", b"\xff\x00\x80 garbage \x01\n", b"b 0 0 0 0 0 0 0 0 0 0 1 AAAA\n",
+          b"ok ok ok\n"]
 
 
 def serve(scene: Scene, port: str, *arguments: str) -> Child:

@@ -44,8 +44,8 @@ def fuzzed(rng: random.Random, host: RawHost) -> bytes:
     verb = rng.choice(VERBS)
     numbers = [0, 1, 2, host.number, host.number + 1, host.arms + 1, host.event, 4, 5, 500, 20_000, 65_535, 65_536,
                4_294_967_295, rng.randrange(1 << 32), -1]
-    words = [f"{host.session:08X}", host.settings, "0000ABCD", "00100000", "FFFFFFFF", "vmax", "warn", "pause=1,300,60000",
-             "vmax=1", "arc=0", "press", ""]
+    words = [f"{host.session:08X}", host.settings, "0000ABCD", "00100000", "FFFFFFFF", "vmax", "warn",
+             "pause=1,300,60000", "vmax=1", "arc=0", "press", ""]
     fields = [str(rng.choice(numbers)) if rng.random() < 0.7 else rng.choice(words) for _ in range(rng.randrange(6))]
     head = [verb, str(host.number + 1), f"{host.session:08X}"] if rng.random() < 0.7 else [verb]
     return sealed(" ".join(head + fields).encode("ascii"))
@@ -83,7 +83,8 @@ def test_arm_again_behind_a_cut() -> None:
         host.hello()
         assert host.arm().startswith("ok")
         wait(lambda: scene.truth.last.get("mcu") == REQUESTED, "the request")
-        again = sealed(f"arm {host.number} {host.session:08X} {host.arms} 0000ABCD {host.settings} {host.event}".encode())
+        again = sealed(f"arm {host.number} {host.session:08X} {host.arms} 0000ABCD {host.settings} {host.event}"
+                       .encode())
         seen = host.event
         host.write(host.cut() + again)
         assert host.wait_answer(host.stop, "cut").startswith("ok")

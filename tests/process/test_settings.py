@@ -4,9 +4,9 @@ import json
 
 import pytest
 
+from hvhost.words.errors import CommandRefused
 from tests.process.judge import assert_never_released
 from tests.process.scene import QUICK, Scene, plan_text, wait
-from hvhost.words.errors import CommandRefused
 
 
 def refused_to_open(scene: Scene) -> str:
