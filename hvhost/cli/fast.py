@@ -18,6 +18,7 @@ from hvhost.standin.bench import StandIn, config_of
 from hvhost.standin.eeprom import Eeprom
 from hvhost.standin.params import PlantParams
 from hvhost.standin.truth import TruthLog
+from hvhost.supervisor.runs import Stage
 from hvhost.supervisor.states import LinkState, Permission
 from hvhost.words.clocks import VirtualClock
 from hvhost.words.errors import CommandRefused
@@ -92,8 +93,12 @@ class FastRehearsal:
         opened = station.handle("run", {**params, "ticket": "rehearsal"}, WHO)
         folder = station.folder
         assert folder is not None
-        station.handle("arm", {"ticket": "rehearsal", "typed": opened["run"]}, WHO)
-        self.line.run(self._look, for_s)
+        try:
+            station.handle("arm", {"ticket": "rehearsal", "typed": opened["run"]}, WHO)
+            self.line.run(self._look, for_s)
+        finally:
+            if core.run is not None and core.run.stage is Stage.PREPARED:  # refused: its record is closed all the same
+                station.handle("cancel", {"why": core.run.why or "the arm was refused"}, WHO)
         status = station.handle("status", {}, WHO)
         wall_s = time.perf_counter() - begun - self.close_s
         pairs = core.assembler.counters.pairs if core.assembler else 0
@@ -109,6 +114,5 @@ class FastRehearsal:
         if core.state.permission is Permission.REQUESTED and not self._pressed:
             self._pressed = True
             self.standin.plant.press(PRESS_S)
-        if core.run is not None and core.run.stage == "prepared" and core.run.why:
-            return True
-        return self.closed is not None
+        return self.closed is not None or (
+            core.run is not None and core.run.stage is Stage.PREPARED and bool(core.run.why))

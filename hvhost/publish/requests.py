@@ -114,7 +114,21 @@ class Requests:
     def _run(self, params: Params, who: str) -> dict[str, Any]:
         self.station.core.seat.require(str(params.get("ticket", "")))
         plan, sheet = self._read(params)
-        return self._open("plan", plan.title, plan, sheet, self._check(plan, sheet), params, who)
+        checked = self._check(plan, sheet)
+        self._void_changed(checked, who)
+        return self._open("plan", plan.title, plan, sheet, checked, params, who)
+
+    def _void_changed(self, checked: Preflight, who: str) -> None:
+        """Another plan or sheet than the one that is prepared or armed voids that one; raises where it was armed."""
+        run = self.station.core.run
+        if run is None or run.stage not in (Stage.PREPARED, Stage.ARMED) or run.spec.digest == checked.digest:
+            return
+        armed = run.stage is Stage.ARMED
+        self.station.command("cancel", {"why": f"the run sheet or the plan was changed by {who}"}, who)
+        self.station.after()
+        if armed:
+            raise CommandRefused("the plan and the run sheet that were armed", "others: the arm is void", "run",
+                                 "run the changed ones when the record of the cancelled run is closed")
 
     def _direct(self, params: Params, who: str) -> dict[str, Any]:
         core = self.station.core
@@ -132,7 +146,7 @@ class Requests:
                             "'hvhost check' lists them", findings=tuple(f.text for f in checked.findings))
         station.machine.require_room()
         given = self._reasons(checked, params, who)
-        hindered = [o for o in arming.obstacles(core) if o.startswith(("link", "permission"))]
+        hindered = [o for o in arming.obstacles(core) if o.startswith(("link", "permission", "what the MCU"))]
         if hindered or (core.run is not None and core.run.stage is not Stage.CLOSED) or station.recording is not None:
             raise CommandRefused("an idle, greeted bench with no open run", "; ".join(hindered) or "a run is open",
                                  "run", "wait for its end, or cancel it")
