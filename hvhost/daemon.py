@@ -14,6 +14,7 @@ import pwd
 import secrets
 import signal
 import sys
+import threading
 from collections.abc import Callable, Coroutine
 from pathlib import Path
 from typing import Any
@@ -22,9 +23,13 @@ from hvhost.bench.model import Bench
 from hvhost.ports.clock import SystemClock
 from hvhost.ports.descriptor import DescriptorPort
 from hvhost.ports.opening import open_port
+from hvhost.ports.scheduling import raise_thread, take_realtime
 from hvhost.ports.terminals import may_reopen
 from hvhost.publish.conversation import Peer
+from hvhost.publish.life import Life
 from hvhost.publish.local import LocalServer
+from hvhost.publish.log import Log
+from hvhost.publish.notify import Notifier
 from hvhost.publish.outlet import Host, Outlet, Publisher
 from hvhost.publish.places import socket_path
 from hvhost.publish.readings import ReadingsFeed, figures_of
@@ -40,10 +45,11 @@ from hvhost.words.errors import CannotConnect, HvhostError
 
 SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
-LAST_LOWER_S = 12.0  # how long the end waits for a lowering
+LAST_LOWER_S = 2.0  # how long the end waits for a lowering, beyond the longest that the MCU may take
 SERVICE_AGAIN_S = 5.0
 ATTACHED: tuple[Callable[[Bench, Host], None], ...] = ()  # each makes its outlet where the bench file names it
 CLOSE_S = 600.0  # exporting and repacking a day of samples takes minutes
+RECORDER = "recorder"  # the name of the recorder's thread
 SLACK_S = 0.0005  # a deadline this much earlier than the set timer is not worth another timer
 
 
@@ -51,19 +57,24 @@ class Daemon:
     """One bench served until it is told to stop."""
 
     def __init__(self, bench: Bench, *, socket: str = "", runs_root: Path | None = None, device: str = "",
-                 rehearsal: bool = False, say: Callable[[str], None] | None = None) -> None:
+                 rehearsal: bool = False, log: Log | None = None, notifier: Notifier | None = None,
+                 realtime: bool = False) -> None:
         self.bench, self.device = bench, device or bench.port.device
-        self.say = say or _to_stderr
-        self.clock = SystemClock()
+        self.say = log or Log()
+        self.clock, self.realtime = SystemClock(), realtime
         self.station = Station(
             bench, self.clock, lambda: 1 + secrets.randbelow(0xFFFFFFFF),
             runs_root=runs_root or Path(bench.runs_folder).expanduser(), openers=self._open_recorder,
             write=self._write, on_close=self._close_later, port=self.device, rehearsal=rehearsal)
+        self.gauge = gauge = self.station.machine.gauge
+        self.life = Life(self.station, notifier or Notifier(), self.say)
         self.publisher = Publisher()
         self.readings = ReadingsFeed(lambda: figures_of(self.station.core, self.station.utc_of))
         self.station.composer.listeners.append(self.readings.take)
-        self.server = LocalServer(socket_path(bench.name, socket), self._handle, peer_gone=self._peer_gone,
-                                  note=self._client_note, readings=self.readings)
+        self.server = LocalServer(socket_path(bench.name, socket), gauge.timed("request", self._handle),
+                                  peer_gone=self._peer_gone, note=self._client_note, readings=self.readings)
+        self._picture = gauge.timed("snapshot", self._publish_once)
+        self._tick = gauge.timed("timer", self._time_passed)
         self.publisher.add(self.server)
         self.ready = asyncio.Event()
         self._port: DescriptorPort | None = None
@@ -95,19 +106,27 @@ class Daemon:
                     self._loop.add_signal_handler(number, self.stop)
             async with asyncio.TaskGroup() as group:
                 self._group = group
+                if self.realtime:
+                    refused = take_realtime()
+                    self.say(f"real-time scheduling refused: {refused}" if refused else "real-time scheduling taken")
                 self._attach(port)
                 gc.collect()
                 gc.freeze()  # a full collection of what lives for ever would stall the loop
                 self._tasks = [group.create_task(self._publish()), group.create_task(self._reopen()),
-                               group.create_task(self._recover())]
+                               group.create_task(self._recover()), group.create_task(self.life.beat()),
+                               group.create_task(self.life.look_at_disk())]
                 for name, service in self._services:
                     self.add_service(name, service)
+                self.gauge.start()
                 self.ready.set()
+                self.life.notifier.ready(f"serving {self.bench.name}, port {self.device}")
                 await self._stop.wait()
+                self.life.ending()
                 await self._lower_last()
                 for task in self._tasks:
                     task.cancel()
         finally:
+            self.gauge.stop()
             await self.server.close()
             if self._port is not None:
                 self._port.close()
@@ -123,7 +142,7 @@ class Daemon:
             self.say("lowering before the daemon ends")
             with contextlib.suppress(HvhostError):
                 self.station.command("lower", {}, "hvhost ending")
-            until = self.clock.now_s() + min(LAST_LOWER_S, self.bench.lower_max_s + 2.0)
+            until = self.clock.now_s() + self.bench.lower_max_s + LAST_LOWER_S
             while self._permitted() and self.clock.now_s() < until:
                 await asyncio.sleep(0.02)
             if self._permitted():
@@ -134,6 +153,7 @@ class Daemon:
             arming.close(core, run, self.clock.now_s())
             self.station.after()
         while self.station.closing:
+            self.life.closing()
             await asyncio.sleep(0.02)
 
     def _permitted(self) -> bool:
@@ -161,12 +181,13 @@ class Daemon:
 
     def _attach(self, port: DescriptorPort) -> None:
         self._port = port
-        port.attach(self._bytes, self._room, self._gone)
+        port.attach(self._read, self._room, self._gone)
         self.station.connect()
         self._schedule()
 
     def _bytes(self, data: bytes) -> None:
         self.station.feed(data)
+        self.life.read_was_judged()
         self._schedule()
 
     def _room(self) -> None:
@@ -210,15 +231,20 @@ class Daemon:
             timer.cancel()
         self._timer = loop.call_at(max(due, loop.time() + SLACK_S), self._tick)
 
-    def _tick(self) -> None:
+    def _time_passed(self) -> None:
         self._timer = None
         self.station.tick()
         self._schedule()
 
     async def _publish(self) -> None:
         while True:
-            self.publisher.publish_nowait(self.station.snapshot(self.publisher.views()))
+            self._picture()
             await asyncio.sleep(SNAPSHOT_S)
+
+    def _publish_once(self) -> None:
+        snapshot = self.station.snapshot(self.publisher.views())
+        self.publisher.publish_nowait(snapshot)
+        self.life.shown(snapshot)
 
     def ask(self, method: str, params: dict[str, Any], who: str) -> dict[str, Any]:
         """Carry out one request of an outlet."""
@@ -279,8 +305,13 @@ class Daemon:
                        on_failed: Callable[[str], None]) -> Recorder:
         loop = self._loop
         assert loop is not None
-        return Recorder.open(folder, meta, tag=tag, signs=signs,
+        made = Recorder.open(folder, meta, tag=tag, signs=signs,
                              on_failed=lambda reason: _soon(loop, on_failed, reason))
+        if self.realtime:
+            for thread in threading.enumerate():
+                if thread.name == RECORDER:
+                    raise_thread(thread)
+        return made
 
     def _close_later(self, job: CloseJob) -> None:
         if self._group is not None:
@@ -317,6 +348,3 @@ def _soon(loop: asyncio.AbstractEventLoop, call: Callable[[str], None], reason: 
     with contextlib.suppress(RuntimeError):  # the loop is closed already
         loop.call_soon_threadsafe(call, reason)
 
-
-def _to_stderr(text: str) -> None:
-    print(f"hvhost: {text}", file=sys.stderr, flush=True)
