@@ -74,6 +74,7 @@ class Daemon:
         self.server = LocalServer(socket_path(bench.name, socket), gauge.timed("request", self._handle),
                                   peer_gone=self._peer_gone, note=self._client_note, readings=self.readings)
         self._picture = gauge.timed("snapshot", self._publish_once)
+        self._read = gauge.timed("read", self._bytes)
         self._tick = gauge.timed("timer", self._time_passed)
         self.publisher.add(self.server)
         self.ready = asyncio.Event()

@@ -14,6 +14,7 @@ from hvhost.bench.settings_from import shown_setting
 from hvhost.cli import exits
 from hvhost.cli.talk import who_of
 from hvhost.daemon import Daemon
+from hvhost.publish.log import Silent
 from hvhost.supervisor.core import Core
 from hvhost.supervisor.states import LinkState
 from hvhost.wire.settings import KEYS, SETTINGS, Settings
@@ -42,7 +43,7 @@ def run(argv: list[str]) -> int:
     root = Path(options.runs or bench.runs_folder).expanduser()
     with tempfile.TemporaryDirectory(prefix="hvhost-") as folder:
         daemon = Daemon(bench, socket=f"{folder}/commission.sock", device=options.port, runs_root=Path(folder),
-                        say=lambda text: None)
+                        log=Silent())
         return asyncio.run(_session(daemon, bench, root, options))
 
 

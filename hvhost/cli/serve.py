@@ -2,6 +2,7 @@
 
 import argparse
 import asyncio
+import faulthandler
 from pathlib import Path
 
 from hvhost.cli import exits
@@ -9,7 +10,8 @@ from hvhost.words.errors import HvhostError
 
 ABOUT = """Serves one bench until it is told to stop: opens the port of the bench file, greets the MCU, and answers on
 the bench's local control socket.  It starts passive: it reports what the MCU says and energises nothing.
-Ctrl-C or SIGTERM lowers first."""
+Ctrl-C or SIGTERM lowers first.  A service manager is told when it is ready, what it does and that it lives, where it
+asks (see hvhost-bench@.service)."""
 
 
 def run(argv: list[str]) -> int:
@@ -21,14 +23,27 @@ def run(argv: list[str]) -> int:
     parser.add_argument("--runs", default="", metavar="FOLDER", help="instead of the bench file's runs folder")
     parser.add_argument("--standin", action="store_true",
                         help="the port leads to a stand-in: its runs are marked as rehearsals")
+    parser.add_argument("--realtime", action="store_true",
+                        help="take real-time scheduling where it is permitted; it is said where it is not")
+    parser.add_argument("--log", choices=("auto", "plain", "journal", "json"), default="auto", dest="style",
+                        help="how lines on standard error are written: auto knows a journal when it sees one")
     options = parser.parse_args(argv)
     from hvhost.bench.file import load_bench
     from hvhost.daemon import Daemon
+    from hvhost.publish.log import log_of
+    from hvhost.publish.notify import Notifier
 
+    faulthandler.enable()  # where the watchdog's signal found the loop is worth a line for each call
+    notifier = Notifier.taken_from()
     bench = load_bench(Path(options.bench))
-    daemon = Daemon(bench, socket=options.socket, device=options.port, rehearsal=options.standin,
-                    runs_root=Path(options.runs) if options.runs else None)
-    return serve(daemon)
+    log = log_of(options.style, bench.name)
+    try:
+        return serve(Daemon(bench, socket=options.socket, device=options.port, rehearsal=options.standin,
+                            runs_root=Path(options.runs) if options.runs else None, log=log, notifier=notifier,
+                            realtime=options.realtime))
+    finally:
+        notifier.close()
+        log.close()
 
 
 def serve(daemon: "object") -> int:
@@ -38,7 +53,8 @@ def serve(daemon: "object") -> int:
     assert isinstance(daemon, Daemon)
     daemon.say(f"serving {daemon.bench.name} on {daemon.server.path}, port {daemon.device}")
     try:
-        asyncio.run(daemon.run())
+        with asyncio.Runner(loop_factory=lambda: asyncio.SelectorEventLoop(daemon.gauge.selector())) as runner:
+            runner.run(daemon.run())
     except BaseExceptionGroup as group:
         known = group.subgroup(HvhostError)
         if known is None:

@@ -32,7 +32,7 @@ class Life:
         self._extended_s = float("-inf")
 
     def read_was_judged(self) -> None:
-        """Behind the protective chain of a read: feed the watchdog where a fresh block was judged (`publish.notify`)."""
+        """Behind the protective chain of a read: feed the watchdog where it judged a fresh block."""
         sample = self.station.core.sample
         if sample is not None and sample is not self._sample:
             self._sample = sample

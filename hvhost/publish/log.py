@@ -127,6 +127,13 @@ class Log:
         return True
 
 
+class Silent(Log):
+    """A log of which nobody wants to know anything."""
+
+    def write(self, level: str, text: str, **fields: object) -> None:
+        """Say nothing."""
+
+
 def printable(text: str) -> str:
     """The text on one line, cut at a bound, with what is not printable escaped."""
     cut = text if len(text) <= TEXT_MAX else text[: TEXT_MAX - 3] + "..."

@@ -75,8 +75,9 @@ class Machine:
         told, self._warned = self._warned, short
         if not short or told:
             return ""
-        return (f"the loop stood still for {_seconds(self.gauge.recent_s)}; the lease, "
-                f"{_seconds(self._bench.lease_s)}, is shorter than {STALLS_IN_A_LEASE} times that: it may lapse in a run")
+        stall, lease = _seconds(self.gauge.recent_s), _seconds(self._bench.lease_s)
+        return (f"the event loop stood still for {stall}: the lease, {lease}, is shorter than {STALLS_IN_A_LEASE} times "
+                "that and may lapse in a run")
 
     def note(self) -> dict[str, Any]:
         """What a run's record keeps of the machine at its close."""
