@@ -4,6 +4,7 @@ An entry is ``magic, kind, flags, mark, length, seq | payload | crc32 over all b
 touches a file.
 """
 
+import dataclasses
 import json
 import struct
 from collections.abc import Callable
@@ -119,7 +120,7 @@ class EntryPacker:
 
 def block_text(arrival_s: float, block: Block) -> bytes:
     """Return a block as JSON: the form for numbers that no field holds."""
-    fields = {name: getattr(block, name) for name in Block.__slots__}
+    fields = {field.name: getattr(block, field.name) for field in dataclasses.fields(block)}
     return _TIME.pack(arrival_s) + json_bytes(fields)
 
 

@@ -8,14 +8,14 @@ import re
 import struct
 from binascii import Error as Base64Error
 from binascii import a2b_base64, b2a_base64
-from dataclasses import dataclass
 
 from hvhost.words.errors import WireFault
+from hvhost.words.values import swift
 
 PAIRS_MAX = 64
 
 
-@dataclass(frozen=True, slots=True)
+@swift
 class Block:
     """Up to 64 pairs of monitor codes with what the MCU did and saw at the first pair's tick."""
 
