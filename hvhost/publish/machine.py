@@ -76,8 +76,8 @@ class Machine:
         if not short or told:
             return ""
         stall, lease = _seconds(self.gauge.recent_s), _seconds(self._bench.lease_s)
-        return (f"the event loop stood still for {stall}: the lease, {lease}, is shorter than {STALLS_IN_A_LEASE} times "
-                "that and may lapse in a run")
+        return (f"the event loop stood still for {stall}: the lease, {lease}, is shorter than {STALLS_IN_A_LEASE} "
+                "times that and may lapse in a run")
 
     def note(self) -> dict[str, Any]:
         """What a run's record keeps of the machine at its close."""

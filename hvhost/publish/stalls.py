@@ -87,8 +87,9 @@ class StallGauge:
     # ------------------------------------------------------------ the beat
 
     def start(self) -> None:
-        """Begin to beat on the running loop."""
+        """Begin to beat on the running loop; what came before, the start of the program, is forgotten."""
         loop = asyncio.get_running_loop()
+        self.turns, self.turn_s, self._turn = Spread(), 0.0, None
         self._beat_at(loop, loop.time() + PERIOD_S)
 
     def stop(self) -> None:
