@@ -98,10 +98,10 @@ def filled(text: str, parts: dict[str, list[str]]) -> str:
 
 def parts() -> dict[str, list[str]]:
     """Return all generated parts by their markers."""
-    from tests.wire.session import transcript
+    from tests.wire.session import dialogue
 
     made = {f"table: {name}": lines for name, lines in tables().items()}
-    return made | {"session": ["```", *transcript(), "```"]}
+    return made | {"session": ["```", *dialogue(), "```"]}
 
 
 if __name__ == "__main__":

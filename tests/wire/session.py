@@ -16,7 +16,7 @@ HZ = 10_000
 
 
 class Session:
-    """A link, an MCU, a scripted bench and the transcript of what passes between them."""
+    """A link, an MCU, a scripted bench and the dialogue of what passes between them."""
 
     def __init__(self) -> None:
         config = McuConfig(firmware="standin", before=16, after=16)
@@ -75,7 +75,7 @@ class Session:
         act()
 
 
-def transcript() -> list[str]:
+def dialogue() -> list[str]:
     """Return the session's lines: tick, direction, line."""
     s = Session()
     link, contacts = s.link, s.bench.contacts
