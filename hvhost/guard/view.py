@@ -38,10 +38,8 @@ class View:
         self.index = block.index
         self.gap = block.gap
         self.v_word = block.v_word
-        v, i = block.v, block.i
-        self.v, self.i = v, i
-        self.v_low, self.v_high = min(v), max(v)
-        self.i_low, self.i_high = min(i), max(i)
+        self.v, self.i = block.v, block.i
+        self.v_low, self.v_high, self.i_low, self.i_high = block.extremes
         self.collapse: Collapse | None = None
 
     @property

@@ -65,14 +65,13 @@ class Assembler:
         tick = self._tick(block, index, gap, arrival_s)
         flags = self._pending
         self._pending = _NONE
-        raw = self._raw_flags(v, i)
+        v_low, v_high, i_low, i_high = min(v), max(v), min(i), max(i)
+        raw = self._raw_flags(v_low, v_high, i_low, i_high)
         orientation = self.orientation
         if not self._plain[0]:
-            sign, zero = orientation.v_sign, orientation.v_zero
-            v = tuple([c - zero for c in v]) if sign == 1 else tuple([zero - c for c in v])
+            v, v_low, v_high = _oriented(v, v_low, v_high, orientation.v_sign, orientation.v_zero)
         if not self._plain[1]:
-            sign, zero = orientation.i_sign, orientation.i_zero
-            i = tuple([c - zero for c in i]) if sign == 1 else tuple([zero - c for c in i])
+            i, i_low, i_high = _oriented(i, i_low, i_high, orientation.i_sign, orientation.i_zero)
         missed = (block.missed - self._missed) % WRAP if counters.blocks else 0
         self._missed = block.missed
         late_s = self.clock.observe(tick + (pairs - 1) * self.sample_ticks, arrival_s)
@@ -82,10 +81,12 @@ class Assembler:
         counters.pairs += pairs
         if raw or gap or missed or late_s > self.stale_s:
             flags |= Flags(raw) | self._count(gap, missed, late_s)
-        return SampleBlock(
+        sample = SampleBlock(
             index=index, tick=tick, v=v, i=i, v_word=block.v_word, i_word=block.i_word, state=block.state,
             latched=block.latched != 0, inputs=block.inputs, missed=block.missed, event=block.event, arc=block.arc,
             arrival_s=arrival_s, gap=gap, flags=flags, raw=block, sample_ticks=self.sample_ticks)
+        sample.know((v_low, v_high, i_low, i_high))
+        return sample
 
     def _place(self, index32: int, pairs: int) -> tuple[int, int]:
         """Return the unwrapped index and the pairs missing before it; -1 pairs means refused."""
@@ -112,9 +113,8 @@ class Assembler:
         self.counters.off_beat += 1
         return max(self.clock.unwrap(block.tick, arrival_s), self._at_tick)
 
-    def _raw_flags(self, v: tuple[int, ...], i: tuple[int, ...]) -> int:
-        """Return the flags that the raw codes themselves raise."""
-        v_low, v_high, i_low, i_high = min(v), max(v), min(i), max(i)
+    def _raw_flags(self, v_low: int, v_high: int, i_low: int, i_high: int) -> int:
+        """Return the flags that the raw codes themselves raise, by their extremes."""
         low, high, reversed_low, reversed_high = self._v_bounds
         flags = 0
         if v_low <= low or v_high >= high:
@@ -142,3 +142,11 @@ class Assembler:
             counters.stale += 1
             flags |= Flags.STALE
         return flags
+
+
+def _oriented(codes: tuple[int, ...], low: int, high: int, sign: int,
+              zero: int) -> tuple[tuple[int, ...], int, int]:
+    """Return codes above zero in the bench's polarity, with their extremes."""
+    if sign == 1:
+        return tuple([code - zero for code in codes]), low - zero, high - zero
+    return tuple([zero - code for code in codes]), zero - high, zero - low

@@ -5,12 +5,13 @@ conversion takes a sample index of its own, so indices and ticks stay in step: a
 blocks do not fill is a gap, whoever lost the pairs.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from enum import IntFlag
 from typing import Protocol
 
 from hvhost.wire.frames import Block
 from hvhost.wire.settings import Settings
+from hvhost.words.values import swift_by_name
 
 FAR = 1 << 40  # beyond every code
 
@@ -86,7 +87,10 @@ def raw_limits(sign: str, bits: int) -> tuple[int, int]:
     return (-(1 << bits - 1), (1 << bits - 1) - 1) if sign == "s" else (0, (1 << bits) - 1)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+Extremes = tuple[int, int, int, int]
+
+
+@swift_by_name
 class SampleBlock:
     """Consecutive pairs, oriented, with what the MCU did and saw at the first pair's tick."""
 
@@ -107,6 +111,20 @@ class SampleBlock:
     flags: Flags
     raw: Block
     sample_ticks: int
+    _extremes: Extremes | None = field(default=None, init=False, compare=False, repr=False)
+
+    @property
+    def extremes(self) -> Extremes:
+        """Least and greatest voltage code, least and greatest current code; looked for once and then known."""
+        known = self._extremes
+        if known is None:
+            known = (min(self.v), max(self.v), min(self.i), max(self.i))
+            self.know(known)
+        return known
+
+    def know(self, extremes: Extremes) -> None:
+        """Spare everyone the search: whoever made the block knows its extremes."""
+        object.__setattr__(self, "_extremes", extremes)
 
     @property
     def pairs(self) -> int:

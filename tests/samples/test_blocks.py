@@ -1,6 +1,6 @@
 """Orientation and sample blocks."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import pytest
 from hypothesis import given
@@ -64,3 +64,13 @@ def test_a_block_knows_its_last_sample() -> None:
     block = Assembler(PLAIN, 10_000, 10).take(wire(7), 0.0)
     assert block is not None
     assert (block.pairs, block.last_index, block.last_tick) == (8, 14, 140)
+
+
+@given(st.sampled_from([1, -1]), st.integers(-300, 300), st.lists(st.integers(-3000, 3000), min_size=2, max_size=8))
+def test_the_extremes_are_those_of_the_codes_and_of_no_other_block(sign: int, zero: int, raw: list[int]) -> None:
+    """Whatever the polarity, they are least and greatest; a block with other codes looks for its own."""
+    orientation = replace(PLAIN, v_sign=sign, v_zero=zero, i_sign=-sign)
+    block = Assembler(orientation, 10_000, 10).take(wire(0, raw[: len(raw) // 2 * 2]), 0.0)
+    assert block is not None
+    assert block.extremes == (min(block.v), max(block.v), min(block.i), max(block.i))
+    assert replace(block, v=(7, 8)).extremes[:2] == (7, 8)
