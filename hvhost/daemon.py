@@ -165,9 +165,10 @@ class Daemon:
         root = self.station.runs_root
         self.station.settled = False
         try:
-            for folder in unclosed(root) if root.exists() else ():
+            for folder in await asyncio.to_thread(unclosed, root) if root.exists() else ():
                 if folder != self.station.folder:
                     await self._recover_one(folder)
+            await asyncio.to_thread(self.station.requests.remembered.runs)  # or the first preflight would read it all
         finally:
             self.station.settled = True
 

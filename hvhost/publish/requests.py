@@ -16,9 +16,9 @@ from hvhost.plan.passing import History, Preflight
 from hvhost.plan.plan import Plan, RunSheet
 from hvhost.plan.preflight import preflight, preflight_direct
 from hvhost.plan.sheet import sheet_from, sheet_of
-from hvhost.record.catalogue import list_runs
 from hvhost.record.folder import RunFolder
 from hvhost.record.opening import open_record
+from hvhost.record.remembered import RememberedRuns
 from hvhost.supervisor import arming
 from hvhost.supervisor.commands import COMMANDS, open_run
 from hvhost.supervisor.runs import RunSpec, Stage
@@ -39,6 +39,7 @@ class Requests:
 
     def __init__(self, station: "Station") -> None:
         self.station = station
+        self.remembered = RememberedRuns(station.runs_root)
         self.tag: Callable[[], int] = lambda: secrets.randbits(32)
         self._methods: dict[str, Callable[[Params, str], dict[str, Any]]] = {
             "preflight": self._preflight, "run": self._run, "direct": self._direct, "status": self._status,
@@ -101,7 +102,7 @@ class Requests:
 
     def history(self) -> History:
         """What earlier runs of this bench tell; rehearsals do not count for real runs."""
-        runs = [run for run in list_runs(self.station.runs_root)
+        runs = [run for run in self.remembered.runs()
                 if (run.kind == "rehearsal") == self.station.rehearsal and run.time_on_s]
         return History(used_specimens=frozenset(run.specimen for run in runs),
                        last_specimen=max(runs, key=lambda r: r.opened_utc_ns).specimen if runs else "",
@@ -186,7 +187,7 @@ class Requests:
 
     def folder_of_tag(self, tag: int) -> RunFolder | None:
         """The run whose arm carried this tag."""
-        for run in list_runs(self.station.runs_root):
+        for run in self.remembered.runs():
             if run.tag == tag:
                 return RunFolder.at(run.path)
         return None
