@@ -1,17 +1,21 @@
 """Builds the snapshot from the core's state: the one place where what is known becomes what is shown."""
 
+import math
 from collections import deque
 from collections.abc import Callable
 
 from hvhost.bench.cautions import BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE
 from hvhost.plan.program import HoldStep
+from hvhost.publish.course import Place, course_of, expected_s
+from hvhost.publish.evidence import evidence_view
+from hvhost.publish.inputs import input_views
 from hvhost.publish.snapshot import (
     EVENTS_KEPT,
     ArmView,
+    CoursePoint,
     EventLine,
+    EvidenceView,
     HoldView,
-    InputJudgement,
-    InputView,
     LinkQuality,
     LinkState,
     OutletView,
@@ -23,16 +27,18 @@ from hvhost.publish.snapshot import (
     Severity,
     Snapshot,
     StopState,
+    TrendBucket,
     VoltageState,
 )
-from hvhost.publish.trend import TrendKeeper
+from hvhost.publish.trend import RecentKeeper, TrendKeeper, brief
 from hvhost.samples.blocks import Flags, SampleBlock
 from hvhost.supervisor import states as st
 from hvhost.supervisor.core import Core
 from hvhost.supervisor.driving import step_text
+from hvhost.supervisor.notes import Doing
 from hvhost.supervisor.runs import ActiveRun, Stage, told_causes
 from hvhost.supervisor.stopping import cut_words
-from hvhost.wire.vocabulary import Fitted, Inputs, McuState
+from hvhost.wire.vocabulary import Inputs, McuState
 
 REQUEST_S = 30.0
 FLAG_WORDS = {Flags.LIMIT_V: "voltage at converter limit", Flags.LIMIT_I: "current at converter limit",
@@ -47,19 +53,8 @@ PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
                st.Permission.REST: (Permission.RUNNING, Phase.REST),
                st.Permission.PAUSING: (Permission.PAUSING, Phase.NONE),
                st.Permission.LOWERING: (Permission.LOWERING, Phase.NONE)}
-# input, what must be fitted (None: always), name, closed words, open words, bit wanted for arming (None: no matter)
-INPUTS: tuple[tuple[Inputs, Fitted | None, str, str, str, bool | None], ...] = (
-    (Inputs.INTERLOCK, None, "interlock", "closed", "open", True),
-    (Inputs.EMERGENCY, Fitted.EMERGENCY, "emergency contact", "closed", "open", True),
-    (Inputs.GROUND_OPEN, Fitted.GROUND_STICK | Fitted.GROUND_SWITCH, "grounding device", "open position",
-     "not in its open position", True),
-    (Inputs.DANGER, Fitted.DANGER, "danger signal", "lit", "dark", None),
-    (Inputs.AUXILIARY, Fitted.AUXILIARY, "auxiliary supplies", "good", "low", True),
-    (Inputs.POLARITY, Fitted.POLARITY, "polarity contact", "agrees", "disagrees", True),
-    (Inputs.ARM_INPUT, Fitted.ARM_INPUT, "arm input", "pressed", "not pressed", None),
-    (Inputs.RELAY_BACK, Fitted.RELAY_BACK, "power relay", "closed", "open", None),
-    (Inputs.INHIBIT_BACK, Fitted.INHIBIT_BACK, "inhibit", "asserted", "released", None),
-)
+COURSE_EVERY_S = 1.0  # the course is made anew so often, and at once when the run goes on to something else
+RECENT_EVERY_S = 1.0  # a minute's buckets go out so often
 
 
 class Composer:
@@ -67,13 +62,20 @@ class Composer:
 
     def __init__(self, core: Core, utc_of: Callable[[float], int], *, port: str, rehearsal: bool) -> None:
         self.core, self.utc_of, self.port, self.rehearsal = core, utc_of, port, rehearsal
-        self.trend = TrendKeeper()
+        self.trend, self.recent = TrendKeeper(), RecentKeeper()
         self.verdict_text = ""
         self.folder = ""
         self.record = RecordView()
         self._seq = 0
         self._lines: deque[EventLine] = deque(maxlen=EVENTS_KEPT)
         self._line_number = 0
+        self._place = Place()
+        self._course: tuple[CoursePoint, ...] = ()
+        self._course_of: tuple[object, ...] = ()
+        self._course_s = self._recent_s = -math.inf
+        self._recent: tuple[TrendBucket, ...] = ()
+        self._evidence: EvidenceView | None = None
+        self._run_id = ""
         self.listeners: list[Callable[[SampleBlock], None]] = []  # each must return at once
 
     def look(self) -> None:
@@ -81,10 +83,14 @@ class Composer:
         core, fresh = self.core, self.core.fresh
         while fresh:
             sample = fresh.popleft()
-            self.trend.add(core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)),
-                           core.amps(min(sample.i)), core.amps(max(sample.i)))
+            extremes = (core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)), core.amps(min(sample.i)),
+                        core.amps(max(sample.i)))
+            self.trend.add(*extremes)
+            self.recent.add(*extremes)
             for listener in self.listeners:
                 listener(sample)
+        self._look_at_run()
+        self._look_at_evidence()
 
     def snapshot(self, now_s: float, outlets: tuple[OutletView, ...] = ()) -> Snapshot:
         """Return the whole picture at this time."""
@@ -93,22 +99,25 @@ class Composer:
         permission, phase = PERMISSIONS[core.state.permission]
         if permission is Permission.REQUESTED and core.sample is not None and core.sample.state == McuState.PROVING:
             permission = Permission.PROVING
-        run = core.run
+        run, sample = core.run, core.sample
         reading = self._reading(now_s)
-        sample = core.sample
+        set_volts = bench.voltage.program.value(sample.v_word) if sample else None
+        course = self._course_now(now_s, set_volts)
         return Snapshot(
             utc_ns=self.utc_of(now_s), now_s=now_s, seq=self._seq, bench=bench.name, bench_title=bench.title,
             polarity=bench.polarity, rehearsal=self.rehearsal, port=self.port,
             link=LinkState(core.state.link.value), link_text=core.link_text, permission=permission, phase=phase,
-            latched=latched_words(core), voltage=self._voltage(), voltage_text=core.discharge.text,
+            latched=latched_words(core), voltage=self._voltage(), voltage_text=voltage_text(core),
             power_words=power_words(core), stop=StopState(cut_words(core, now_s)),
-            set_volts=bench.voltage.program.value(sample.v_word) if sample else None,
+            set_volts=set_volts,
             set_amps=bench.current.program.value(sample.i_word) if sample else None, reading=reading,
             block_s=core.block_span_s or 0.032, lease_s=bench.lease_s, volts_full=bench.v_max, amps_full=bench.i_max,
             ceiling_volts=run.spec.program.v_highest if run and run.stage is not Stage.CLOSED else bench.v_max,
-            trip_amps=_trip_amps(core), inputs=self._inputs(), run=self._run(run), arm=self._arm(run, now_s),
+            trip_amps=_trip_amps(core), inputs=input_views(core), run=self._run(run, course, now_s),
+            arm=self._arm(run, now_s),
             pause_s=run.runner.pause_left_s() if run else None, warning_s=self._warning(), seat=seat_words(core),
-            events=self._events(), trend=self.trend.buckets(), next_acts=next_acts(core),
+            stopped_by=core.seat.stopped_by, events=self._events(), trend=brief(self.trend.buckets()),
+            recent=self._recent_now(now_s), course=course, evidence=self._evidence, next_acts=next_acts(core),
             cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text="",
             bleeds_passed=self._bleeds(), verdict_text=self.verdict_text, quality=self._quality(),
             record=self.record, outlets=outlets)
@@ -138,22 +147,48 @@ class Composer:
             volts_max=core.volts(max(sample.v)), amps_min=core.amps(min(sample.i)), amps_max=core.amps(max(sample.i)),
             age_s=age_s, flags=tuple(word for flag, word in FLAG_WORDS.items() if sample.flags & flag))
 
-    def _inputs(self) -> tuple[InputView, ...]:
-        core = self.core
-        known = core.sample is not None and core.state.link in (st.LinkState.GREETED, st.LinkState.OBSERVE)
-        out = []
-        for bit, needs, name, closed, opened, wanted in INPUTS:
-            if needs is not None and not core.bench.fitted & needs:
-                continue
-            on = bool(core.inputs & bit)
-            judgement = InputJudgement.UNKNOWN
-            if known:
-                judgement = InputJudgement.OK if wanted is None or on is wanted else InputJudgement.NOT_OK
-            out.append(InputView(name=name, state=(closed if on else opened) if known else "unknown",
-                                 judgement=judgement))
-        return tuple(out)
+    def _look_at_run(self) -> None:
+        """Notice a new run, and where it stands: how long a step and a rest have lasted is not told by the runner."""
+        run, sample = self.core.run, self.core.sample
+        if run is None or sample is None:
+            return
+        if run.spec.run_id != self._run_id:
+            self._run_id, self._place, self._evidence = run.spec.run_id, Place(), None
+            self.recent.clear()
+        self._place.look(run.runner.at, run.runner.doing is Doing.RESTING and not sample.v_word, sample.last_tick)
 
-    def _run(self, run: ActiveRun | None) -> RunView | None:
+    def _look_at_evidence(self) -> None:
+        """Take the newest snapshot that was fetched, before it is handed over to be stored."""
+        core = self.core
+        if not core.evidence.ready or core.greeting is None:
+            return
+        newest, info = core.evidence.ready[-1], core.greeting.info
+        if self._evidence is None or newest.number != self._evidence.number:
+            ours = core.run is not None and core.run.spec.tag == newest.tag
+            causes = ", ".join(latched_words(core)) if newest.kind == "trip" else ""
+            text = causes if ours else "of an earlier run"
+            self._evidence = evidence_view(newest, core.bench, info.sample_ticks / info.tick_hz, text)
+
+    def _recent_now(self, now_s: float) -> tuple[TrendBucket, ...]:
+        if now_s - self._recent_s >= RECENT_EVERY_S:
+            self._recent_s, self._recent = now_s, brief(self.recent.buckets())
+        return self._recent
+
+    def _course_now(self, now_s: float, set_volts: float | None) -> tuple[CoursePoint, ...]:
+        """The course to come; made anew once a second and when the run goes on to something else."""
+        core, run = self.core, self.core.run
+        if run is None or run.stage in (Stage.DISCHARGING, Stage.CLOSED) or core.state.link is st.LinkState.LOST:
+            self._course_of = ()
+            return ()
+        runner = run.runner
+        of = (run.spec.run_id, core.state.permission, runner.at, runner.doing, runner.stretch, runner.set_point)
+        if of != self._course_of or now_s - self._course_s >= COURSE_EVERY_S:
+            self._course_of, self._course_s = of, now_s
+            self._course = course_of(runner, core.state.permission, now_s, set_volts or 0.0,
+                                     starts_s=self._warning() or 0.0, rested_s=self._place.rested_s(core.tick_hz))
+        return self._course
+
+    def _run(self, run: ActiveRun | None, course: tuple[CoursePoint, ...], now_s: float) -> RunView | None:
         if run is None:
             return None
         runner, spec = run.runner, run.spec
@@ -165,12 +200,16 @@ class Composer:
         hold = None
         if isinstance(step, HoldStep) and run.stage is Stage.LIVE:
             hold = HoldView(elapsed_s=runner.elapsed_s, required_s=step.hold_s, clock=str(step.clock),
-                            at_most_s=step.at_most_s, inside=runner.inside)
+                            at_most_s=step.at_most_s, inside=runner.inside, restarts=runner.holding.restarts,
+                            begun=runner.inside or runner.elapsed_s > 0.0, volts=step.v, tolerance=step.tolerance,
+                            step_s=self._place.step_s(self.core.tick_hz))
         return RunView(
             run_id=spec.run_id, kind=spec.kind, plan=spec.plan, specimen=spec.specimen, operator=spec.operator,
             step_number=min(runner.at + 1, len(spec.program.steps)), step_total=len(spec.program.steps),
             step_name=step.name if step else "", step_text=step_text(run), elapsed_s=elapsed,
-            remaining_s=max(0.0, spec.program.duration_s - elapsed) if spec.kind == "plan" else None, hold=hold,
+            remaining_s=max(0.0, spec.program.duration_s - elapsed) if spec.kind == "plan" else None,
+            expected_s=expected_s(course, now_s) if spec.kind == "plan" and run.energised_tick is not None else None,
+            hold=hold,
             next_reading_s=runner.next_reading_s() if run.stage is Stage.LIVE else None, arcs=run.arcs,
             arcs_allowed=spec.program.reaction.count if spec.program.reaction else None, folder=self.folder,
             ended=run.ended)
@@ -183,6 +222,7 @@ class Composer:
                        duration_s=spec.program.duration_s, asked_by=run.asked_by,
                        expires_s=max(0.0, REQUEST_S - (now_s - self.core.arm_open_s)),
                        press_needed=self.core.bench.arm_input,
+                       simulated_press=self.rehearsal and self.core.bench.arm_input,
                        typed_name="" if self.core.bench.arm_input else spec.run_id)
 
     def _warning(self) -> float | None:
@@ -193,7 +233,7 @@ class Composer:
 
     def _bleeds(self) -> float | None:
         core = self.core
-        return None if core.sample is None else core.discharge.bleeds_passed(core.sample.last_tick / core.tick_hz)
+        return None if core.sample is None else core.discharge.bleeds_passed(core.time_at(core.sample.tick))
 
     def _events(self) -> tuple[EventLine, ...]:
         for line in self.core.log:
@@ -216,6 +256,15 @@ class Composer:
 def latched_words(core: Core) -> tuple[str, ...]:
     """The latched causes in words, the host's with its rule."""
     return told_causes(core.state.latched, core.host_rule)
+
+
+def voltage_text(core: Core) -> str:
+    """Why the voltage is what it is; on the way down and in a pause not merely that the output is energised."""
+    if core.state.voltage is st.Voltage.PRESENT:
+        return {st.Permission.LOWERING: "the output is being lowered",
+                st.Permission.PAUSING: "inhibited after an arc, power stays on"}.get(core.state.permission,
+                                                                                     core.discharge.text)
+    return core.discharge.text
 
 
 def power_words(core: Core) -> str:

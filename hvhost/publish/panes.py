@@ -21,7 +21,7 @@ from hvhost.publish.snapshot import (
     Snapshot,
     StopState,
 )
-from hvhost.publish.trend import braille_plot, nice_top
+from hvhost.publish.plot import Plot, nice_top
 from hvhost.publish.wording import Scale, View, fine, known, left, local_time, measured, printable, span
 
 ALERT = "bold white on red"
@@ -168,8 +168,10 @@ def trends(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
 def _trend(points: Sequence[tuple[float, float, float]], scale: Scale, width: int, rows: int) -> list[str]:
     top = nice_top(max((high for _, _, high in points), default=0.0))
     unit = scale.unit[-1]
-    plot = braille_plot(points, width - LABEL, rows, top)
-    over_s = points[-1][0] - points[0][0] if points else 0.0
+    begin_s, end_s = (points[0][0], points[-1][0]) if points else (0.0, 0.0)
+    drawn = Plot(width - LABEL, rows, begin_s, end_s, top)
+    drawn.spans(points)
+    plot, over_s = drawn.lines(), end_s - begin_s
     labels = [""] * rows
     labels[-1] = "0"
     if rows > 2:

@@ -1,4 +1,4 @@
-"""The trend: bounded, no peak lost, drawn where it belongs."""
+"""The trend: bounded, and no peak lost."""
 
 import math
 
@@ -6,14 +6,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from hvhost.publish.trend import TrendKeeper, braille_plot, nice_top
+from hvhost.publish.snapshot import TrendBucket
+from hvhost.publish.trend import RECENT_S, RecentKeeper, TrendKeeper, brief
 
 VALUES = st.floats(0.0, 3e4)
-
-
-def bits(cell: str) -> int:
-    """Return the dots of a braille cell; the order of dots is that of Unicode 15, block 2800."""
-    return 0 if cell == " " else ord(cell) - 0x2800
 
 
 @given(st.lists(st.tuples(st.floats(0.001, 5.0), VALUES, VALUES), min_size=1, max_size=400))
@@ -53,43 +49,30 @@ def test_what_is_no_number_is_left_out(bad: float) -> None:
     assert keeper.buckets() == ()
 
 
-@given(st.lists(st.tuples(st.floats(0, 1e5), st.floats(-1e5, 1e5), st.floats(-1e5, 1e5)), max_size=50),
-       st.integers(0, 40), st.integers(0, 10), st.floats(0.0, 1e5))
-def test_a_plot_has_exactly_its_room(points: list[tuple[float, float, float]], width: int, rows: int,
-                                     top: float) -> None:
-    """Any points in any order give the asked number of lines of the asked width."""
-    spans = sorted((t, min(a, b), max(a, b)) for t, a, b in points)
-    lines = braille_plot(spans, width, rows, top)
-    assert [len(line) for line in lines] == ([width] * rows if width and rows else [])
+@given(st.lists(st.tuples(st.floats(0.001, 5.0), VALUES, VALUES), min_size=1, max_size=400))
+def test_the_last_minute_is_kept_however_long_the_run(blocks: list[tuple[float, float, float]]) -> None:
+    """At most 121 buckets, none older than a minute, every extreme of that minute in one of them."""
+    keeper, t_s, kept = RecentKeeper(), 0.0, []
+    for step_s, a, b in blocks:
+        t_s += step_s
+        kept.append((t_s, max(a, b)))
+        keeper.add(t_s, min(a, b), max(a, b), 0.0, 0.0)
+    buckets = keeper.buckets()
+    assert len(buckets) <= 121
+    assert all(one.t_s >= t_s - RECENT_S for one in buckets)
+    assert max(one.v_max for one in buckets) >= max(v for t, v in kept if t >= t_s - RECENT_S + 0.5)
+    keeper.clear()
+    assert keeper.buckets() == ()
 
 
-def test_top_and_bottom_are_where_they_are_said_to_be() -> None:
-    """A span from nothing to the top fills its column; a flat zero lies on the lowest dots."""
-    full = braille_plot([(0.0, 0.0, 0.0), (1.0, 0.0, 10.0)], 4, 3, 10.0)
-    assert [bits(line[-1]) & 0xB8 for line in full] == [0xB8, 0xB8, 0xB8]
-    flat = braille_plot([(0.0, 0.0, 0.0), (1.0, 0.0, 0.0)], 4, 3, 10.0)
-    assert flat[0] == flat[1] == "    "
-    assert all(bits(cell) == 0xC0 for cell in flat[2])
+def test_the_last_minute_leaves_out_what_is_no_number() -> None:
+    """A missing reading leaves a gap there too."""
+    keeper = RecentKeeper()
+    keeper.add(1.0, math.nan, 0.0, 0.0, 0.0)
+    assert keeper.buckets() == ()
 
 
-def test_a_ramp_is_joined_and_a_gap_is_not() -> None:
-    """Neighbours make a line without holes; a pause in time stays empty."""
-    ramp = braille_plot([(float(t), float(t), float(t)) for t in range(5)], 20, 4, 4.0)
-    columns = ["".join(line[n] for line in ramp).strip() for n in range(20)]
-    assert all(columns)
-    gap = braille_plot([(0.0, 1.0, 1.0), (1.0, 1.0, 1.0), (2.0, 1.0, 1.0), (20.0, 1.0, 1.0)], 20, 2, 4.0)
-    assert "      " in gap[1]
-
-
-# Renard-like steps of 1-2-2.5-5, as on the axes of instruments (common practice).
-@pytest.mark.parametrize(("value", "top"), [(0.0, 1.0), (1.0, 1.0), (1.01, 2.0), (2.3, 2.5), (18_014.0, 20_000.0),
-                                            (3.4e-3, 5e-3), (9.9, 10.0), (math.nan, 1.0), (-3.0, 1.0)])
-def test_the_axis_ends_at_a_round_number(value: float, top: float) -> None:
-    """The least round number that holds the value."""
-    assert nice_top(value) == pytest.approx(top)
-
-
-@given(st.floats(1e-9, 1e9))
-def test_the_axis_always_holds_the_value(value: float) -> None:
-    """Never below, never more than 2.5 times as much."""
-    assert value * (1 - 1e-8) <= nice_top(value) <= value * 2.5
+def test_buckets_go_out_short() -> None:
+    """To the millisecond, millivolt and nanoampere: less than half the bytes, and no screen shows more."""
+    assert brief((TrendBucket(1.23456, 1.00049, 2.0006, 1.23456e-6, 2e-3),)) == (
+        TrendBucket(1.235, 1.0, 2.001, 1.235e-6, 2e-3),)

@@ -61,7 +61,8 @@ def test_a_number_that_is_none_becomes_none(bad: float) -> None:
 
 @pytest.mark.parametrize(("data", "place"), [
     ({"name": 1}, "whole.name"), ({"name": "a", "count": True}, "whole.count"), ({}, "whole"),
-    ({"name": "a", "inner": {"colour": "red"}}, "whole.inner.colour"), ({"name": "a", "pairs": [[1.0]]}, "whole.pairs[0]"),
+    ({"name": "a", "inner": {"colour": "red"}}, "whole.inner.colour"),
+    ({"name": "a", "pairs": [[1.0]]}, "whole.pairs[0]"),
     ({"name": "a", "pairs": [[1.0, "2"]]}, "whole.pairs[0]"), ([], "whole"),
 ])
 def test_a_wrong_kind_is_refused_with_its_place(data: object, place: str) -> None:
