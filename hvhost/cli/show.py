@@ -8,7 +8,9 @@ from hvhost.cli.runs import DEFAULT_ROOT, root_of
 from hvhost.measure.result import evaluate
 from hvhost.record.catalogue import find_run
 from hvhost.record.data import load_run
+from hvhost.record.manifest import revisions_of
 from hvhost.report.closing import page_of
+from hvhost.report.resultfile import result_document
 
 VERDICT_CODES = {"pass": exits.PASSED, "fail": exits.FAILED, "not decided": exits.NOT_DECIDED}
 
@@ -22,6 +24,10 @@ def run(argv: list[str]) -> int:
     parser.add_argument("--json", action="store_true")
     options = parser.parse_args(argv)
     folder = find_run(root_of(options.runs), options.run)
-    result = evaluate(load_run(folder))
-    print(json.dumps(result.to_json(), ensure_ascii=False) if options.json else page_of(folder), end="")
+    run = load_run(folder)
+    result = evaluate(run)
+    if options.json:
+        print(json.dumps(result_document(run.meta, result, revisions_of(folder)), ensure_ascii=False))
+    else:
+        print(page_of(folder), end="")
     return VERDICT_CODES[result.verdict.value]

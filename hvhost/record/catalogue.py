@@ -5,9 +5,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+from hvhost.record.amend import AMENDMENT, INSPECTION, amended_sheet
 from hvhost.record.entries import Json
 from hvhost.record.folder import BLOCKS, META, RESULT, RunFolder
+from hvhost.record.manifest import revisions_of
 from hvhost.words.errors import CommandRefused
+
+DELIVERED = "delivered"  # kind of the revision that says where a result went
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -19,8 +23,10 @@ class RunSummary:
     kind: str
     opened_utc_ns: int
     specimen: str
+    order: str
     operator: str
     plan: str
+    bench: str
     outcome: str  # an Outcome's word, 'open' where nothing closed it yet, 'damaged' where META cannot be read
     verdict: str  # 'pass', 'fail', 'not decided', ''
     highest_v: float | None
@@ -28,6 +34,7 @@ class RunSummary:
     time_on_s: float | None
     tag: int
     revisions: int
+    delivery: str  # of its result: 'delivered', 'due', '' where the bench asked for none
 
     @property
     def to_json(self) -> dict[str, Any]:
@@ -46,24 +53,43 @@ def _read_json(path: Path) -> Json:
 
 def summary_of(folder: RunFolder) -> RunSummary:
     """Summarise one folder from its small files; never raises for what they lack."""
-    meta, result = _read_json(folder.path / META), _latest_result(folder)
-    sheet, plan = meta.get("sheet") or {}, meta.get("plan") or {}
+    meta, revisions = _read_json(folder.path / META), revisions_of(folder)
+    result = _latest_result(folder, revisions)
+    sheet, plan, bench = meta.get("sheet") or {}, meta.get("plan") or {}, meta.get("bench") or {}
+    operator = str(meta.get("operator", ""))
+    if revisions:
+        amended = amended_sheet({**sheet, "operator": operator}, revisions)
+        sheet, operator = amended, str(amended["operator"])
     return RunSummary(
         path=folder.path, run=str(meta.get("run", folder.name)), kind=str(meta.get("kind", "")),
         opened_utc_ns=int(meta.get("opened_utc_ns", 0)), specimen=str(sheet.get("specimen", "")),
-        operator=str(meta.get("operator", "")), plan=str(plan.get("title") or plan.get("file", "")),
+        order=str(sheet.get("order") or ""), operator=operator, plan=str(plan.get("title") or plan.get("file", "")),
+        bench=str(bench.get("name") or bench.get("file", "")),
         outcome=str(result.get("outcome", "open")) if meta else "damaged", verdict=str(result.get("verdict", "")),
         highest_v=result.get("highest_v"), breakdown_v=result.get("breakdown_v"), time_on_s=result.get("time_on_s"),
-        tag=int(meta.get("tag", 0)), revisions=len(list(folder.revisions.glob("[0-9]*.json"))))
+        tag=int(meta.get("tag", 0)), revisions=len(revisions), delivery=delivery_of(bench, folder, revisions))
 
 
-def _latest_result(folder: RunFolder) -> Json:
+def _latest_result(folder: RunFolder, revisions: tuple[Json, ...]) -> Json:
     """Return the result, or that of the last revision that carries one."""
-    for path in sorted(folder.revisions.glob("[0-9]*.json"), reverse=True):
-        result = _read_json(path).get("data", {}).get("result")
+    for revision in reversed(revisions):
+        data = revision.get("data")
+        result = data.get("result") if isinstance(data, dict) else None
         if isinstance(result, dict):
             return result
     return _read_json(folder.path / RESULT)
+
+
+def delivery_of(bench: Json, folder: RunFolder, revisions: tuple[Json, ...]) -> str:
+    """Return 'delivered' where a result was handed over after the last correction, 'due', '' where none was asked."""
+    if not bench.get("archive") or not folder.closed:
+        return ""
+    for revision in reversed(revisions):
+        if revision.get("kind") == DELIVERED:
+            return DELIVERED
+        if revision.get("kind") in (AMENDMENT, INSPECTION):
+            break
+    return "due"
 
 
 def list_runs(root: Path) -> tuple[RunSummary, ...]:

@@ -51,7 +51,7 @@ def meta_of(core: Core, spec: RunSpec, checked: Preflight, plan: Plan | None, sh
         opened_mono_s=now_s, operator=spec.operator, polarity=bench.polarity, tick_hz=info.tick_hz,
         sample_ticks=info.sample_ticks, signs=info.signs, voltage=RecordedScale.of(bench.voltage.monitor),
         current=RecordedScale.of(bench.current.monitor), v_program=RecordedScale.of(bench.voltage.program),
-        i_program=RecordedScale.of(bench.current.program), bench=_bench(bench),
+        i_program=RecordedScale.of(bench.current.program), bench=_bench(bench, rehearsal=rehearsal),
         plan=None if plan is None else {
             "file": plan.file, "text": plan.text, "sha256": plan.sha256, "title": plan.title,
             "released_by": plan.release.by if plan.release else ""},
@@ -64,11 +64,12 @@ def meta_of(core: Core, spec: RunSpec, checked: Preflight, plan: Plan | None, sh
         supervisor_state=core.opening_state(), software=f"hvhost {__version__}")
 
 
-def _bench(bench: Bench) -> dict[str, Any]:
+def _bench(bench: Bench, *, rehearsal: bool) -> dict[str, Any]:
     return {"file": bench.file, "text": bench.text, "sha256": bench.sha256, "name": bench.name,
             "bandwidth_hz": bench.bandwidth_hz, "ripple_hz": bench.ripple_hz, "own_f": bench.cable_f,
             "calibrated": bench.calibrated, "touch_v": bench.touch_v, "arm_input": bench.arm_input,
-            "programming_only": bench.programming_only, "monitor_at_specimen": bench.monitor_at_specimen}
+            "programming_only": bench.programming_only, "monitor_at_specimen": bench.monitor_at_specimen,
+            "archive": bench.archive is not None and (bench.archive.rehearsals or not rehearsal)}
 
 
 def _greeting(greeting: Greeting) -> dict[str, Any]:

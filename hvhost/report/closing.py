@@ -17,6 +17,7 @@ from hvhost.record.manifest import check_folder, revisions_of, write_manifest
 from hvhost.record.recovery import being_written, recover_run
 from hvhost.record.repack import repack
 from hvhost.report.page import page
+from hvhost.report.resultfile import corrected, result_document
 from hvhost.words.errors import HvhostError, RecordFault
 
 
@@ -36,8 +37,9 @@ def damage_of(run: RunData) -> tuple[str, ...]:
 
 def page_of(folder: RunFolder) -> str:
     """Return the page of a run as it stands now, its revisions and the state of its files included."""
-    run = load_run(folder)
-    return page(run.meta, evaluate(run), check_folder(folder), revisions_of(folder), damage_of(run))
+    run, revisions = load_run(folder), revisions_of(folder)
+    meta, result = corrected(run.meta, evaluate(run), revisions)
+    return page(meta, result, check_folder(folder), revisions, damage_of(run))
 
 
 def close_run(folder: RunFolder, *, recovered: bool = False) -> Closed:
@@ -54,7 +56,8 @@ def close_run(folder: RunFolder, *, recovered: bool = False) -> Closed:
     result = evaluate(run)
     remarks = []
     try:
-        write_synced(folder.path / RESULT, json.dumps(result.to_json(), indent=1).encode("ascii"))
+        document = result_document(run.meta, result, revisions_of(folder))
+        write_synced(folder.path / RESULT, json.dumps(document, indent=1, allow_nan=False).encode("ascii"))
         write_synced(folder.path / PAGE, page(run.meta, result, None, revisions_of(folder), damage_of(run)).encode())
         exported = export_in_child(folder)
         if exported.fault:

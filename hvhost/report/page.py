@@ -5,7 +5,7 @@ here says that a circuit may be touched.
 """
 
 import textwrap
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from datetime import UTC, datetime
 from math import floor, log10
 
@@ -13,6 +13,7 @@ from hvhost.bench.cautions import BEFORE_TOUCHING, NO_ARM_INPUT, PROGRAMMED_TO_Z
 from hvhost.measure.result import Result
 from hvhost.measure.uncertainty import Value
 from hvhost.measure.verdict import Decision
+from hvhost.record.amend import amended_keys, revision_text
 from hvhost.record.entries import Json
 from hvhost.record.manifest import Check
 from hvhost.record.meta import RunMeta
@@ -24,8 +25,8 @@ WORDS = {Decision.PASS: "PASS", Decision.FAIL: "FAIL", Decision.OPEN: "NOT DECID
 def page(meta: RunMeta, result: Result, check: Check | None = None, revisions: tuple[Json, ...] = (),
          damage: tuple[str, ...] = ()) -> str:
     """Return the whole page, 80 columns, ending in a line feed."""
-    lines = [*_head(meta, result), *_verdict(result), *_applied(meta, result), *_leaked(meta, result),
-             *_arced(meta, result), *_stopped(result), *_cautions(meta, result),
+    lines = [*_head(meta, result, amended_keys(revisions)), *_verdict(result), *_applied(meta, result),
+             *_leaked(meta, result), *_arced(meta, result), *_stopped(result), *_cautions(meta, result),
              *_record(meta, result, check, revisions, damage)]
     return "\n".join(line.rstrip() for line in lines) + "\n"
 
@@ -61,19 +62,24 @@ def _fields(pairs: Iterable[tuple[str, str]]) -> Iterator[str]:
             yield from _field(name, text)
 
 
-def _head(meta: RunMeta, result: Result) -> Iterator[str]:
+def _head(meta: RunMeta, result: Result, changed: Mapping[str, int]) -> Iterator[str]:
     sheet, plan, bench = meta.sheet or {}, meta.plan or {}, meta.bench
+    mark = {key: f" (corrected, revision {number})" for key, number in changed.items()}
+    air = max((number for key, number in changed.items() if key.startswith("environment.")), default=0)
+    environment = _environment(sheet.get("environment")) + (f" (corrected, revision {air})" if air else "")
     yield f"Run {meta.run}: {WORDS[result.verdict]}"
     yield "=" * WIDTH
     yield from _fields((
-        ("specimen", str(sheet.get("specimen") or "")), ("order", str(sheet.get("order") or "")),
+        ("specimen", str(sheet.get("specimen") or "") + mark.get("specimen", "")),
+        ("order", str(sheet.get("order") or "") + mark.get("order", "")),
         ("plan", str(plan.get("title") or plan.get("file") or "direct run, no plan")),
         ("released by", str(plan.get("released_by") or "")),
         ("bench", str(bench.get("title") or bench.get("name") or bench.get("file") or "")),
-        ("kind of run", meta.kind), ("operator", meta.operator),
-        ("second person", str(sheet.get("second_person") or "")), ("opened", utc_text(meta.opened_utc_ns)),
+        ("kind of run", meta.kind), ("operator", meta.operator + mark.get("operator", "")),
+        ("second person", str(sheet.get("second_person") or "") + mark.get("second_person", "")),
+        ("opened", utc_text(meta.opened_utc_ns)),
         ("polarity", "positive" if meta.polarity > 0 else "negative"),
-        ("environment", _environment(sheet.get("environment"))),
+        ("environment", environment),
     ))
 
 
@@ -197,6 +203,7 @@ def _record(meta: RunMeta, result: Result, check: Check | None, revisions: tuple
         yield from _field(name, f"SHA-256 {meta.hashes[name][:32]}…" if len(meta.hashes[name]) > 32
                           else meta.hashes[name])
     for revision in revisions:
-        when = revision.get("utc_ns")
+        when, said = revision.get("utc_ns"), revision_text(revision)
         yield from _field(f"revision {revision.get('number', '?')}",
-                          f"{revision.get('kind', '')}{', ' + utc_text(when) if isinstance(when, int) else ''}")
+                          f"{revision.get('kind', '')}{', ' + utc_text(when) if isinstance(when, int) else ''}"
+                          f"{': ' + said if said else ''}")
