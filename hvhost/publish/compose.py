@@ -30,6 +30,7 @@ from hvhost.publish.snapshot import (
     TrendBucket,
     VoltageState,
 )
+from hvhost.publish.spans import SpanKeeper
 from hvhost.publish.trend import RecentKeeper, TrendKeeper, brief
 from hvhost.samples.blocks import Flags, SampleBlock
 from hvhost.supervisor import states as st
@@ -63,6 +64,7 @@ class Composer:
     def __init__(self, core: Core, utc_of: Callable[[float], int], *, port: str, rehearsal: bool) -> None:
         self.core, self.utc_of, self.port, self.rehearsal = core, utc_of, port, rehearsal
         self.trend, self.recent = TrendKeeper(), RecentKeeper()
+        self._span = SpanKeeper()
         self.verdict_text = ""
         self.folder = ""
         self.record = RecordView()
@@ -87,6 +89,9 @@ class Composer:
                         core.amps(max(sample.i)))
             self.trend.add(*extremes)
             self.recent.add(*extremes)
+            self._span.add(sample.index, sample.pairs, gap=sample.gap, flagged=bool(sample.flags),
+                           volts=(extremes[1], core.volts(sum(sample.v) / sample.pairs), extremes[2]),
+                           amps=(extremes[3], core.amps(sum(sample.i) / sample.pairs), extremes[4]))
             for listener in self.listeners:
                 listener(sample)
         self._look_at_run()
@@ -111,6 +116,7 @@ class Composer:
             power_words=power_words(core), stop=StopState(cut_words(core, now_s)),
             set_volts=set_volts,
             set_amps=bench.current.program.value(sample.i_word) if sample else None, reading=reading,
+            span=self._span.take() if outlets else self._span.so_far,  # a picture for no outlet takes nothing from them
             block_s=core.block_span_s or 0.032, lease_s=bench.lease_s, volts_full=bench.v_max, amps_full=bench.i_max,
             ceiling_volts=run.spec.program.v_highest if run and run.stage is not Stage.CLOSED else bench.v_max,
             trip_amps=_trip_amps(core), inputs=input_views(core), run=self._run(run, course, now_s),

@@ -14,6 +14,7 @@ from dataclasses import dataclass, fields
 from enum import StrEnum
 from typing import Any, NamedTuple, Self, cast
 
+from hvhost.publish.spans import SpanView
 from hvhost.publish.values import plain as plain
 from hvhost.publish.values import typed
 
@@ -311,6 +312,7 @@ class Snapshot:
     set_volts: float | None = None
     set_amps: float | None = None
     reading: Reading | None = None
+    span: SpanView | None = None
     block_s: float = 0.032
     lease_s: float = 0.5
     volts_full: float = 0.0
