@@ -15,6 +15,7 @@ COMMANDS: "dict[str, tuple[str, str]]" = {
     "standin": ("standin", "a bench in software: MCU and plant, faults by name"),
     "rehearse": ("rehearse", "run a plan against a stand-in"),
     "serve": ("serve", "the daemon of one bench"),
+    "diagnose": ("diagnose", "whether this machine, its port and what the bench names are fit"),
     "commission": ("commission", "write a bench file's settings into the MCU"),
     "run": ("run", "check a plan, arm it, follow it to its verdict"),
     "arm": ("arm", "arm the prepared run, or a direct run; --cancel voids it"),
@@ -30,6 +31,7 @@ COMMANDS: "dict[str, tuple[str, str]]" = {
     "recover": ("recover", "close a run that nothing closed"),
     "replay": ("replay", "put a record back through the core: same verdicts, or where they part"),
     "speed": ("speed", "measure the budgets on this machine"),
+    "completion": ("completion", "print a completion script for a shell"),
 }
 
 

@@ -1,4 +1,4 @@
-"""Chooses the port from the device text of a bench file: ``tcp:HOST:PORT`` or a serial device."""
+"""Chooses the port from the device text of a bench file: ``tcp://HOST:PORT`` or a serial device."""
 
 from hvhost.ports.descriptor import DescriptorPort
 from hvhost.words.errors import CannotConnect
@@ -9,10 +9,10 @@ def open_port(device: str, baud: int) -> DescriptorPort:
     if device.startswith("tcp:"):
         from hvhost.ports.tcp import open_tcp
 
-        host, colon, port = device[4:].rpartition(":")
+        host, colon, port = device[4:].removeprefix("//").rpartition(":")
         if not colon or not port.isdecimal() or not 0 < int(port) < 65536:
-            raise CannotConnect("tcp:HOST:PORT", repr(device), "port.device", "correct the bench file")
-        return open_tcp(host, int(port))
+            raise CannotConnect("tcp://HOST:PORT", repr(device), "port.device", "correct the bench file")
+        return open_tcp(host.removeprefix("[").removesuffix("]"), int(port))
     from hvhost.ports.serial import open_serial
 
     return open_serial(device, baud)

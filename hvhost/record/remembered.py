@@ -9,7 +9,7 @@ import os
 from pathlib import Path
 
 from hvhost.record.catalogue import RunSummary, summary_of
-from hvhost.record.folder import BLOCKS, META, RunFolder
+from hvhost.record.folder import BLOCKS, META, REVISIONS, RunFolder
 
 Mark = tuple[int, int]
 
@@ -54,6 +54,6 @@ def _mark(path: str) -> Mark | None:
     except OSError:
         return None
     try:
-        return own, os.stat(path + os.sep + "revisions").st_mtime_ns
+        return own, os.stat(path + os.sep + REVISIONS).st_mtime_ns
     except OSError:
         return own, 0
