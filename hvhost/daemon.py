@@ -218,7 +218,8 @@ class Daemon:
                 if not may_reopen(self.device):
                     continue  # somebody's terminal may have taken the number of the one that was lost
                 with contextlib.suppress(CannotConnect):
-                    self._attach(open_port(self.device, self.bench.port.baud))
+                    # a serial server that does not answer, a driver that waits: not on the loop's thread
+                    self._attach(await asyncio.to_thread(open_port, self.device, self.bench.port.baud))
                     self.say(f"port {self.device} is back")
 
     # ------------------------------------------------------------ time

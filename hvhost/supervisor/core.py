@@ -43,7 +43,7 @@ from hvhost.supervisor.states import (
 from hvhost.supervisor.telling import Teller
 from hvhost.wire.events import BlockIn, LinkEvent
 from hvhost.wire.frames import Block
-from hvhost.wire.greeting import Greeting
+from hvhost.wire.greeting import Greeting, McuInfo
 from hvhost.wire.link import Link
 from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState
 from hvhost.words.findings import Finding
@@ -70,6 +70,7 @@ class Core(Teller):
         self.causes_asked = -1  # the last event when unknown causes were asked for
         self.settings_findings: tuple[Finding, ...] = ()
         self.greeting: Greeting | None = None
+        self.known: McuInfo | None = None  # the board that this core serves, as it was greeted last
         self.link: Link | None = None
         self.link_text = "not connected"
         self.next_stop = 1

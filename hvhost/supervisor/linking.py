@@ -14,7 +14,7 @@ from hvhost.supervisor.runs import Outcome, Stage
 from hvhost.supervisor.states import LinkState, Permission
 from hvhost.wire.events import Ended
 from hvhost.wire.frames import Again
-from hvhost.wire.greeting import Greeting
+from hvhost.wire.greeting import Greeting, McuInfo
 from hvhost.wire.link import Link
 from hvhost.wire.vocabulary import HostRule
 from hvhost.words.errors import CommandRefused
@@ -66,11 +66,14 @@ def adopt(core: "Core", greeting: Greeting, now_s: float) -> None:
     settings = greeting.settings or core.bench.settings()
     findings = compare_settings(core.bench, greeting.settings) if greeting.settings else ()
     core.settings_findings = findings
-    agreed = greeting.settings is not None and not findings
+    strange = stranger(core.known, info)
+    if not strange:
+        core.known = info
+    agreed = greeting.settings is not None and not findings and not strange
     core.state = replace(core.state, link=LinkState.GREETED if agreed else LinkState.OBSERVE)
     core.link_text = (f"greeted {info.firmware}, boot {info.boot}" if agreed else
-                      "observe only: " + ("settings blank or damaged" if greeting.settings is None
-                                          else "; ".join(f.text for f in findings)))
+                      "observe only: " + (strange or ("settings blank or damaged" if greeting.settings is None
+                                                      else "; ".join(f.text for f in findings))))
     core.zeros(settings["vzero"], settings["izero"])
     core.block_span_s = info.block_pairs * info.sample_ticks / info.tick_hz
     core.discharge.unknown("no fall was seen: a low reading alone proves nothing")
@@ -79,6 +82,18 @@ def adopt(core: "Core", greeting: Greeting, now_s: float) -> None:
     core.say(now_s, "note" if agreed else "attention", core.link_text)
     if info.causes:
         core.say(now_s, "attention", f"latched: {', '.join(info.cause_words)}")
+
+
+def stranger(known: McuInfo | None, info: McuInfo) -> str:
+    """Why this cannot be the board that was greeted before on the same port; '' where it can, or none was.
+
+    A board keeps its firmware and never counts its boots down.  What these allow may still be another board of the
+    same kind: then its settings decide, and people.
+    """
+    if known is None or (info.firmware == known.firmware and info.boot >= known.boot):
+        return ""
+    return (f"another board answers: {info.firmware}, boot {info.boot}; it was {known.firmware}, boot {known.boot}; "
+            "if that is meant, end the daemon and start it again")
 
 
 def fresh_judgement(core: "Core") -> None:
