@@ -12,6 +12,7 @@ KINDS: dict[str, tuple[str, str]] = {
     "plan": ("hvhost.plan.language", "plan_schema"),
     "sheet": ("hvhost.plan.sheet", "sheet_schema"),
     "result": ("hvhost.report.resultfile", "result_schema"),
+    "mqtt": ("hvhost.publish.mqtt.topics", "mqtt_schema"),
 }
 
 
