@@ -13,7 +13,7 @@ import pytest
 
 from tests.process.figures import FIGURES
 
-AT_ONCE = 6  # each costs about a tenth of a core; more would make a loaded machine judge itself
+AT_ONCE = 7  # each costs about a tenth of a core; more would make a loaded machine judge itself
 
 HELD = 16  # pseudo-terminals kept open: see `_hold`
 

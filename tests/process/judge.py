@@ -4,6 +4,7 @@ Numbers of the protocol that it needs (states, causes) are written out here from
 """
 
 import json
+import threading
 from collections.abc import Callable
 from itertools import pairwise
 from pathlib import Path
@@ -21,12 +22,27 @@ class Truth:
 
     def __init__(self, path: Path) -> None:
         self.path = path
+        self._lines: list[Line] = []
+        self._states: list[Line] = []
+        self._read = 0
+        self._lock = threading.Lock()
+
+    def _look(self) -> None:
+        """Take the complete lines that were written since the last look."""
+        with self._lock, self.path.open("rb") as file:
+            file.seek(self._read)
+            data = file.read()
+            data = data[: data.rfind(b"\n") + 1]
+            self._read += len(data)
+            fresh = [json.loads(line) for line in data.splitlines()]
+            self._lines += fresh
+            self._states += [line for line in fresh if line["kind"] == "state"]
 
     @property
     def lines(self) -> list[Line]:
         """Every complete line."""
-        text = self.path.read_text(encoding="ascii")
-        return [json.loads(line) for line in text[: text.rfind("\n") + 1].splitlines()]
+        self._look()
+        return list(self._lines)
 
     @property
     def tick_hz(self) -> int:
@@ -36,13 +52,14 @@ class Truth:
     @property
     def states(self) -> list[Line]:
         """State lines in order."""
-        return [line for line in self.lines if line["kind"] == "state"]
+        self._look()
+        return list(self._states)
 
     @property
     def last(self) -> Line:
         """The newest state line, {} before the first."""
-        states = self.states
-        return states[-1] if states else {}
+        self._look()
+        return self._states[-1] if self._states else {}
 
     def events(self, what: str) -> list[Line]:
         """Events of one kind in order."""

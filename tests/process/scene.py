@@ -119,6 +119,12 @@ class Child:
                 self.process.wait(20.0)
         self.kill()
 
+    def end_all(self) -> None:
+        """kill -9 of the process and of those that it started: what is left of a scenario interests nobody."""
+        with contextlib.suppress(ProcessLookupError):
+            os.killpg(self.pid, signal.SIGKILL)
+        self.process.wait()
+
 
 class Scene:
     """One bench of processes; see the module's text."""
@@ -155,10 +161,7 @@ class Scene:
         for client in self._clients:
             client.close()
         for child in reversed(self._children):
-            if child.process.poll() is None:
-                with contextlib.suppress(ProcessLookupError):
-                    child.signal(signal.SIGCONT)
-            child.end()
+            child.end_all()
         shutil.rmtree(self.folder, ignore_errors=True)
 
     # ------------------------------------------------------------ processes
@@ -312,6 +315,12 @@ class Scene:
     def wait_phase(self, phase: str) -> None:
         """Wait until the daemon reports this phase of a run."""
         wait(lambda: self.snapshot().get("phase") == phase, phase)
+
+    def wait_outcome(self) -> dict[str, Any]:
+        """Wait until it is settled how the run ended; its discharge and its record may still be followed."""
+        found = wait(lambda: (s := self.status())["outcome"] and s, "an outcome")
+        assert isinstance(found, dict)
+        return found
 
     def wait_closed(self) -> dict[str, Any]:
         """Wait until the run's record is closed; returns the last status."""

@@ -112,6 +112,7 @@ def test_arcs_count_once_and_overcurrent_latches() -> None:
             status = scene.wait_closed()
             assert status["outcome"] == "tripped", status
             assert "overcurrent" in status["why"]
-            result = scene.result()
-            assert len(result["breakdowns"]) == 2, result["breakdowns"]
-            assert [one["seen_by"] for one in result["breakdowns"]][1] == ["host"], result["breakdowns"]
+            breakdowns = scene.result()["breakdowns"]
+            assert [one["arc"] for one in breakdowns[:2]] == [1, 2], breakdowns
+            assert "host" in breakdowns[1]["seen_by"], breakdowns
+            assert abs(breakdowns[1]["index"] - liar.index) <= COLLAPSED, (breakdowns, liar.index)

@@ -66,8 +66,7 @@ def test_stalled_in_warning() -> None:
         scene.control("press 0.4")
         wait(lambda: scene.truth.last.get("mcu") == WARNING, "the warning")
         gone = stall(scene)
-        status = scene.wait_closed()
-        assert status["outcome"] != "finished"
+        assert scene.wait_outcome()["outcome"] != "finished"
         off = scene.truth.first(lambda line: line["mcu"] == OFF, gone)
         assert off is not None
         assert off["tick"] <= gone + LEASE_S * scene.truth.tick_hz + 20

@@ -74,7 +74,7 @@ def judge_stop(scene: Scene, verb: str, name: str, before: int, asked_s: float) 
     wait(lambda: stopped(scene.truth.last), "the cut", 20.0)
     assert_words_never_rise([line for line in scene.truth.states if line["tick"] >= found["tick"]])
     assert not scene.truth.last["causes"], "an operator's stop latches nothing"
-    status = scene.wait_closed()
+    status = scene.wait_outcome()
     assert status["outcome"] == ("lowered" if verb == "lower" else "cut"), status
 
 
