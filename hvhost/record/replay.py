@@ -34,7 +34,7 @@ from hvhost.supervisor.arming import interfering
 from hvhost.supervisor.commands import open_run
 from hvhost.supervisor.core import Core
 from hvhost.supervisor.runs import RunSpec
-from hvhost.supervisor.seat import Seat
+from hvhost.supervisor.seat import Holder, Seat
 from hvhost.wire.frames import Block, encode_block
 from hvhost.wire.greeting import Greeting, McuInfo
 from hvhost.wire.lines import seal
@@ -92,11 +92,17 @@ class Memory:
             self.told.append(("verdict", tuple(data[key] for key in VERDICT_KEYS)))
 
 
-class OpenSeat(Seat):
-    """A record keeps no tickets: whoever commanded then had the seat."""
+HOLDER = "then"  # stands for the ticket of whoever had control: a record keeps none
 
-    def require(self, ticket: str) -> None:
-        """Anyone may."""
+
+class RecordedSeat(Seat):
+    """Control as the record tells it: of each command whether its sender had it."""
+
+    def take(self, name: str, ticket: str, now_s: float, *, reason: str = "") -> str:
+        """Take it under the one ticket that stands for all."""
+        before = super().take(name, ticket, now_s, reason=reason)
+        self.holder = Holder(name=name, ticket=HOLDER)
+        return before
 
 
 def replay(folder: RunFolder) -> Replayed:
@@ -158,8 +164,9 @@ def feed(core: Core, content: object, signs: str, found: Replayed) -> bool:
         core.timer(content.t_s)
     elif isinstance(content, CommandEntry):
         data = content.data
+        ticket = HOLDER if data.get("control", True) else ""
         try:
-            core.command(content.t_s, str(data["name"]), dict(data["args"]), str(data["who"]))
+            core.command(content.t_s, str(data["name"]), {**data["args"], "ticket": ticket}, str(data["who"]))
         except CommandRefused:
             return True
         core.take_output(content.t_s)
@@ -215,9 +222,9 @@ def core_of(meta: RunMeta) -> Core:
                         info=McuInfo(**info), settings=Settings(tuple(meta.settings)) if meta.settings else None)
     core.resume(greeting, meta.supervisor_state, meta.opened_mono_s,
                 Link.resumed(meta.opened_mono_s, greeting, meta.supervisor_state["link"]))
-    core.seat = OpenSeat()
+    core.seat = RecordedSeat()
     if meta.supervisor_state.get("seat_held"):
-        core.seat.take("then", "then", meta.opened_mono_s)
+        core.seat.take(HOLDER, HOLDER, meta.opened_mono_s)
     open_run(core, RunSpec(run_id=meta.run, kind="direct" if meta.plan is None else "plan",
                            plan=str((meta.plan or {}).get("title", "direct run")),
                            specimen=str((meta.sheet or {}).get("specimen", "")), operator=meta.operator, tag=meta.tag,

@@ -158,10 +158,10 @@ def _seat_acknowledge(core: "Core", now_s: float, args: Args, who: str) -> Done:
 
 def _seat_check(core: "Core", now_s: float, args: Args, who: str) -> Done:
     """Whether this ticket has control; a stop that waits for its acknowledgement takes nothing away."""
-    holder = core.seat.holder
-    if holder is None or holder.ticket != str(args.get("ticket", "")):
-        core.seat.require(str(args.get("ticket", "")))
-    return {"holder": holder.name if holder else "", "stopped_by": core.seat.stopped_by}
+    ticket = str(args.get("ticket", ""))
+    if not core.seat.holds(ticket):
+        core.seat.require(ticket)
+    return {"holder": core.seat.holder.name if core.seat.holder else "", "stopped_by": core.seat.stopped_by}
 
 
 def _stored(core: "Core", now_s: float, args: Args, who: str) -> Done:

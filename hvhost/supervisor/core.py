@@ -30,6 +30,8 @@ from hvhost.supervisor.seat import Seat
 from hvhost.supervisor.states import (
     LIVE,
     MOVE_OF,
+    SEAT_EMPTY_MAX_S,
+    STANDING,
     Consequence,
     Facts,
     LinkState,
@@ -52,6 +54,7 @@ LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least
 ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
 FRESH_KEPT = 512  # judged blocks that nobody has looked at yet: more than one read can hold
 WRAP, HALF = 1 << 32, 1 << 31
+GROUND_OPEN = int(Inputs.GROUND_OPEN)  # plain: IntFlag arithmetic costs a microsecond, here for every block
 
 
 class Core(Teller):
@@ -73,7 +76,7 @@ class Core(Teller):
         self.known: McuInfo | None = None  # the board that this core serves, as it was greeted last
         self.link: Link | None = None
         self.link_text = "not connected"
-        self.next_stop = 1
+        self.next_stop = 1 + sessions() % (1 << 30)  # random: an answer left in a buffer must not match
         self.relink_at: float | None = None
         self.silent = False  # no line for a lease, not yet believed
         self.assembler: Assembler | None = None
@@ -98,6 +101,8 @@ class Core(Teller):
         self._v_gain = abs(bench.voltage.monitor.gain)
         self._i_gain = abs(bench.current.monitor.gain)
         self._v_zero = self._i_zero = 0.0
+        self._tells_ground = bool(bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH))
+        self._settled: tuple[object, ...] = ()  # what the second table looked at when it last asked for nothing
         self.discharge = Discharge(Chain(
             touch_v=bench.touch_v, bleed_s=bench.bleed_s, bleeds=bench.bleeds,
             slew_v_per_s=max(bench.slew_v_per_s, bench.down_slew_v_per_s), u_zero_v=bench.voltage.monitor.u(0.0),
@@ -172,7 +177,8 @@ class Core(Teller):
         """Take one command; raises `CommandRefused`; what it puts on the wire is fetched by `take_output`."""
         self._step(now_s)
         commands.admit(self, name, args)
-        self.journal.command(now_s, {"name": name, "args": dict(args), "who": who})
+        self.journal.command(now_s, {"name": name, "args": dict(args), "who": who,
+                                     "control": self.seat.holds(str(args.get("ticket", "")))})
         result = commands.COMMANDS[name](self, now_s, args, who)
         self.settle(now_s)
         return result
@@ -278,7 +284,7 @@ class Core(Teller):
         self._measure(sample, now_s)
         hearing.inputs_changed(self, sample.inputs, sample.tick, now_s)
         self.events.told(sample.event)
-        if sample.event >= self.events.last:
+        if sample.event >= self.events.last and (sample.state, self.state.permission) not in STANDING:
             self.mcu_in(McuState(sample.state), sample.tick, now_s)
         hearing.ask_events(self, now_s)
         if sample.latched and not self.state.latched:
@@ -303,7 +309,7 @@ class Core(Teller):
             index=sample.index, tick=sample.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
             volts=self._v_zero + self._v_gain * sum(sample.v) / pairs,
             amps=self._i_zero + self._i_gain * sum(sample.i) / pairs,
-            volts_max=self._v_zero + self._v_gain * max(sample.v))
+            volts_max=self._v_zero + self._v_gain * sample.extremes[1])
 
     def _follow_run(self, run: ActiveRun, sample: SampleBlock, now_s: float) -> None:
         assert self.measured is not None
@@ -320,8 +326,7 @@ class Core(Teller):
     def _voltage(self, now_s: float) -> None:
         measured = self.measured
         assert measured is not None
-        grounded = bool(self.bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH)
-                        and not self.inputs & Inputs.GROUND_OPEN)
+        grounded = self._tells_ground and not self.inputs & GROUND_OPEN
         live = self.state.permission in LIVE
         voltage = self.discharge.take(self._t_s, measured.volts, self.bench.voltage.monitor.u(max(0.0, measured.volts)),
                                       live=live, grounded=grounded)
@@ -362,6 +367,8 @@ class Core(Teller):
 
     def settle(self, now_s: float) -> None:
         """Run the second table to a fixed point."""
+        if self._looked_at(now_s) == self._settled:
+            return  # it held then, and holds now
         for _ in range(len(Consequence)):
             run = self.run
             facts = Facts(
@@ -371,9 +378,17 @@ class Core(Teller):
                 stopping=self.link_stopping)
             asked = owed(self.state, facts)
             if not asked:
+                self._settled = self._looked_at(now_s)
                 return
             for consequence in asked:
                 self._obey(consequence, now_s)
+
+    def _looked_at(self, now_s: float) -> tuple[object, ...]:
+        """All that the rows of the second table look at, each number as what its row compares it with."""
+        run, empty_s = self.run, self.seat.empty_since_s
+        return (self.state, run is not None and run.open, run is not None and run.spec.kind == "direct",
+                empty_s is not None and now_s - empty_s >= SEAT_EMPTY_MAX_S, self.recorder_ready,
+                now_s - max(self.block_s, self.awake_s) > self.bench.lease_s, self.link_stopping)
 
     def _obey(self, consequence: Consequence, now_s: float) -> None:
         match consequence:

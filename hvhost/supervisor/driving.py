@@ -26,8 +26,9 @@ NO_ORDERS = frozenset({Permission.IDLE, Permission.REQUESTED, Permission.LOWERIN
 
 def drive(core: "Core", run: ActiveRun, now_s: float) -> None:
     """Hand on what the runner noted, then queue what it orders."""
-    for note in run.runner.take_notes():
-        _noted(core, run, note, now_s)
+    if run.runner.notes:
+        for note in run.runner.take_notes():
+            _noted(core, run, note, now_s)
     link, permission = core.link, core.state.permission
     if link is None or core.link_stopping or run.ended or permission in NO_ORDERS:
         return

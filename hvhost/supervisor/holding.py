@@ -23,6 +23,10 @@ class Holding:
         self.restarts = 0
         self._tick_hz, self._notes = tick_hz, notes
         self._window: deque[Measured] = deque()
+        # what the mean sums up, block by block in the same order: sum() over numbers is ten times a generator's pace
+        self._pairs: deque[int] = deque()
+        self._volts: deque[float] = deque()
+        self._amps: deque[float] = deque()
         self._begun: int | None = None  # tick at which the clock started
         self._due: deque[float] = deque()
 
@@ -36,9 +40,15 @@ class Holding:
         """Take one block into the window, whatever the run does."""
         window = self._window
         window.append(measured)
+        self._pairs.append(measured.pairs)
+        self._volts.append(measured.volts * measured.pairs)
+        self._amps.append(measured.amps * measured.pairs)
         span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
         while len(window) > 1 and measured.end_tick - window[1].tick >= span:
             window.popleft()
+            self._pairs.popleft()
+            self._volts.popleft()
+            self._amps.popleft()
 
     def take(self, step: HoldStep, measured: Measured, origins: Mapping[str, int]) -> tuple[bool, str]:
         """Judge one block of a hold; returns whether the hold is done, and why it failed ('' where it has not)."""
@@ -83,10 +93,8 @@ class Holding:
     # ------------------------------------------------------------ inside
 
     def _mean(self) -> tuple[float, float]:
-        pairs = sum(m.pairs for m in self._window)
-        volts = sum(m.volts * m.pairs for m in self._window) / pairs
-        amps = sum(m.amps * m.pairs for m in self._window) / pairs
-        return volts, amps
+        pairs = sum(self._pairs)
+        return sum(self._volts) / pairs, sum(self._amps) / pairs
 
     def _origin(self, step: HoldStep, origins: Mapping[str, int]) -> int | None:
         return self._begun if step.origin == HOLD_START else origins.get(step.origin)

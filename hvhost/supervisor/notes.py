@@ -4,6 +4,7 @@ from dataclasses import dataclass
 from enum import StrEnum
 
 from hvhost.plan.program import SegmentTarget, Step
+from hvhost.words.values import swift_by_name
 
 
 class Doing(StrEnum):
@@ -54,7 +55,7 @@ class Order:
     arc: int | None = None
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@swift_by_name
 class Measured:
     """One block as the runner needs it: where it lies in time, and its sums in SI."""
 

@@ -34,7 +34,8 @@ class Outcome(StrEnum):
 # The first outcome stands, but a later one takes the place of these while the end is still under way: what happens on
 # the way down belongs to the run.  An interruption is told by who was not there to see the rest.
 OUTRANKED: dict[Outcome, frozenset[Outcome]] = {
-    Outcome.TRIPPED: frozenset({Outcome.FINISHED, Outcome.LOWERED, Outcome.CUT, Outcome.FAILED}),
+    Outcome.TRIPPED: frozenset({Outcome.FINISHED, Outcome.LOWERED, Outcome.CUT, Outcome.FAILED,
+                                Outcome.CANCELLED}),
     Outcome.INTERRUPTED: frozenset({Outcome.FINISHED, Outcome.LOWERED}),
     Outcome.CUT: frozenset({Outcome.LOWERED}),
 }

@@ -42,6 +42,10 @@ class Seat:
         self.empty_since_s = now_s
         return True
 
+    def holds(self, ticket: str) -> bool:
+        """Whether this ticket has the seat."""
+        return self.holder is not None and self.holder.ticket == ticket
+
     def require(self, ticket: str) -> None:
         """Raise unless this ticket holds the seat and has acknowledged any stop by someone else."""
         if self.holder is None:

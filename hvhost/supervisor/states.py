@@ -199,6 +199,10 @@ HOLDS: tuple[tuple[str, Condition, tuple[Consequence, ...]], ...] = (
 )
 
 
+STANDING = frozenset((int(mcu), permission) for mcu, move in MOVE_OF.items() for permission, moves in PERMISSION.items()
+                     if moves.get(move) is permission)  # what a block may report without moving anything
+
+
 def moved(permission: Permission, move: Move) -> Permission | None:
     """Return where ``move`` leads, or None when nobody permitted it."""
     return PERMISSION[permission].get(move)
