@@ -10,9 +10,10 @@ def open_port(device: str, baud: int) -> DescriptorPort:
         from hvhost.ports.tcp import open_tcp
 
         host, colon, port = device[4:].removeprefix("//").rpartition(":")
-        if not colon or not port.isdecimal() or not 0 < int(port) < 65536:
+        number = int(port) if port.isascii() and port.isdecimal() and len(port) <= 5 else 0
+        if not host or not colon or not 0 < number < 65536:
             raise CannotConnect("tcp://HOST:PORT", repr(device), "port.device", "correct the bench file")
-        return open_tcp(host.removeprefix("[").removesuffix("]"), int(port))
+        return open_tcp(host.removeprefix("[").removesuffix("]"), number)
     from hvhost.ports.serial import open_serial
 
     return open_serial(device, baud)

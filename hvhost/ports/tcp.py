@@ -6,6 +6,7 @@ from hvhost.ports.descriptor import DescriptorPort
 from hvhost.words.errors import CannotConnect
 
 CONNECT_S = 5.0
+UNHEARD_MS = 5000  # sent bytes that nobody acknowledges for so long end the connection, so that it is tried again
 
 
 def open_tcp(host: str, port: int) -> DescriptorPort:
@@ -16,4 +17,7 @@ def open_tcp(host: str, port: int) -> DescriptorPort:
         raise CannotConnect("a serial server", str(error), f"tcp:{host}:{port}",
                             "start it, or correct port.device") from None
     link.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+    if hasattr(socket, "TCP_USER_TIMEOUT"):
+        # a server that lost its power says nothing: without this the system waits a quarter of an hour for it
+        link.setsockopt(socket.IPPROTO_TCP, socket.TCP_USER_TIMEOUT, UNHEARD_MS)
     return DescriptorPort(link.fileno(), f"tcp:{host}:{port}", link.close)
