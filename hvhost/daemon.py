@@ -25,7 +25,7 @@ from hvhost.ports.descriptor import DescriptorPort
 from hvhost.ports.opening import open_port
 from hvhost.ports.scheduling import raise_thread, take_realtime
 from hvhost.ports.terminals import may_reopen
-from hvhost.publish import mqtt
+from hvhost.publish import delivering, mqtt
 from hvhost.publish.conversation import Peer
 from hvhost.publish.life import Life
 from hvhost.publish.local import LocalServer
@@ -48,7 +48,10 @@ SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
 LAST_LOWER_S = 2.0  # how long the end waits for a lowering, beyond the longest that the MCU may take
 SERVICE_AGAIN_S = 5.0
-ATTACHED: tuple[Callable[[Bench, Host], None], ...] = (mqtt.attach,)  # each where the bench file names it
+ATTACHED: tuple[Callable[[Bench, Host], None], ...] = (  # each makes its outlet where the bench file names it
+    mqtt.attach,
+    delivering.attach,
+)
 CLOSE_S = 600.0  # exporting and repacking a day of samples takes minutes
 RECORDER = "recorder"  # the name of the recorder's thread
 SLACK_S = 0.0005  # a deadline this much earlier than the set timer is not worth another timer

@@ -11,7 +11,7 @@ if TYPE_CHECKING:
 COMMANDS: "dict[str, tuple[str, str]]" = {
     "demo": ("demo", "the whole job in under a minute, against a stand-in"),
     "check": ("check", "check bench files, plans and run sheets: every fault in one go"),
-    "schema": ("schema", "print the JSON Schema of a bench file, plan or run sheet"),
+    "schema": ("schema", "print the JSON Schema of a bench file, plan, run sheet or result"),
     "standin": ("standin", "a bench in software: MCU and plant, faults by name"),
     "rehearse": ("rehearse", "run a plan against a stand-in"),
     "serve": ("serve", "the daemon of one bench"),
@@ -28,6 +28,9 @@ COMMANDS: "dict[str, tuple[str, str]]" = {
     "watch": ("watch", "the screen"),
     "runs": ("runs", "the catalogue of all runs"),
     "show": ("show", "one run: what was applied, what leaked, why it ended, the verdict"),
+    "export": ("export", "a run's samples as CSV or Parquet"),
+    "amend": ("amend", "correct a closed run's sheet, or enter what a breakdown was, as a revision"),
+    "deliver": ("deliver", "hand the results of closed runs over, as the bench file says"),
     "recover": ("recover", "close a run that nothing closed"),
     "replay": ("replay", "put a record back through the core: same verdicts, or where they part"),
     "speed": ("speed", "measure the budgets on this machine"),

@@ -199,7 +199,7 @@ class Requests:
         return {"snapshot": self.station.snapshot().to_json(), "obstacles": arming.obstacles(self.station.core),
                 "stage": str(run.stage) if run else "", "outcome": str(run.outcome) if run and run.outcome else "",
                 "why": run.why if run else "", "run": run.spec.run_id if run else "",
-                "folder": self.station.composer.folder,
+                "folder": self.station.composer.folder, "runs_folder": str(self.station.runs_root.absolute()),
                 "arm_input": self.station.core.bench.arm_input, "closing": self.station.closing,
                 "verdict": self.station.composer.verdict_text, "recording": self.station.recording is not None}
 

@@ -69,7 +69,7 @@ def amend(folder: RunFolder, changes: Mapping[str, str], *, reason: str, by: str
     if not changes:
         raise CommandRefused("at least one field", "none", "amend", f"one of {', '.join(SPELLINGS)}")
     parsed = {_key(name): _value(name, text) for name, text in changes.items()}
-    with _alone(folder):
+    with alone(folder):
         sheet = amended_sheet(_sheet_of(folder), revisions_of(folder))
         fields = {key: {"from": _in(sheet, key), "to": value} for key, value in parsed.items()}
         same = [key for key, change in fields.items() if change["from"] == change["to"]]
@@ -88,7 +88,7 @@ def inspect_breakdown(folder: RunFolder, number: int, index: int, kind: str, *, 
         near = nearest_word(kind, [str(one) for one in BreakdownKind])
         raise CommandRefused(" or ".join(BreakdownKind), repr(kind)[:60], "kind",
                              f"did you mean '{near}'?" if near else "enter what was seen, not what is likely")
-    with _alone(folder):
+    with alone(folder):
         known = kinds_of(revisions_of(folder)).get(index)
         if known is not None and known.kind == kind:
             raise CommandRefused("another kind", f"{kind} already, by {known.by}", f"breakdown {number}")
@@ -231,7 +231,7 @@ def _shown(value: object) -> str:
 
 
 @contextmanager
-def _alone(folder: RunFolder) -> Iterator[None]:
+def alone(folder: RunFolder) -> Iterator[None]:
     """Hold the folder while a revision is made, so that two at once cannot take one number."""
     if not folder.closed:
         raise CommandRefused("a closed run", "one that is open", folder.name, "close it first: hvhost recover")

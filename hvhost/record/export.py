@@ -18,19 +18,20 @@ class Exported:
     fault: str = ""
 
 
-def export_command(folder: RunFolder) -> tuple[str, ...]:
+def export_command(folder: RunFolder, path: Path | None = None) -> tuple[str, ...]:
     """Return the command line of the child."""
-    return (sys.executable, "-m", "hvhost.record.parquet", str(folder.path))
+    words = (sys.executable, "-m", "hvhost.record.parquet", str(folder.path))
+    return words if path is None else (*words, str(path))
 
 
-def export_in_child(folder: RunFolder, timeout_s: float = TIMEOUT_S) -> Exported:
-    """Write ``samples.parquet``; a child that fails or takes too long leaves the run closed without it."""
+def export_in_child(folder: RunFolder, timeout_s: float = TIMEOUT_S, path: Path | None = None) -> Exported:
+    """Write ``samples.parquet``, or ``path``; a child that fails or takes too long leaves the run closed without it."""
     try:
-        done = subprocess.run(export_command(folder), stdin=subprocess.DEVNULL, capture_output=True, text=True,
+        done = subprocess.run(export_command(folder, path), stdin=subprocess.DEVNULL, capture_output=True, text=True,
                               timeout=timeout_s, check=False)
     except (OSError, subprocess.TimeoutExpired) as error:
         return Exported(path=None, fault=f"the export did not run: {error}")
     if done.returncode:
         words = done.stderr.strip().splitlines()
         return Exported(path=None, fault=words[-1] if words else f"the export ended with code {done.returncode}")
-    return Exported(path=folder.path / SAMPLES)
+    return Exported(path=path or folder.path / SAMPLES)

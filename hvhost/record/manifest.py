@@ -32,6 +32,20 @@ def write_manifest(folder: RunFolder, remarks: tuple[str, ...] = ()) -> Path:
     return folder.manifest
 
 
+def named_in(folder: RunFolder) -> dict[str, str]:
+    """Return file name -> SHA-256 as the manifest has them; empty where there is none."""
+    if not folder.closed:
+        return {}
+    lines = (line.partition("  ") for line in folder.manifest.read_text("utf-8").splitlines() if line[:1] != "#")
+    return {name: digest for digest, _, name in lines}
+
+
+def as_closed(folder: RunFolder, name: str) -> bool:
+    """Whether a file of the folder is the one that was closed."""
+    digest = named_in(folder).get(name)
+    return digest is not None and (folder.path / name).is_file() and file_hash(folder.path / name) == digest
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Check:
     """What a folder's manifest and revisions say: ``closed``, and every file that is not as it was."""
@@ -48,12 +62,8 @@ class Check:
 def check_folder(folder: RunFolder) -> Check:
     """Compare every file with the manifest and follow the chain of revisions."""
     faults: list[str] = []
-    named: dict[str, str] = {}
+    named = named_in(folder)
     if folder.closed:
-        for line in folder.manifest.read_text("utf-8").splitlines():
-            if not line.startswith("#"):
-                digest, _, name = line.partition("  ")
-                named[name] = digest
         faults += [f"{path.name}: not in the manifest" for path in _files(folder) if path.name not in named]
     for name, digest in named.items():
         path = folder.path / name

@@ -1,4 +1,4 @@
-"""Parquet beside the block file: ``python -m hvhost.record.parquet RUNDIR`` (always a process of its own).
+"""Parquet beside the block file: ``python -m hvhost.record.parquet RUNDIR [FILE]`` (always a process of its own).
 
 The first conversion may import half a data-science stack and a damaged input may stop a reader, so the daemon never
 does this itself; ``export.py`` starts it.  Columns, units and metadata: FORMAT.md, section 7.
@@ -104,11 +104,12 @@ def _tables(run: RunData, schema: Any) -> Iterator[Any]:
         yield _table(run, schema, a, min(a + ROWS, run.rows))
 
 
-def export(folder: RunFolder) -> Path:
-    """Write ``samples.parquet`` of a run: whole under its name, or not at all."""
+def export(folder: RunFolder, path: Path | None = None) -> Path:
+    """Write a run's samples, to ``samples.parquet`` where no path is given: whole under its name, or not at all."""
     run = load_run(folder)
     schema = schema_of(run)
-    path, temporary = folder.path / SAMPLES, folder.path / f".{SAMPLES}.tmp"
+    path = path or folder.path / SAMPLES
+    temporary = path.with_name(f".{path.name}.tmp")
     plain = {name for name, *_ in COLUMNS} - {*DELTA, *SCATTERED}
     with pq.ParquetWriter(
             temporary, schema, compression="zstd", compression_level=9, use_dictionary=sorted(plain),
@@ -120,17 +121,17 @@ def export(folder: RunFolder) -> Path:
     with temporary.open("rb+") as file:
         os.fsync(file.fileno())
     temporary.replace(path)
-    sync_folder(folder.path)
+    sync_folder(path.parent)
     return path
 
 
 def main(arguments: list[str]) -> int:
     """Export one run folder; a sentence and code 7 where that fails."""
-    if len(arguments) != 1:
-        print("usage: python -m hvhost.record.parquet RUNDIR", file=sys.stderr)
+    if len(arguments) not in (1, 2):
+        print("usage: python -m hvhost.record.parquet RUNDIR [FILE]", file=sys.stderr)
         return 2
     try:
-        print(export(RunFolder.at(Path(arguments[0]))))
+        print(export(RunFolder.at(Path(arguments[0])), Path(arguments[1]) if arguments[1:] else None))
     except HvhostError as error:
         print(error, file=sys.stderr)
         return error.exit_code

@@ -18,7 +18,7 @@ from typing import Any
 
 from hvhost.measure.breakdowns import NOT_INSPECTED
 from hvhost.measure.result import Result
-from hvhost.record.amend import amended_keys, amended_meta, kinds_of
+from hvhost.record.amend import amended_keys, amended_meta, amended_sheet, kinds_of
 from hvhost.record.entries import Json
 from hvhost.record.meta import RunMeta
 
@@ -60,7 +60,7 @@ def corrected(meta: RunMeta, result: Result, revisions: tuple[Json, ...]) -> tup
     return amended_meta(meta, revisions), replace(result, breakdowns=found, judgements=judgements)
 
 
-def identity_of(meta: RunMeta, revision: int = 0) -> Identity:
+def identity_of(meta: RunMeta) -> Identity:
     """Return a run's identity from its META."""
     sheet, plan, bench = meta.sheet or {}, meta.plan or {}, meta.bench
     calibrated = bench.get("calibrated")
@@ -70,15 +70,27 @@ def identity_of(meta: RunMeta, revision: int = 0) -> Identity:
         second_person=str(sheet.get("second_person") or ""), plan=str(plan.get("title") or plan.get("file") or ""),
         plan_released_by=str(plan.get("released_by") or ""), bench=str(bench.get("name") or bench.get("file") or ""),
         polarity=meta.polarity, calibrated=None if calibrated is None else str(calibrated), hashes=dict(meta.hashes),
-        software=meta.software, revision=revision)
+        software=meta.software, revision=0)
 
 
 def result_document(meta: RunMeta, result: Result, revisions: tuple[Json, ...] = ()) -> dict[str, Any]:
     """Return the content of ``result.json``, corrections included; strict JSON, not-finite numbers as null."""
-    meta, result = corrected(meta, result, revisions)
-    revision = max((*amended_keys(revisions).values(), *(k.revision for k in kinds_of(revisions).values())), default=0)
-    identity = {f.name: _plain(getattr(identity_of(meta, revision), f.name)) for f in fields(Identity)}
-    return {**identity, **{key: _plain(value) for key, value in result.to_json().items()}}
+    identity = identity_of(meta)
+    document = {f.name: _plain(getattr(identity, f.name)) for f in fields(Identity)}
+    return corrected_document({**document, **{k: _plain(v) for k, v in result.to_json().items()}}, revisions)
+
+
+def corrected_document(document: Json, revisions: tuple[Json, ...]) -> dict[str, Any]:
+    """Return a ``result.json`` as it was closed with every later correction and kind of breakdown."""
+    keys, kinds = amended_keys(revisions), kinds_of(revisions)
+    sheet = amended_sheet({}, revisions)
+    out = {**document, **{key: sheet[key] for key in keys if key in document}}
+    breakdowns = [b if not isinstance(b, Mapping) or b.get("index") not in kinds else
+                  {**b, "kind": f"{kinds[b['index']].kind} (seen by {kinds[b['index']].by})"}
+                  for b in document.get("breakdowns") or ()]
+    out["breakdowns"] = breakdowns
+    out["revision"] = max((*keys.values(), *(kind.revision for kind in kinds.values())), default=0)
+    return out
 
 
 def _plain(value: Any) -> Any:
