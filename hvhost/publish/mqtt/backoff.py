@@ -12,11 +12,13 @@ class Backoff:
 
     def __init__(self) -> None:
         self.failures = 0
+        self.short = 0  # connections in a row that the broker took and that ended soon
 
     def stood(self, seconds: float) -> None:
-        """A connection ended after this long."""
+        """A connection that the broker had taken ended after this long."""
+        self.short += 1
         if seconds >= STEADY_S:
-            self.failures = 0
+            self.failures = self.short = 0
 
     def pause_s(self, chance: float, taken_over: bool = False) -> float:
         """Half to all of the bound, which doubles with each failure."""

@@ -136,11 +136,19 @@ class Connection:
             self._properties[expiry_s] = publish_properties(expiry_s)
         return self._properties[expiry_s]
 
-    async def subscribe(self, topic: str) -> str:
-        """Ask for a topic without anything retained; return why it was refused, '' where it was not."""
-        options = SubscribeOptions(qos=1, noLocal=True, retainAsPublished=True, retainHandling=2) if self._v5 else None
+    async def subscribe(self, topic: str, commands: bool) -> str:
+        """Ask for a topic; return why it was refused, '' where it was not.
+
+        Of commands nothing that is stored is wanted (MQTT-3.3.1-11), and a retained one is to be seen as such
+        (3.3.1-13); otherwise what is stored comes first, marked as retained (3.3.1-9, -12).  3.1.1 knows only the
+        latter.
+        """
+        options = None
+        if self._v5:
+            options = SubscribeOptions(qos=1, noLocal=False, retainAsPublished=commands,
+                                       retainHandling=2 if commands else 0)
         try:
-            granted = await self._client.subscribe(topic, qos=1, options=options, timeout=ANSWER_S)
+            granted = await self._client.subscribe(topic, qos=0 if options else 1, options=options, timeout=ANSWER_S)
         except aiomqtt.MqttError as error:
             raise self._fault(error) from None
         code = granted[0].value if isinstance(granted[0], ReasonCode) else granted[0]

@@ -125,6 +125,11 @@ class DiskQueue:
     # ------------------------------------------------------------ using
 
     @property
+    def is_open(self) -> bool:
+        """Whether the folder is ours."""
+        return self._lock is not None
+
+    @property
     def waiting(self) -> int:
         """Events that are on disk and not delivered."""
         return max(0, self.last - self.delivered)

@@ -9,6 +9,7 @@ Commands are judged and carried out within the read callback (`orders`), before 
 
 import asyncio
 import json
+import math
 import random
 import secrets
 import time
@@ -27,6 +28,7 @@ from hvhost.publish.mqtt.faults import BrokerFault
 from hvhost.publish.mqtt.messages import Payload, death_of, description_of, encode, state_of, telemetry_of, text
 from hvhost.publish.mqtt.orders import Orders
 from hvhost.publish.mqtt.telemetry import Interval, IntervalKeeper
+from hvhost.publish.mqtt.telling import Teller
 from hvhost.publish.mqtt.topics import Topic
 from hvhost.publish.mqtt.waiting import Waiting
 from hvhost.publish.outlet import Host
@@ -36,7 +38,6 @@ from hvhost.words.errors import CannotConnect, HvhostError
 READ_AT_ONCE = 64  # events fetched from disk with one call of its thread
 BETWEEN_WINDOWS_S = 0.004  # while a backlog is delivered the loop has room for everything else
 REFUSED_S = (5.0, 60.0)  # events refused by the broker are tried again: first and longest pause
-ALARM_S = 600.0  # how long the state tells of a taken-over session
 REASSERT_S = 1.0
 ANSWERS_KEPT = 20
 TELEMETRY_EXPIRY_LEAST_S = 5
@@ -55,11 +56,12 @@ class MqttOutlet:
         self.bench, self.broker, self.host = bench, bench.broker, host
         self._environment, self._now_s, self._utc_ns, self._chance = environment, now_s, utc_ns, chance
         self.orders = Orders()
-        self.waiting = self._new_waiting()
+        self.waiting = Waiting(DiskQueue(queue_folder(self.broker, environment), self.broker.queue_events), host.say)
+        self.tell = Teller(self.broker.client, self.broker.station, say=host.say, record=self._record, now_s=now_s)
         self.sends = 0
-        self.taken_over = 0
         self._daemon = secrets.token_hex(8)
         self._connections = 0
+        self._born_s = math.nan
         self._connection: Connection | None = None
         self._session = ""
         self._seq: dict[str, int] = {}
@@ -71,15 +73,10 @@ class MqttOutlet:
         self._state_due_s = 0.0
         self._answers: deque[Payload] = deque(maxlen=ANSWERS_KEPT)
         self._wake = asyncio.Event()
-        self._alarm, self._alarm_until_s = "", 0.0
         self._dropped = self._failed = 0
-        self._said: dict[str, float] = {}
         self._events_from_s = 0.0
         self._refused_pause_s = REFUSED_S[0]
         self._proven = False  # the broker took an event on this connection: the window may open
-
-    def _new_waiting(self) -> Waiting:
-        return Waiting(DiskQueue(queue_folder(self.broker, self._environment), self.broker.queue_events), self.host.say)
 
     # ------------------------------------------------------------ the daemon's side
 
@@ -110,43 +107,24 @@ class MqttOutlet:
                 group.create_task(self._connect_for_ever())
         finally:
             await self.waiting.close()
-            self.waiting = self._new_waiting()
 
     async def _connect_for_ever(self) -> None:
         backoff = Backoff()
         while True:
-            began_s, taken_over = self._now_s(), False
+            taken_over = False
+            self._born_s = math.nan
             try:
                 await self._connect()
-            except BrokerFault as fault:
-                taken_over = fault.taken_over
-                self._tell_end(fault)
             except CannotConnect as fault:
                 self._failed += 1
-                self._say_sometimes(f"mqtt: {fault}")
-            backoff.stood(self._now_s() - began_s)
+                self.tell.say(str(fault))
+                if not math.isnan(self._born_s):  # the broker had taken us
+                    backoff.stood(self._now_s() - self._born_s)
+                    taken_over = self.tell.ended(fault, backoff.short)
             await asyncio.sleep(backoff.pause_s(self._chance(), taken_over))
 
-    def _tell_end(self, fault: BrokerFault) -> None:
-        self._failed += 1
-        self._say_sometimes(f"mqtt: {fault}")
-        if fault.taken_over:
-            self.taken_over += 1
-            self._raise_alarm(f"session taken over: another client uses the client id {self.broker.client}")
-
-    def _raise_alarm(self, words: str) -> None:
-        """An alarm is an event, stands in the state for a while, and is told."""
-        if words != self._alarm or self._now_s() >= self._alarm_until_s:
-            self.waiting.add(self._utc_ns(), Severity.ATTENTION, f"MQTT: {words}", self._snapshot)
-        self._say_sometimes(f"mqtt: {words}")
-        self._alarm, self._alarm_until_s = words, self._now_s() + ALARM_S
-
-    def _say_sometimes(self, words: str) -> None:
-        """Say a sentence once a minute at most: a broker that is gone all night must not fill the journal."""
-        now_s = self._now_s()
-        if now_s - self._said.get(words, -1e9) >= 60.0:
-            self._said = {said: at for said, at in self._said.items() if now_s - at < 60.0} | {words: now_s}
-            self.host.say(words)
+    def _record(self, words: str) -> None:
+        self.waiting.add(self._utc_ns(), Severity.ATTENTION, words, self._snapshot)
 
     # ------------------------------------------------------------ one connection
 
@@ -202,18 +180,21 @@ class MqttOutlet:
 
     async def _be_born(self, connection: Connection) -> None:
         self._proven, self._events_from_s, self._refused_pause_s = False, 0.0, REFUSED_S[0]
-        self._state_sent, self._telemetry = {}, None
+        self._state_sent, self._telemetry, self._born_s = {}, None, self._now_s()
+        await self._subscribe(connection, topics.STATE)
         await self._send_state(connection)
         about = description_of(self.bench, f"hvhost {__version__}", self.broker.telemetry_s, self.broker.commands)
         await self._publish(connection, topics.DESCRIPTION, about)
         self._connection = connection
-        wanted = [topics.STATE, *((topics.CUT, topics.LOWER) if self.broker.commands else ())]
-        for topic in wanted:
-            refusal = await connection.subscribe(self._topic(topic))
-            if refusal:
-                self._failed += 1
-                self._say_sometimes(f"mqtt: {self._topic(topic)} cannot be read: {refusal}")
-        self.host.say(f"mqtt: connected to {self.broker.host}:{self.broker.port} as {self.broker.client}")
+        for topic in (topics.CUT, topics.LOWER) if self.broker.commands else ():
+            await self._subscribe(connection, topic)
+        self.tell.say(f"connected to {self.broker.host}:{self.broker.port} as {self.broker.client}")
+
+    async def _subscribe(self, connection: Connection, topic: Topic) -> None:
+        refusal = await connection.subscribe(self._topic(topic), commands=not topic.sent)
+        if refusal:
+            self._failed += 1
+            self.tell.say(f"{self._topic(topic)} cannot be read: {refusal}")
 
     async def _leave(self, connection: Connection) -> None:
         """The last words of an orderly end; where they do not arrive in time the Will says the same."""
@@ -241,8 +222,8 @@ class MqttOutlet:
     async def _send_state(self, connection: Connection) -> None:
         """The state where it changed or its renewal is due; a countdown alone is worth a message a second."""
         state: Payload = dict(self._state) if self._state else {"available": True, "state": "unknown"}
-        if self._now_s() < self._alarm_until_s:
-            state["alarm"] = text(self._alarm)
+        if self.tell.standing:
+            state["alarm"] = text(self.tell.standing)
         if self.waiting.lost_in_all:
             state["events_lost"] = self.waiting.lost_in_all
         if self.orders.refused:
@@ -282,7 +263,7 @@ class MqttOutlet:
         self._proven = False
         self._events_from_s = self._now_s() + self._refused_pause_s
         self._refused_pause_s = min(REFUSED_S[1], 2.0 * self._refused_pause_s)
-        self._say_sometimes(f"mqtt: events wait: the broker refuses {self._topic(topics.EVENT)}: {refusal}")
+        self.tell.say(f"events wait: the broker refuses {self._topic(topics.EVENT)}: {refusal}")
 
     async def _publish(self, connection: Connection, topic: Topic, body: Payload) -> str:
         """Stamp and send one message that is not kept; a refusal is counted, told and returned."""
@@ -291,7 +272,7 @@ class MqttOutlet:
         refusal = await connection.publish(self._outgoing(topic, payload))
         if refusal:
             self._failed += 1
-            self._say_sometimes(f"mqtt: the broker refuses {self._topic(topic)}: {refusal}")
+            self.tell.say(f"the broker refuses {self._topic(topic)}: {refusal}")
         return refusal
 
     def _outgoing(self, topic: Topic, payload: Payload) -> Outgoing:
@@ -309,7 +290,7 @@ class MqttOutlet:
     def _hear(self, topic: str, payload: bytes, retained: bool) -> None:
         """A message came: a command is carried out before this returns; anything else of ours is looked at."""
         if topic == self._topic(topics.STATE):
-            self._hear_state(payload)
+            self._hear_state(payload, retained)
         elif self.broker.commands:
             for one in (topics.CUT, topics.LOWER):
                 if topic == self._topic(one):
@@ -321,28 +302,38 @@ class MqttOutlet:
             order = self.orders.take(command, payload, retained=retained, session=self._session, now_s=self._now_s(),
                                      utc_ns=self._utc_ns())
             answer |= {"counter": order.counter, "from": order.sender}
-            self.host.ask(order.command, {}, f"mqtt:{order.sender}")
-            answer |= {"accepted": True, "text": f"{order.command} done" if command == "cut" else "lowering"}
+            done = self.host.ask(order.command, {}, f"mqtt:{order.sender}")
+            answer |= {"accepted": True, "text": _said_of(order.command, done)}
         except HvhostError as error:
             answer["text"] = text(str(error))
-            self._say_sometimes(f"mqtt: a {command} was refused: {error}")
+            self.tell.say(f"a {command} was refused: {error}")
         self._answers.append(answer)
         self._wake.set()
 
-    def _hear_state(self, payload: bytes) -> None:
-        """Somebody else wrote our state: an old death is overwritten, another daemon is an alarm."""
+    def _hear_state(self, payload: bytes, stored: bool) -> None:
+        """Somebody else wrote our state: an old death is overwritten, another daemon is an alarm.
+
+        What was stored when we came may be an earlier daemon's; once we have been here it is a rival's.
+        """
         try:
             data = json.loads(payload.decode("utf-8"))
             session, available = str(data["session"]), data["available"] is True
         except (ValueError, KeyError, TypeError, RecursionError):
             session, available = "", False
         if session == self._session:
-            return  # our own words, as MQTT 3.1.1 sends them back
-        if available and not session.startswith(self._daemon):
-            self._raise_alarm(f"another daemon publishes as station {self.broker.station}")
-        elif not available:
+            return  # our own words come back
+        if not session.startswith(self._daemon) and (self._connections > 1 if stored else available):
+            self.tell.rival()
+        elif not available and not stored:
             self._state_due_s = min(self._state_due_s, self._now_s() + REASSERT_S)
             self._wake.set()
+
+
+def _said_of(command: str, done: Mapping[str, Any]) -> str:
+    """What became of it so far; whether a cut is confirmed stands in the state (S7)."""
+    if command == "lower":
+        return "lowering" if done.get("lowering", True) else "nothing is energised"
+    return text(str(done.get("text", "cut sent")))
 
 
 def attach(bench: Bench, host: Host, environment: Mapping[str, Any]) -> MqttOutlet:

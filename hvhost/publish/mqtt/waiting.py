@@ -33,7 +33,7 @@ class Waiting:
         self._fresh: deque[Mapping[str, Any]] = deque()
         self._came = asyncio.Event()
         self._seen = 0
-        self._thread = ThreadPoolExecutor(1, thread_name_prefix="mqtt-queue")
+        self._thread: ThreadPoolExecutor | None = None
 
     @property
     def lost_in_all(self) -> int:
@@ -68,6 +68,7 @@ class Waiting:
 
     async def open(self) -> None:
         """Find what waits from before; raises `RecordFault`."""
+        self._thread = ThreadPoolExecutor(1, thread_name_prefix="mqtt-queue")
         await self.call(self.queue.open)
         if self.queue.waiting:
             self.stored.set()
@@ -99,10 +100,13 @@ class Waiting:
         return True
 
     async def close(self) -> None:
-        """Write what is left, once, and let go of the folder."""
+        """Write what is left, once, and let go of the folder; what could not be written stays for the next `open`."""
+        if self._thread is None:
+            return
         try:
-            if self._fresh and self.queue.identity:
+            if self._fresh and self.queue.is_open:
                 await self._store_some()
         finally:
             await self.call(self.queue.close)
             self._thread.shutdown(wait=False)
+            self._thread = None
