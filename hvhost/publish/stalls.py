@@ -28,7 +28,7 @@ from hvhost.publish.snapshot import LoopView
 PERIOD_S = 0.01
 FINEST_S = 1e-6
 PER_OCTAVE = 4
-BUCKETS = PER_OCTAVE * 28  # to 268 s: whatever is longer counts as that
+BUCKETS = PER_OCTAVE * 28 + 1  # to 268 s: whatever is longer counts as that
 RECENT_SPAN_S = 600.0
 RECENT_SPANS = 6  # the worst of the last hour, give or take ten minutes
 PIECES_MAX = 32
