@@ -56,6 +56,7 @@ PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
                st.Permission.LOWERING: (Permission.LOWERING, Phase.NONE)}
 COURSE_EVERY_S = 1.0  # the course is made anew so often, and at once when the run goes on to something else
 RECENT_EVERY_S = 1.0  # a minute's buckets go out so often
+WAITING_MAX = 64  # blocks that wait for a picture before they are folded without one
 
 
 class Composer:
@@ -65,6 +66,7 @@ class Composer:
         self.core, self.utc_of, self.port, self.rehearsal = core, utc_of, port, rehearsal
         self.trend, self.recent = TrendKeeper(), RecentKeeper()
         self._span = SpanKeeper()
+        self._waiting: list[tuple[float, SampleBlock]] = []  # blocks that neither trend nor span has yet
         self.verdict_text = ""
         self.folder = ""
         self.record = RecordView()
@@ -85,21 +87,37 @@ class Composer:
         core, fresh = self.core, self.core.fresh
         while fresh:
             sample = fresh.popleft()
-            extremes = (core.block_s, core.volts(min(sample.v)), core.volts(max(sample.v)), core.amps(min(sample.i)),
-                        core.amps(max(sample.i)))
-            self.trend.add(*extremes)
-            self.recent.add(*extremes)
-            self._span.add(sample.index, sample.pairs, gap=sample.gap, flagged=bool(sample.flags),
-                           volts=(extremes[1], core.volts(sum(sample.v) / sample.pairs), extremes[2]),
-                           amps=(extremes[3], core.amps(sum(sample.i) / sample.pairs), extremes[4]))
+            self._waiting.append((core.block_s, sample))
             for listener in self.listeners:
                 listener(sample)
+        if len(self._waiting) >= WAITING_MAX:
+            self._fold()
         self._look_at_run()
         self._look_at_evidence()
+
+    def _fold(self) -> None:
+        """Take the blocks that wait into trend and span: with each picture, not with each read."""
+        core = self.core
+        for t_s, sample in self._waiting:
+            v_low, v_high, i_low, i_high = sample.extremes
+            v_min, v_max, i_min, i_max = core.volts(v_low), core.volts(v_high), core.amps(i_low), core.amps(i_high)
+            self.trend.add(t_s, v_min, v_max, i_min, i_max)
+            self.recent.add(t_s, v_min, v_max, i_min, i_max)
+            pairs = len(sample.v)
+            self._span.add(sample.index, pairs, gap=sample.gap, flagged=bool(sample.flags),
+                           volts=(v_min, core.volts(sum(sample.v) / pairs), v_max),
+                           amps=(i_min, core.amps(sum(sample.i) / pairs), i_max))
+        self._waiting.clear()
+
+    def clear_trend(self) -> None:
+        """A run is opened: its trend begins with it."""
+        self._fold()
+        self.trend.clear()
 
     def snapshot(self, now_s: float, outlets: tuple[OutletView, ...] = ()) -> Snapshot:
         """Return the whole picture at this time."""
         core, bench = self.core, self.core.bench
+        self._fold()
         self._seq += 1
         permission, phase = PERMISSIONS[core.state.permission]
         if permission is Permission.REQUESTED and core.sample is not None and core.sample.state == McuState.PROVING:
@@ -160,6 +178,7 @@ class Composer:
             return
         if run.spec.run_id != self._run_id:
             self._run_id, self._place, self._evidence = run.spec.run_id, Place(), None
+            self._fold()
             self.recent.clear()
         self._place.look(run.runner.at, run.runner.doing is Doing.RESTING and not sample.v_word, sample.last_tick)
 

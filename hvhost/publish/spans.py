@@ -47,7 +47,14 @@ class SpanKeeper:
 
     def __init__(self) -> None:
         self._next: int | None = None
-        self._span = SpanView()
+        self._begin()
+
+    def _begin(self) -> None:
+        self._pairs = self._unseen = 0
+        self._gap = self._flagged = False
+        self._volts = self._amps = 0.0  # sums over pairs
+        self._v_min = self._i_min = math.inf
+        self._v_max = self._i_max = -math.inf
 
     def add(self, index: int, pairs: int, *, volts: tuple[float, float, float], amps: tuple[float, float, float],
             gap: int = 0, flagged: bool = False) -> None:
@@ -57,20 +64,40 @@ class SpanKeeper:
         """
         unseen = max(0, index - gap - self._next) if self._next is not None else 0
         self._next = index + pairs
-        if pairs < 1 or not all(map(math.isfinite, (*volts, *amps))):
+        v_min, v_mean, v_max = volts
+        i_min, i_mean, i_max = amps
+        if pairs < 1 or not math.isfinite(v_min + v_mean + v_max + i_min + i_mean + i_max):
             return
-        self._span = self._span.joined(SpanView(
-            pairs=pairs, unseen=unseen, gap=gap > 0, flagged=flagged, volts_min=volts[0], volts=volts[1],
-            volts_max=volts[2], amps_min=amps[0], amps=amps[1], amps_max=amps[2]))
+        self._pairs += pairs
+        self._unseen += unseen
+        self._gap = self._gap or gap > 0
+        self._flagged = self._flagged or flagged
+        self._volts += v_mean * pairs
+        self._amps += i_mean * pairs
+        if v_min < self._v_min:
+            self._v_min = v_min
+        if v_max > self._v_max:
+            self._v_max = v_max
+        if i_min < self._i_min:
+            self._i_min = i_min
+        if i_max > self._i_max:
+            self._i_max = i_max
 
     @property
     def so_far(self) -> SpanView:
         """The span since the last `take`, left as it is."""
-        return self._span
+        pairs = self._pairs
+        if not pairs:
+            return SpanView()
+        return SpanView(
+            pairs=pairs, unseen=self._unseen, gap=self._gap, flagged=self._flagged, volts=self._volts / pairs,
+            volts_min=self._v_min, volts_max=self._v_max, amps=self._amps / pairs, amps_min=self._i_min,
+            amps_max=self._i_max)
 
     def take(self) -> SpanView:
         """The span since the last call."""
-        span, self._span = self._span, SpanView()
+        span = self.so_far
+        self._begin()
         return span
 
 

@@ -182,7 +182,7 @@ class Station:
         self.folder, self.recording = opened.folder, opened.recording
         self.composer.folder = str(opened.folder.path)
         self.composer.verdict_text = ""
-        self.composer.trend.clear()
+        self.composer.clear_trend()
         self._journal = RunJournal(opened.recording, self.utc_of)
         self.core.journal = self._journal
         self.machine.gauge.run_opened()

@@ -15,6 +15,40 @@ RECENT_S = 60.0
 RECENT_SPAN_S = 0.5
 
 
+class _Open:
+    """The bucket that blocks are being added to; written for the pace of blocks, not of buckets."""
+
+    __slots__ = ("_i_max", "_i_min", "_t_s", "_v_max", "_v_min", "until_s")
+
+    def __init__(self) -> None:
+        self.until_s = -math.inf  # -inf: no bucket is open
+        self._t_s = self._v_min = self._v_max = self._i_min = self._i_max = 0.0
+
+    def begin(self, block: tuple[float, float, float, float, float], span_s: float) -> None:
+        """Open a bucket with its first block."""
+        self._t_s, self._v_min, self._v_max, self._i_min, self._i_max = block
+        self.until_s = self._t_s + span_s
+
+    def add(self, t_s: float, v_min: float, v_max: float, i_min: float, i_max: float) -> None:
+        """Widen the bucket by a block."""
+        self._t_s = t_s
+        if v_min < self._v_min:
+            self._v_min = v_min
+        if v_max > self._v_max:
+            self._v_max = v_max
+        if i_min < self._i_min:
+            self._i_min = i_min
+        if i_max > self._i_max:
+            self._i_max = i_max
+
+    @property
+    def buckets(self) -> tuple[TrendBucket, ...]:
+        """The open bucket, none where none is."""
+        if self.until_s == -math.inf:
+            return ()
+        return (TrendBucket(self._t_s, self._v_min, self._v_max, self._i_min, self._i_max),)
+
+
 class TrendKeeper:
     """Takes extremes of blocks, gives back buckets; times are host monotonic seconds and never go backwards."""
 
@@ -25,57 +59,55 @@ class TrendKeeper:
     def clear(self) -> None:
         """Begin anew, as at the start of a run."""
         self.span_s = self._first_span_s
-        self._buckets: list[TrendBucket] = []
-        self._open_until_s = -math.inf
+        self._buckets: list[TrendBucket] = []  # closed ones
+        self._open = _Open()
 
     def add(self, t_s: float, v_min: float, v_max: float, i_min: float, i_max: float) -> None:
         """Take the extremes of one block whose last sample is at ``t_s``; values that are not finite are left out."""
-        block = TrendBucket(t_s, v_min, v_max, i_min, i_max)
-        if not all(map(math.isfinite, block)):
+        if not math.isfinite(t_s + v_min + v_max + i_min + i_max):  # one that is not finite makes the sum not finite
             return
-        if self._buckets and t_s <= self._open_until_s:
-            self._buckets[-1] = merged(self._buckets[-1], block)
+        if t_s <= self._open.until_s:
+            self._open.add(t_s, v_min, v_max, i_min, i_max)
             return
+        self._buckets += self._open.buckets
         if len(self._buckets) >= self._kept:
             pairs = zip(self._buckets[::2], self._buckets[1::2], strict=False)
             self._buckets = [merged(*pair) for pair in pairs] + self._buckets[len(self._buckets) // 2 * 2:]
             self.span_s *= 2.0
-        self._buckets.append(block)
-        self._open_until_s = t_s + self.span_s
+        self._open.begin((t_s, v_min, v_max, i_min, i_max), self.span_s)
 
     def buckets(self) -> tuple[TrendBucket, ...]:
         """Return what is kept, oldest first."""
-        return tuple(self._buckets)
+        return (*self._buckets, *self._open.buckets)
 
 
 class RecentKeeper:
     """The last ``RECENT_S`` seconds; the same contract as :class:`TrendKeeper`."""
 
     def __init__(self) -> None:
-        self._buckets: deque[TrendBucket] = deque(maxlen=round(RECENT_S / RECENT_SPAN_S) + 1)
-        self._open_until_s = -math.inf
+        self._buckets: deque[TrendBucket] = deque(maxlen=round(RECENT_S / RECENT_SPAN_S))  # closed ones
+        self._open = _Open()
 
     def clear(self) -> None:
         """Begin anew, as at the start of a run."""
         self._buckets.clear()
-        self._open_until_s = -math.inf
+        self._open = _Open()
 
     def add(self, t_s: float, v_min: float, v_max: float, i_min: float, i_max: float) -> None:
         """Take the extremes of one block; what is older than a minute goes."""
-        block = TrendBucket(t_s, v_min, v_max, i_min, i_max)
-        if not all(map(math.isfinite, block)):
+        if not math.isfinite(t_s + v_min + v_max + i_min + i_max):
             return
-        if self._buckets and t_s <= self._open_until_s:
-            self._buckets[-1] = merged(self._buckets[-1], block)
+        if t_s <= self._open.until_s:
+            self._open.add(t_s, v_min, v_max, i_min, i_max)
         else:
-            self._buckets.append(block)
-            self._open_until_s = t_s + RECENT_SPAN_S
-        while self._buckets[0].t_s < t_s - RECENT_S:
+            self._buckets += self._open.buckets
+            self._open.begin((t_s, v_min, v_max, i_min, i_max), RECENT_SPAN_S)
+        while self._buckets and self._buckets[0].t_s < t_s - RECENT_S:
             self._buckets.popleft()
 
     def buckets(self) -> tuple[TrendBucket, ...]:
         """Return what is kept, oldest first."""
-        return tuple(self._buckets)
+        return (*self._buckets, *self._open.buckets)
 
 
 def merged(early: TrendBucket, late: TrendBucket) -> TrendBucket:
