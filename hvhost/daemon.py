@@ -25,7 +25,7 @@ from hvhost.ports.descriptor import DescriptorPort
 from hvhost.ports.opening import open_port
 from hvhost.ports.scheduling import raise_thread, take_realtime
 from hvhost.ports.terminals import may_reopen
-from hvhost.publish import delivering, mqtt
+from hvhost.publish import delivering, instrument, mqtt
 from hvhost.publish.conversation import Peer
 from hvhost.publish.life import Life
 from hvhost.publish.local import LocalServer
@@ -51,6 +51,7 @@ SERVICE_AGAIN_S = 5.0
 ATTACHED: tuple[Callable[[Bench, Host], None], ...] = (  # each makes its outlet where the bench file names it
     mqtt.attach,
     delivering.attach,
+    instrument.attach,
 )
 CLOSE_S = 600.0  # exporting and repacking a day of samples takes minutes
 RECORDER = "recorder"  # the name of the recorder's thread
