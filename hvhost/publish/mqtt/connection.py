@@ -30,7 +30,7 @@ CONNECT_S = 5.0
 LEAVE_S = 1.0
 LARGEST_IN = 16_384  # bytes of a packet that we take: commands are far shorter
 WINDOW = 8  # acknowledgements outstanding: an hour's events in seconds, and no loop turn above a millisecond
-FAILED = 0x80  # reason codes from here up are failures
+FAILED = UNSPECIFIED = 0x80  # reason codes from here up are failures; this one is what a closed socket gives
 REMEDIES = {BAD_PASSWORD: "see user and password", NOT_AUTHORIZED: "see the broker's access list",
             TAKEN_OVER: "another client uses our client id: give each station its own"}
 _LOG = logging.getLogger("hvhost.mqtt.client")
@@ -188,7 +188,8 @@ def fault_of(error: BaseException, where: str) -> BrokerFault:
     inner = error.__cause__ if isinstance(error.__cause__, Exception) else error
     reason = getattr(inner, "rc", None)
     if isinstance(reason, ReasonCode):
-        return BrokerFault(str(reason).lower(), where, REMEDIES.get(reason.value, ""), reason.value)
+        words = "an end without a reason" if reason.value == UNSPECIFIED else str(reason).lower()
+        return BrokerFault(words, where, REMEDIES.get(reason.value, ""), reason.value)
     text = str(inner).strip() or type(inner).__name__
     return BrokerFault("no answer" if text == "Operation timed out" else text[:200], where)
 
