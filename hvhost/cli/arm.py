@@ -3,7 +3,8 @@
 from hvhost.cli import exits
 from hvhost.cli.follow import Follower, finish
 from hvhost.cli.run import arm_and_follow, tell_opened
-from hvhost.cli.talk import Bench, parser_of, ticket_file, write_ticket
+from hvhost.cli.talk import Bench, parser_of
+from hvhost.publish.tickets import ticket_file, write_ticket
 from hvhost.words.errors import UsageFault
 
 ABOUT = """Arms the run that 'hvhost run --prepare' opened.  Without one, and with --specimen, it opens a direct run
@@ -29,7 +30,7 @@ def run(argv: list[str]) -> int:
         bench.take_seat()
         status = bench.status()
         if status["stage"] == "prepared":
-            return arm_and_follow(bench, status["run"], options)
+            return arm_and_follow(bench, status["run"], options, keep=True)
         if status["stage"] not in ("", "closed"):
             return finish(Follower(bench, status["run"], quiet=options.quiet).follow(), options.json)
         if not options.specimen:

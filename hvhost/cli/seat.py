@@ -3,7 +3,8 @@
 import time
 
 from hvhost.cli import exits
-from hvhost.cli.talk import Bench, parser_of, read_ticket, ticket_file, write_ticket
+from hvhost.cli.talk import Bench, parser_of
+from hvhost.publish.tickets import read_ticket, ticket_file, write_ticket
 
 ABOUT = """Takes control of the bench and keeps it while this command runs; the same user's other commands use it.
 A plan run goes on without anyone in control; a direct run lowers after 10 s.  Stopping needs no control."""

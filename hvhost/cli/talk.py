@@ -3,13 +3,12 @@
 import argparse
 import getpass
 import os
-import stat
-from pathlib import Path
 from typing import Any
 
 from hvhost.cli import exits
 from hvhost.publish.client import Client
 from hvhost.publish.places import one_socket
+from hvhost.publish.tickets import read_ticket
 from hvhost.words.errors import CommandRefused
 
 
@@ -69,32 +68,6 @@ class Bench:
     def status(self) -> dict[str, Any]:
         """The daemon's state."""
         return self.call("status")
-
-
-def ticket_file(socket: str) -> Path:
-    """Where `hvhost seat` keeps its ticket for the same user's other commands."""
-    return Path(socket + ".seat")
-
-
-def read_ticket(socket: str) -> str:
-    """The kept ticket, '' where there is none of ours."""
-    path = ticket_file(socket)
-    try:
-        status = path.stat()
-        if status.st_uid != os.getuid() or stat.S_IMODE(status.st_mode) & 0o077:
-            return ""
-        return path.read_text(encoding="ascii").strip()
-    except (OSError, ValueError):
-        return ""
-
-
-def write_ticket(socket: str, ticket: str) -> None:
-    """Keep a ticket, readable by this user only."""
-    path = ticket_file(socket)
-    path.unlink(missing_ok=True)
-    descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
-    with os.fdopen(descriptor, "w", encoding="ascii") as file:
-        file.write(ticket)
 
 
 def state_line(snapshot: dict[str, Any]) -> str:

@@ -15,16 +15,13 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 
+from hvhost.record.columns import OTHER_STATE, STATES, columns_of
 from hvhost.record.data import RunData, load_run
 from hvhost.record.folder import SAMPLES, RunFolder, sync_folder
 from hvhost.record.manifest import file_hash
-from hvhost.samples.blocks import Flags
-from hvhost.wire.vocabulary import McuState
 from hvhost.words.errors import HvhostError
 
 ROWS = 1 << 17  # rows per group
-STATES = tuple(state.name.lower() for state in McuState)
-OTHER_STATE = "unknown"
 
 COLUMNS: tuple[tuple[str, Any, str, str], ...] = (
     ("t", pa.timestamp("ns", tz="UTC"), "", "when the sample was taken"),
@@ -64,36 +61,12 @@ def _block_file_hash(folder: RunFolder | None) -> str:
     return file_hash(folder.blocks) if folder is not None and folder.blocks.exists() else ""
 
 
-def _flags(run: RunData, a: int, b: int) -> Any:
-    """Return the flags of the rows a to b."""
-    v, i = run.v_code[a:b], run.i_code[a:b]
-    flags = np.where(run.meta.voltage.off_limits(v), 0, int(Flags.LIMIT_V)).astype(np.uint16)
-    flags |= np.where(run.meta.current.off_limits(i), 0, int(Flags.LIMIT_I)).astype(np.uint16)
-    for gap in run.gaps:
-        if a <= gap.row < b:
-            flags[gap.row - a] |= int(Flags.GAP)
-    missed = np.zeros(len(run.head), dtype=np.uint16)
-    missed[1:][np.diff(run.head["missed"].astype(np.int64)) != 0] = int(Flags.MISSED)
-    return flags | missed[run.blocks_of(a, b)]
-
-
 def _table(run: RunData, schema: Any, a: int, b: int) -> Any:
     """Return the rows a to b."""
-    meta, sign = run.meta, run.meta.polarity
-    tick = run.tick(a, b)
-    state = np.minimum(run.of_rows("state", a, b), len(STATES)).astype(np.int8)
-    v_word = meta.v_program.values(run.of_rows("v_word", a, b).astype(np.int32))
-    i_word = meta.i_program.values(run.of_rows("i_word", a, b).astype(np.int32))
-    columns = {
-        "t": pa.array(run.utc_ns(tick), pa.int64()).cast(schema.field("t").type),
-        "tick": tick, "index": run.index(a, b), "host_s": run.of_rows("arrival", a, b),
-        "voltage_kV": (sign * run.volts(a, b) / 1e3).astype(np.float32),
-        "current_mA": (sign * run.amps(a, b) * 1e3).astype(np.float32),
-        "v_set_kV": (sign * v_word / 1e3).astype(np.float32), "i_set_mA": (sign * i_word * 1e3).astype(np.float32),
-        "state": pa.DictionaryArray.from_arrays(pa.array(state), pa.array([*STATES, OTHER_STATE])),
-        "latched": run.of_rows("latched", a, b).astype(np.bool_), "inputs": run.of_rows("inputs", a, b),
-        "arc": run.of_rows("arc", a, b), "flags": _flags(run, a, b),
-    }
+    columns: dict[str, Any] = dict(columns_of(run, a, b))
+    columns["t"] = pa.array(columns["t"], pa.int64()).cast(schema.field("t").type)
+    state = pa.array(columns["state"].astype(np.int8))
+    columns["state"] = pa.DictionaryArray.from_arrays(state, pa.array([*STATES, OTHER_STATE]))
     arrays = [pa.array(column, schema.field(name).type) if isinstance(column := columns[name], np.ndarray) else column
               for name in schema.names]
     return pa.Table.from_arrays(arrays, schema=schema)
