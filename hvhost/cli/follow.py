@@ -1,9 +1,12 @@
 """Follows a run from the shell: event lines as they come, a line of state now and then, Ctrl-C lowers, then cuts."""
 
 import json
+import select
 import signal
+import socket
 import sys
 import time
+from collections.abc import Callable
 from typing import Any
 
 from hvhost.cli import exits
@@ -24,16 +27,29 @@ class Follower:
     def __init__(self, bench: Bench, run: str, *, quiet: bool = False) -> None:
         self.bench, self.run, self.quiet = bench, run, quiet
         self.interrupts = 0
+        self._woken: socket.socket  # readable after each Ctrl-C while following
         self._seen = 0
         self._state_s = 0.0
 
-    def follow(self) -> dict[str, Any]:
-        """Return the last status; raises `CannotConnect` when the daemon goes away."""
+    def follow(self, begin: Callable[[], object] | None = None) -> dict[str, Any]:
+        """Return the last status; raises `CannotConnect` when the daemon goes away.
+
+        ``begin`` (the arm) is called with Ctrl-C caught already, so that none falls between it and the following.
+        """
+        self._woken, waker = socket.socketpair()
+        self._woken.setblocking(False)
+        waker.setblocking(False)
         before = signal.signal(signal.SIGINT, self._interrupted)
+        wakeup_before = signal.set_wakeup_fd(waker.fileno(), warn_on_full_buffer=False)
         try:
+            if begin is not None:
+                begin()
             return self._follow()
         finally:
+            signal.set_wakeup_fd(wakeup_before)
             signal.signal(signal.SIGINT, before)
+            self._woken.close()
+            waker.close()
 
     def _follow(self) -> dict[str, Any]:
         asked = 0
@@ -49,7 +65,7 @@ class Follower:
                 return status
             if status["stage"] == "prepared" and status["why"]:
                 return status
-            time.sleep(POLL_S)
+            self._wait()
 
     def show(self, snapshot: dict[str, Any]) -> None:
         """Print event lines that are new, and a line of state every few seconds."""
@@ -66,6 +82,12 @@ class Follower:
     def skip_old(self, snapshot: dict[str, Any]) -> None:
         """Forget what was said before this moment."""
         self._seen = max((event["number"] for event in snapshot.get("events", ())), default=0)
+
+    def _wait(self) -> None:
+        """Wait for the next look; Ctrl-C ends the wait, so that its stop waits for nothing."""
+        ready, _, _ = select.select([self._woken], [], [], POLL_S)
+        if ready:
+            self._woken.recv(64)
 
     def _interrupted(self, number: int, frame: object) -> None:
         self.interrupts += 1
@@ -84,7 +106,7 @@ def finish(status: dict[str, Any], as_json: bool) -> int:
     verdict = str(status.get("verdict", ""))
     word = verdict.partition(":")[0]
     code = VERDICT_CODES.get(word, exits.NOT_DECIDED)
-    code = OUTCOME_CODES.get(status["outcome"], code)
+    code = exits.REFUSED if status["stage"] == "prepared" else OUTCOME_CODES.get(status["outcome"], code)
     if as_json:
         print(json.dumps({"run": status["run"], "outcome": status["outcome"], "why": status["why"],
                           "verdict": verdict, "folder": status["folder"], "exit": code}))

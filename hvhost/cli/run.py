@@ -1,6 +1,7 @@
 """``hvhost run PLAN``: preflight, record, arm, follow to the verdict."""
 
 import argparse
+import contextlib
 import sys
 from base64 import b64encode
 from pathlib import Path
@@ -9,7 +10,7 @@ from typing import Any
 from hvhost.cli import exits
 from hvhost.cli.follow import Follower, finish
 from hvhost.cli.talk import Bench, parser_of
-from hvhost.words.errors import FileFault, UsageFault
+from hvhost.words.errors import FileFault, HvhostError, UsageFault
 
 ABOUT = """Has the plan and the run sheet checked against the bench, opens the record, asks for the arm and follows the
 run until its record is closed.  Arming takes two acts: this command, then the press at the bench outside the danger
@@ -81,13 +82,41 @@ def tell_opened(opened: dict[str, Any]) -> None:
           f"{opened['v_highest'] / 1e3:g} kV, at most {opened['duration_s']:.0f} s", flush=True)
 
 
-def arm_and_follow(bench: Bench, run_id: str, options: argparse.Namespace) -> int:
-    """The first act of arming, then follow to the close."""
+def arm_and_follow(bench: Bench, run_id: str, options: argparse.Namespace, *, keep: bool = False) -> int:
+    """The first act of arming, then follow to the close; a run that was not armed is cancelled, unless to ``keep``."""
     follower = Follower(bench, run_id, quiet=options.quiet or options.json)
-    status = bench.status()
-    follower.skip_old(status["snapshot"])
-    typed = ""
-    if not status["arm_input"]:
-        typed = input(f"no arm input on this bench; type the run's name to arm ({run_id}): ").strip()
-    bench.call("arm", typed=typed)
-    return finish(follower.follow(), options.json)
+    armed = False
+
+    def arm() -> None:
+        nonlocal armed
+        bench.call("arm", typed=typed)
+        armed = True
+
+    try:
+        status = bench.status()
+        follower.skip_old(status["snapshot"])
+        typed = "" if status["arm_input"] else ask_name(run_id)
+        ended = follower.follow(arm)
+    except (HvhostError, KeyboardInterrupt):
+        if not armed and not keep:
+            cancel(bench)
+        raise
+    if ended["stage"] == "prepared" and not keep:  # the MCU refused
+        cancel(bench)
+    return finish(ended, options.json)
+
+
+def ask_name(run_id: str) -> str:
+    """The first act where the bench has no arm input: the run's name, typed."""
+    print(f"no arm input on this bench; type the run's name to arm ({run_id}): ", end="", file=sys.stderr, flush=True)
+    try:
+        return input().strip()
+    except EOFError:
+        raise UsageFault(f"the run's name typed: {run_id}", "the end of the input", "arm",
+                         "this bench has no arm input: arm it from a terminal") from None
+
+
+def cancel(bench: Bench) -> None:
+    """Leave no prepared run behind."""
+    with contextlib.suppress(HvhostError):
+        print(f"hvhost: not armed, so the run {bench.call('cancel')['cancelled']} is cancelled", file=sys.stderr)
