@@ -328,8 +328,9 @@ class Core(Teller):
         assert measured is not None
         grounded = self._tells_ground and not self.inputs & GROUND_OPEN
         live = self.state.permission in LIVE
-        voltage = self.discharge.take(self._t_s, measured.volts, self.bench.voltage.monitor.u(max(0.0, measured.volts)),
-                                      live=live, grounded=grounded)
+        # energised, nothing is claimed that an uncertainty would bound
+        u_volts = 0.0 if live else self.bench.voltage.monitor.u(max(0.0, measured.volts))
+        voltage = self.discharge.take(self._t_s, measured.volts, u_volts, live=live, grounded=grounded)
         if voltage is not self.state.voltage:
             self.state = replace(self.state, voltage=voltage)
             self.note(now_s, "discharge", voltage=str(voltage), text=self.discharge.text)

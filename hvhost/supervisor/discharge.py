@@ -39,6 +39,7 @@ class Discharge:
 
     def __init__(self, chain: Chain) -> None:
         self.chain = chain
+        self._jump_v = max(RISE_BANDS * self.band_v, 0.5 * chain.touch_v)  # below the floor by this is no noise
         self.state = Voltage.UNKNOWN
         self.text = ""
         self.lost = False  # the reading jumped, and has shown no voltage since
@@ -109,11 +110,11 @@ class Discharge:
             floor = max(self._floor, 0.0) * math.exp(-FASTEST * span_s / self.chain.bleed_s)
             if live:
                 floor -= self.chain.slew_v_per_s * span_s
-            if volts < floor - max(RISE_BANDS * self.band_v, 0.5 * self.chain.touch_v):
+            if volts < floor - self._jump_v:
                 self.lost, self._top, self._floor = True, volts, volts
             else:
                 self._top, self._floor = max(self._top, volts), max(floor, volts)
-            if self._top >= self.seen_v:
+            if self.lost and self._top >= self.seen_v:
                 self.lost = False
         self._last_s = t_s
 

@@ -256,6 +256,11 @@ def encode_request(frame: Request) -> bytes:
     return " ".join(parts).encode("ascii")
 
 
+def renewal(session: int, index: int) -> bytes:
+    """Return the body of a `Renew` as `encode_request` gives it, the short way: it is sent all the time."""
+    return b"renew %08X %d" % (session, index)
+
+
 def split_body(body: bytes) -> tuple[str, list[str], dict[str, str]]:
     """Return verb, positional words and ``key=value`` pairs of a body; malformed ones raise `WireFault`."""
     verb, *rest = body.decode("ascii").split(" ")

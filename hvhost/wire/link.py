@@ -43,12 +43,12 @@ from hvhost.wire.frames import (
     McuEvent,
     Ok,
     Refusal,
-    Renew,
     Segment,
     decode_block,
     decode_received,
     decode_request,
     encode_request,
+    renewal,
 )
 from hvhost.wire.greeter import Greeter
 from hvhost.wire.greeting import Greeting
@@ -126,7 +126,7 @@ class Link:
     @property
     def stopping(self) -> bool:
         """True while a stop waits for its answer or a cut for its confirmation."""
-        return self._stops.cutting or self._stops.waiting
+        return self._stops.stopping
 
     @property
     def next_stop(self) -> int:
@@ -277,7 +277,7 @@ class Link:
         if self._renewed_s is not None and now_s - self._renewed_s < self.lease_s / RENEWALS_PER_LEASE:
             return False
         self._renewed_s = now_s
-        self._outbox.renewal = seal(encode_request(Renew(session=self.session, index=index % WRAP)))
+        self._outbox.renewal = seal(renewal(self.session, index % WRAP))
         return True
 
     # ------------------------------------------------------------ stops
@@ -370,6 +370,8 @@ class Link:
         """Return all that is due now, stops first; what the port does not take comes back through `unsent`."""
         if now_s - self._last_s > self.lease_s:
             self._notices = self._begin(now_s)
+        if self._outbox.empty and self._requests.idle and not self._stops.waiting:
+            return b""
         out, more = self._outbox.take(self._stops.due(now_s))
         if more and self.state is not LinkState.ENDED:
             out += self._requests.due(now_s)

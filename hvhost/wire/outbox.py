@@ -17,6 +17,11 @@ class Outbox:
         self.renewal = b""
         self._torn = False
 
+    @property
+    def empty(self) -> bool:
+        """True where nothing waits to leave."""
+        return not (self.rest or self.renewal or self._torn)
+
     def stale(self) -> None:
         """Throw away what waited through a stall."""
         self._torn, self.rest, self.renewal = self._torn or bool(self.rest), b"", b""

@@ -78,6 +78,11 @@ class Requests:
         line = seal(encode_request(replace(frame, n=number, session=self._session)))
         self.out = Waiting(0, frame, tries, number, line)
 
+    @property
+    def idle(self) -> bool:
+        """True where nothing waits and nothing is outstanding."""
+        return self.out is None and not self.waiting
+
     def due(self, now_s: float) -> bytes:
         """Return the line to write now: the next request, or a repeat of the outstanding one."""
         out = self.out

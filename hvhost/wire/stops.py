@@ -18,6 +18,7 @@ ESCALATE_S = 0.100
 EPSILON_S = 1e-6  # a caller that wakes at the told deadline is not too early by a rounding
 ARCS_MAX = 8  # arcs waiting for an answer; a ninth within 100 ms is no longer a matter of pausing: it cuts
 WRAP = 1 << 32
+_CUTTING = (CutState.SENT, CutState.ANSWERED)
 
 
 @dataclass(slots=True)
@@ -74,7 +75,12 @@ class Stops:
     @property
     def cutting(self) -> bool:
         """True from the decision to cut until the cut is confirmed."""
-        return self.cut_state in (CutState.SENT, CutState.ANSWERED)
+        return self.cut_state in _CUTTING
+
+    @property
+    def stopping(self) -> bool:
+        """True while any stop waits for its answer or a cut for its confirmation."""
+        return (self.cut_state in _CUTTING or self._cut is not None or self._lower is not None or bool(self.arcs))
 
     @property
     def waiting(self) -> bool:

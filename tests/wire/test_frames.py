@@ -114,3 +114,9 @@ def test_base64_with_padding_is_a_field_not_an_option() -> None:
     """A last field that ends with equals signs is not read as ``key=value``, whatever its letters."""
     for text in ("Zm9vYg==", "abcd", "abc=", "ab=="):
         assert decode_received(f"ok 1 snap 3 {text}".encode(), "ss") == Ok(n=1, verb="snap", words=("3", text))
+
+
+@given(st.integers(1, 2**32 - 1), st.integers(0, 2**32 - 1))
+def test_the_renewals_short_way_writes_the_same(session: int, index: int) -> None:
+    """The line that is sent all the time has a writer of its own; it may not differ from the table's."""
+    assert frames.renewal(session, index) == encode_request(frames.Renew(session=session, index=index))
