@@ -244,6 +244,6 @@ class Station:
             self.composer.record = RecordView(ok=not self.failed, text=self.failed or "no run open")
             return
         health = self.recording.health()
+        failed = health.failed or self.failed
         self.composer.record = RecordView(
-            ok=not health.failed,
-            text=health.failed or f"{health.written_bytes / 1024:.0f} KiB, {health.queued} waiting")
+            ok=not failed, text=failed or f"{health.written_bytes / 1024:.0f} KiB, {health.queued} waiting")
