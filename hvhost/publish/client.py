@@ -89,7 +89,7 @@ class Client:
             if "method" in message:
                 self._keep(message)
             elif message.get("id") == request_id:
-                return _result(message)
+                return result_of(message)
             elif message.get("id") is None and "error" in message:
                 raise _error(message["error"])
 
@@ -149,7 +149,8 @@ class Client:
         del self._notifications[:-NOTIFICATIONS_KEPT]
 
 
-def _result(message: "dict[str, Any]") -> "Any":
+def result_of(message: "dict[str, Any]") -> "Any":
+    """Return the result that an answer carries, or raise its error."""
     if "error" in message:
         raise _error(message["error"])
     return message.get("result")

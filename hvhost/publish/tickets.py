@@ -1,4 +1,5 @@
-"""The ticket that proves control, kept for the same user's other programs beside the socket, readable by nobody else."""
+"""The ticket that proves control, kept beside the socket for the same user's other programs; nobody else can read it."""
+
 import os
 import stat
 from pathlib import Path
