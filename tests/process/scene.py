@@ -16,7 +16,7 @@ import tempfile
 import threading
 import time
 from base64 import b64encode
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -79,12 +79,13 @@ def plan_text(steps: str, *, specimen: str = "", extra: str = "", criterion: str
 class Child:
     """A process of ours with its output in files; ended by its own id."""
 
-    def __init__(self, folder: Path, name: str, arguments: list[str], **options: Any) -> None:
+    def __init__(self, folder: Path, name: str, arguments: list[str], env: Mapping[str, str] | None = None,
+                 **options: Any) -> None:
         self.out_path, self.err_path = folder / f"{name}.out", folder / f"{name}.err"
         with self.out_path.open("wb") as out, self.err_path.open("wb") as err:
             self.process = subprocess.Popen(
                 [sys.executable, "-m", "hvhost", *arguments], stdin=subprocess.DEVNULL, stdout=out, stderr=err,
-                start_new_session=True, env={**os.environ, "PYTHONUNBUFFERED": "1"}, **options)
+                start_new_session=True, env={**os.environ, "PYTHONUNBUFFERED": "1", **(env or {})}, **options)
         self.name, self.pid = name, self.process.pid
 
     @property
@@ -207,10 +208,11 @@ class Scene:
         assert self.standin is not None
         self.standin.kill()
 
-    def start_daemon(self, device: str = "", *arguments: str) -> Child:
+    def start_daemon(self, device: str = "", *arguments: str, **options: Any) -> Child:
         """Start the daemon and wait until it answers."""
         self.daemon = made = self.child("serve", "serve", str(self.bench_path), "--port", device or self.device,
-                                        "--socket", self.socket, "--runs", str(self.runs), "--standin", *arguments)
+                                        "--socket", self.socket, "--runs", str(self.runs), "--standin", *arguments,
+                                        **options)
         wait(lambda: self._answers() or self._ended(made), "the daemon's socket")
         self._client, self._ticket = None, ""
         return made
