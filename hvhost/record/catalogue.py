@@ -107,7 +107,9 @@ def unclosed(root: Path) -> tuple[RunFolder, ...]:
 
 
 def find_run(root: Path, name: str) -> RunFolder:
-    """Return the run whose folder name, run number or unique beginning of either is ``name``, or 'last'."""
+    """Return the run whose folder name, run number or unique beginning of either is ``name``, 'last', or a folder."""
+    if "/" in name and ((folder := Path(name).expanduser()) / BLOCKS).exists():
+        return RunFolder(folder.absolute())
     runs = list_runs(root)
     if name == "last" and runs:
         return RunFolder(runs[-1].path)
