@@ -2,7 +2,7 @@
 
 The protocol is that of sd_notify(3): one datagram of ``KEY=value`` lines to the Unix socket named in the environment.
 A manager that does not read must not hold the daemon, so the socket does not block and what it does not take is
-counted and dropped (S12); the next message says the same again.
+counted and dropped (S12).  Readiness and stopping are said once, so these go out again with the next message.
 
 What feeds the watchdog decides what it is worth.  A timer that feeds it proves only that timers run: a guard that
 no longer judges would stay alive for ever behind it.  So there are two ways to feed it, and no third:
@@ -26,6 +26,7 @@ from collections.abc import MutableMapping
 
 FEEDS = 4  # keep-alives in one watchdog time: two may be lost
 STATUS_MAX = 200  # characters
+SAID_ONCE = ("READY=", "STOPPING=")
 ADDRESS, WATCHDOG_US, WATCHDOG_PID = "NOTIFY_SOCKET", "WATCHDOG_USEC", "WATCHDOG_PID"
 
 
@@ -35,6 +36,7 @@ class Notifier:
     def __init__(self, address: str = "", watchdog_s: float | None = None) -> None:
         self.watchdog_s = watchdog_s if address else None
         self.dropped = 0
+        self._owed: tuple[str, ...] = ()
         self._address = "\0" + address[1:] if address.startswith("@") else address  # an abstract name
         self._socket: socket.socket | None = None
         if address:
@@ -52,11 +54,14 @@ class Notifier:
         """Send these lines; False where nobody asked or the socket did not take them (counted)."""
         if self._socket is None:
             return False
+        lines = (*self._owed, *lines)
         try:
             self._socket.sendto("\n".join(lines).encode(), self._address)
         except OSError:
             self.dropped += 1
+            self._owed = tuple(line for line in lines if line.startswith(SAID_ONCE))
             return False
+        self._owed = ()
         return True
 
     def ready(self, status: str) -> None:

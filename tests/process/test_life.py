@@ -73,6 +73,7 @@ def test_a_loop_that_stalls_starves_the_watchdog_and_is_replaced_by_a_passive_da
         scene.start_daemon()
         assert scene.result()["outcome"] == "interrupted"
         assert scene.truth.last["mcu"] != ENERGISED
+        manager.socket.close()
 
 
 def test_a_stop_in_mid_run_lowers_first_and_says_how_long_it_may_take() -> None:
@@ -85,8 +86,10 @@ def test_a_stop_in_mid_run_lowers_first_and_says_how_long_it_may_take() -> None:
         scene.energise(plan_text(RAMP_THEN_HOLD))
         scene.wait_phase("hold")
         asked = scene.tick_now()
+        assert manager.heard  # it reads, as a manager does
         daemon.signal(signal.SIGTERM)
-        assert daemon.wait_end() == 0
+        wait(lambda: manager.heard and daemon.process.poll() is not None, "the daemon's end")
+        assert daemon.process.returncode == 0
         stopping = next(text for _, text in manager.heard if text.startswith("STOPPING=1"))
         assert int(stopping.rpartition("EXTEND_TIMEOUT_USEC=")[2]) > LOWER_MAX_S * 1e6
         words = [line for line in scene.truth.states if line["tick"] >= asked]
@@ -95,6 +98,7 @@ def test_a_stop_in_mid_run_lowers_first_and_says_how_long_it_may_take() -> None:
         assert took_s > 0.5 * max(line["v_word"] for line in words) / DOWN_SLEW  # a ramp, not a cut
         assert scene.result()["outcome"] == "lowered"
         assert not os.path.exists(scene.socket)
+        manager.socket.close()
 
 
 def test_a_standard_error_that_nobody_reads_holds_nobody() -> None:

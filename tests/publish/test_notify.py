@@ -73,6 +73,18 @@ def test_a_manager_that_does_not_read_holds_nobody(manager: Manager, notifier: N
     assert notifier.send("STATUS=again")
 
 
+def test_readiness_that_was_not_taken_goes_with_the_next_message(manager: Manager, notifier: Notifier) -> None:
+    """What is said once must arrive once; a status that was dropped is history."""
+    while notifier.send("STATUS=full"):
+        pass
+    notifier.ready("serving")
+    notifier.stopping("ending", 1.0)
+    manager.taken()
+    notifier.send("WATCHDOG=1")
+    notifier.send("WATCHDOG=1")
+    assert manager.taken() == ["READY=1\nSTOPPING=1\nWATCHDOG=1", "WATCHDOG=1"]
+
+
 def test_without_a_manager_nothing_is_sent_and_nothing_raised(tmp_path: Path) -> None:
     """No address: nothing; an address where nobody listens: counted."""
     silent = Notifier()
