@@ -9,7 +9,8 @@ ROOT = Path(__file__).parent.parent
 PACKAGE = ROOT / "hvhost"
 FLOORS = ("words", "wire", "bench", "samples", "plan", "guard", "supervisor", "record", "measure", "report", "publish",
           "ports", "daemon", "cli")
-BESIDE = {"standin": {"wire", "words"}, "speed": set(FLOORS) | {"standin"}}
+BESIDE = {"standin": {"wire", "words"}, "speed": set(FLOORS) | {"standin"},
+          "client": {"words", "wire", "record", "report", "publish"}}
 # beside the floors above it, a floor may use these
 ALSO = {"cli": {"standin", "speed"}}
 PURE = ("words", "wire", "bench", "samples", "plan", "guard", "supervisor", "measure", "report")

@@ -56,8 +56,8 @@ class Bench:
             self._took = False
         self._client.close()
 
-    def call(self, method: str, **params: Any) -> Any:
-        """Ask for any method of the local socket; raises what the daemon raised."""
+    def _call(self, method: str, **params: Any) -> Any:
+        """Ask for one method of the local socket; raises what the daemon raised."""
         return self._client.call(method, self._who.params(**params))
 
     # ------------------------------------------------------------ control
@@ -77,7 +77,7 @@ class Bench:
             else:
                 self._who = shared
                 return
-        ticket = str(self.call("seat.take", reason=reason)["ticket"])
+        ticket = str(self._call("seat.take", reason=reason)["ticket"])
         self._who = replace(self._who, ticket=ticket)
         write_ticket(self.path, ticket)  # so that this user's `hvhost arm` commands in the same name
         self._took = True
@@ -85,7 +85,7 @@ class Bench:
     def release_control(self) -> None:
         """Free the seat where this client took it; a plan run goes on without, a direct run lowers after 10 s."""
         if self._took:
-            self.call("seat.release")
+            self._call("seat.release")
             ticket_file(self.path).unlink(missing_ok=True)
         self._took = False
         self._who = replace(self._who, ticket="")
@@ -93,7 +93,7 @@ class Bench:
     def acknowledge(self) -> None:
         """Say that a stop by somebody else was seen; until then every set-point is refused."""
         self._need_control()
-        self.call("seat.acknowledge")
+        self._call("seat.acknowledge")
 
     def _need_control(self) -> None:
         if not self._who.ticket:
@@ -108,7 +108,7 @@ class Bench:
         """
         params = asking.set_params(volts, amps, slew)
         self._need_control()
-        self.call("set", **params)
+        self._call("set", **params)
 
     def run(self, plan: str | Path, sheet: str | Path | None = None, *, specimen: str = "", operator: str = "",
             values: Mapping[str, str] | None = None, reason: str = "", repeat_of: str = "") -> Prepared:
@@ -116,16 +116,16 @@ class Bench:
         params = asking.run_params(plan, sheet, specimen=specimen, operator=operator, values=values, reason=reason,
                                    repeat_of=repeat_of)
         self._need_control()
-        return Prepared.of(self.call("run", **params))
+        return Prepared.of(self._call("run", **params))
 
     def direct(self, specimen: str, *, operator: str = "", reason: str = "") -> Prepared:
-        """Prepare a direct run, for set-points by `set`.  It is armed by ``hvhost arm`` and the press, never from here."""
+        """Prepare a direct run, for set-points by `set`; armed by ``hvhost arm`` and the press, never from here."""
         self._need_control()
-        return Prepared.of(self.call("direct", specimen=specimen, operator=operator, reason=reason))
+        return Prepared.of(self._call("direct", specimen=specimen, operator=operator, reason=reason))
 
     def cancel(self) -> str:
         """Void a run that is prepared or armed; returns its name."""
-        return str(self.call("cancel")["cancelled"])
+        return str(self._call("cancel")["cancelled"])
 
     # ------------------------------------------------------------ stops
 
@@ -152,7 +152,7 @@ class Bench:
 
     def status(self) -> Snapshot:
         """Everything that a screen shows, frozen."""
-        return asking.snapshot_of(self.call("snapshot"))
+        return asking.snapshot_of(self._call("snapshot"))
 
     def wait_until(self, condition: Callable[[Snapshot], bool], timeout_s: float) -> Snapshot:
         """Look ten times a second until the condition holds; raises `CannotConnect` after ``timeout_s``."""
@@ -191,7 +191,7 @@ class Bench:
 
     @property
     def _runs(self) -> Runs:
-        return Runs(Path(str(self.call("status")["runs_folder"])))
+        return Runs(Path(str(self._call("status")["runs_folder"])))
 
 
 def _next_readings(line: Client, every: int) -> Readings:

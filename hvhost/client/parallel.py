@@ -118,8 +118,8 @@ class AsyncBench:
             self._line.close()
             self._line = None
 
-    async def call(self, method: str, **params: Any) -> Any:
-        """Ask for any method of the local socket; raises what the daemon raised."""
+    async def _call(self, method: str, **params: Any) -> Any:
+        """Ask for one method of the local socket; raises what the daemon raised."""
         if self._line is None:
             raise CannotConnect("an open connection", "none", self.path, "use `async with`")
         return await self._line.call(method, self._who.params(**params))
@@ -130,12 +130,12 @@ class AsyncBench:
         if kept and not self._who.ticket:
             before, self._who = self._who, replace(self._who, ticket=kept)
             try:
-                await self.call("seat.check")
+                await self._call("seat.check")
             except CommandRefused:
                 self._who = before  # it is of a seat that is over
             else:
                 return
-        ticket = str((await self.call("seat.take", reason=reason))["ticket"])
+        ticket = str((await self._call("seat.take", reason=reason))["ticket"])
         self._who = replace(self._who, ticket=ticket)
         write_ticket(self.path, ticket)
         self._took = True
@@ -143,7 +143,7 @@ class AsyncBench:
     async def release_control(self) -> None:
         """Free the seat where this client took it."""
         if self._took:
-            await self.call("seat.release")
+            await self._call("seat.release")
             ticket_file(self.path).unlink(missing_ok=True)
         self._took = False
         self._who = replace(self._who, ticket="")
@@ -151,7 +151,7 @@ class AsyncBench:
     async def acknowledge(self) -> None:
         """Say that a stop by somebody else was seen."""
         await self._need_control()
-        await self.call("seat.acknowledge")
+        await self._call("seat.acknowledge")
 
     async def _need_control(self) -> None:
         if not self._who.ticket:
@@ -161,7 +161,7 @@ class AsyncBench:
         """Head for a voltage and a current limit, in an energised direct run."""
         params = asking.set_params(volts, amps, slew)
         await self._need_control()
-        await self.call("set", **params)
+        await self._call("set", **params)
 
     async def run(self, plan: str | Path, sheet: str | Path | None = None, *, specimen: str = "", operator: str = "",
                   values: Mapping[str, str] | None = None, reason: str = "", repeat_of: str = "") -> Prepared:
@@ -169,16 +169,16 @@ class AsyncBench:
         params = asking.run_params(plan, sheet, specimen=specimen, operator=operator, values=values, reason=reason,
                                    repeat_of=repeat_of)
         await self._need_control()
-        return Prepared.of(await self.call("run", **params))
+        return Prepared.of(await self._call("run", **params))
 
     async def direct(self, specimen: str, *, operator: str = "", reason: str = "") -> Prepared:
         """Prepare a direct run; it is never armed from here."""
         await self._need_control()
-        return Prepared.of(await self.call("direct", specimen=specimen, operator=operator, reason=reason))
+        return Prepared.of(await self._call("direct", specimen=specimen, operator=operator, reason=reason))
 
     async def cancel(self) -> str:
         """Void a run that is prepared or armed; returns its name."""
-        return str((await self.call("cancel"))["cancelled"])
+        return str((await self._call("cancel"))["cancelled"])
 
     async def lower(self) -> None:
         """Ramp to zero at the down-slew, then cut; needs no control."""
@@ -198,7 +198,7 @@ class AsyncBench:
 
     async def status(self) -> Snapshot:
         """Everything that a screen shows, frozen."""
-        return asking.snapshot_of(await self.call("snapshot"))
+        return asking.snapshot_of(await self._call("snapshot"))
 
     async def wait_until(self, condition: Callable[[Snapshot], bool], timeout_s: float) -> Snapshot:
         """Look ten times a second until the condition holds; raises `CannotConnect` after ``timeout_s``."""
@@ -236,7 +236,7 @@ class AsyncBench:
         return await asyncio.to_thread((await self._runs()).record, name)
 
     async def _runs(self) -> Runs:
-        return Runs(Path(str((await self.call("status"))["runs_folder"])))
+        return Runs(Path(str((await self._call("status"))["runs_folder"])))
 
 
 async def _next_readings(line: Line) -> Readings:

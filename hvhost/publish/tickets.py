@@ -1,4 +1,4 @@
-"""The ticket that proves control, kept beside the socket for the same user's other programs; nobody else can read it."""
+"""The ticket that proves control, kept beside the socket for the same user's other programs and nobody else's."""
 
 import os
 import stat
