@@ -157,8 +157,9 @@ def check_broker(bench: Bench) -> Iterator[Check]:
                 with context.wrap_socket(line, server_hostname=broker.host) as secured:
                     yield ok("broker", f"{where} accepts connections, {secured.version()}, certificate verified")
     except ssl.SSLError as error:
-        yield attention("broker", f"{where}: {error.reason or error}", "see mqtt.ca and the broker's certificate; the "
-                        "daemon runs the same without a broker, and keeps its events")
+        why = getattr(error, "verify_message", "") or str(error)
+        yield attention("broker", f"{where}: {why}", "see mqtt.ca and the broker's certificate; the daemon runs the same "
+                        "without a broker, and keeps its events")
     except OSError as error:
         yield attention("broker", f"{where}: {error.strerror or error}", "see mqtt.host; the daemon runs the same "
                         "without a broker, and keeps its events")
