@@ -158,8 +158,8 @@ def check_broker(bench: Bench) -> Iterator[Check]:
                     yield ok("broker", f"{where} accepts connections, {secured.version()}, certificate verified")
     except ssl.SSLError as error:
         why = getattr(error, "verify_message", "") or str(error)
-        yield attention("broker", f"{where}: {why}", "see mqtt.ca and the broker's certificate; the daemon runs the same "
-                        "without a broker, and keeps its events")
+        yield attention("broker", f"{where}: {why}", "see mqtt.ca and the broker's certificate; the daemon runs the "
+                        "same without a broker, and keeps its events")
     except OSError as error:
         yield attention("broker", f"{where}: {error.strerror or error}", "see mqtt.host; the daemon runs the same "
                         "without a broker, and keeps its events")
