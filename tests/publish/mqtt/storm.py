@@ -1,4 +1,4 @@
-"""A broker that is killed, restarted, frozen and cut off, and a daemon restarted, at random moments: every event arrives.
+"""A broker killed, restarted, frozen and cut off, and a daemon restarted, at random moments: every event arrives.
 
 ``python -m tests.publish.mqtt.storm [MOMENTS] [--seed N]`` (100 moments unless told).  The judge is a subscriber of
 the tests' own: repeats dropped by id, the events must come as they happened, each of them.
@@ -95,6 +95,8 @@ class Storm:
         self.scene: Scene
         self._serving: asyncio.Task[None] | None = None
         self._ended = False
+        self._happening = asyncio.Event()
+        self.moments: list[tuple[int, str]] = []  # which blow came when so many events had happened
         self.longest_stall_s = 0.0
 
     # ------------------------------------------------------------ the judge
@@ -126,8 +128,12 @@ class Storm:
         wanted = [f"event {n}" for n in range(1, self.offered + 1)]
         alarms = [words for words in seen if not words.startswith("event")]
         happened = [words for words in seen if words.startswith("event")]
-        wrong = [] if happened == wanted else [f"{len(happened)} of {len(wanted)} came, or in another order: "
-                                               f"{[a for a, b in zip(happened, wanted, strict=False) if a != b][:5]}"]
+        wrong = []
+        if happened != wanted:
+            lacking = sorted(set(wanted) - set(happened), key=lambda words: int(words.split()[1]))
+            first = next((n for n, (a, b) in enumerate(zip(happened, wanted, strict=False)) if a != b), len(happened))
+            wrong = [f"{len(happened)} of {len(wanted)} came; lacking {lacking[:9]}; parts at event {first + 1}; blows "
+                     f"{[one for one in self.moments if abs(one[0] - first) < 200]}"]
         return wrong + [words for words in alarms if not words.startswith("MQTT:")]
 
     def complete(self) -> bool:
@@ -140,10 +146,12 @@ class Storm:
         """A daemon with the queue that the one before left; its numbers of snapshot lines begin anew."""
         self.scene = Scene(self.folder, port=self.relay.port)
         self._serving = asyncio.create_task(self.scene.outlet.serve())
+        self._happening.set()
 
     async def end_daemon(self) -> None:
         """The daemon ends in good order."""
         assert self._serving is not None
+        self._happening.clear()  # nothing happens on a bench whose daemon has ended
         self._serving.cancel()
         with contextlib.suppress(asyncio.CancelledError):
             await self._serving
@@ -154,6 +162,7 @@ class Storm:
             before_s = time.monotonic()
             await asyncio.sleep(0.01)
             self.longest_stall_s = max(self.longest_stall_s, time.monotonic() - before_s - 0.01)
+            await self._happening.wait()
             self.offered += 1
             self.scene.offer(f"event {self.offered}", after_s=0.01)
 
@@ -163,6 +172,7 @@ class Storm:
         """One blow, some time, and what ends it."""
         await asyncio.sleep(self.random.uniform(0.0, 0.4))
         last_s = self.random.uniform(0.0, 0.4)
+        self.moments.append((self.offered, kind))
         if kind == "kill":
             self.broker.kill()
             await asyncio.sleep(last_s)
