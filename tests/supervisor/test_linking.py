@@ -1,53 +1,80 @@
-"""Which board answers after the port was lost: the one that was greeted, or another under its name."""
-
-from dataclasses import replace
+"""Greeting, losing and finding an MCU again."""
 
 import pytest
 
-from hvhost.supervisor.linking import stranger
-from hvhost.supervisor.states import LinkState
-from hvhost.wire.greeting import McuInfo
-from hvhost.words.errors import CommandRefused
-from tests.supervisor.lab import Lab
+from hvhost.supervisor.linking import RELINK_S
+from hvhost.supervisor.states import LinkState, Permission, Voltage
+from hvhost.wire.vocabulary import Cause
+from tests.supervisor.lab import DEMO, Lab
 
 
-@pytest.fixture
-def info(lab: Lab) -> McuInfo:
-    """What the demonstration bench's board says of itself."""
+def test_a_greeting_takes_over_what_the_mcu_says(lab: Lab) -> None:
+    """Causes, counters, settings; nothing is armed, nothing claimed."""
     lab.greet()
+    assert lab.core.state.link is LinkState.GREETED
+    assert lab.core.state.latched == Cause.RESTARTED
+    assert lab.core.state.voltage is Voltage.UNKNOWN
     assert lab.core.greeting is not None
-    return lab.core.greeting.info
+    assert lab.core.greeting.settings == DEMO.settings()
 
 
-def test_the_same_board_is_known_whatever_happened_to_it(info: McuInfo) -> None:
-    """Never greeted, greeted again, restarted once or many times: it may be the same."""
-    assert stranger(None, info) == ""
-    assert stranger(info, info) == ""
-    for boots in (1, 2, 1000):
-        assert stranger(info, replace(info, boot=info.boot + boots)) == ""
+def test_an_mcu_that_does_not_answer_is_tried_again(lab: Lab) -> None:
+    """Lost after the hello's tries, greeted as soon as it answers."""
+    lab.fault("mute")
+    lab.station.connect()
+    lab.until(lambda: lab.core.state.link is LinkState.LOST, 5.0)
+    assert lab.core.relink_at == pytest.approx(lab.now_s + RELINK_S, abs=0.01)
+    lab.mend("mute").until(lambda: lab.core.state.link is LinkState.GREETED, 5.0)
 
 
-def test_another_firmware_or_fewer_boots_is_another_board(info: McuInfo) -> None:
-    """Both are named, with what to do."""
-    known = replace(info, boot=12)
-    assert stranger(known, replace(known, boot=11)) == (
-        f"another board answers: {info.firmware}, boot 11; it was {info.firmware}, boot 12; "
-        "if that is meant, end the daemon and start it again")
-    assert "other-7, boot 12" in stranger(known, replace(known, firmware="other-7"))
-
-
-def test_another_board_on_the_same_port_is_observed_only_until_the_first_is_back(lab: Lab) -> None:
-    """Settings that agree do not help: nothing is armed on a board that nobody chose."""
+def test_a_silence_of_an_idle_bench_loses_the_link_and_the_reading(lab: Lab) -> None:
+    """No claim from an old block (S13), and the picture shows no number."""
     lab.ready()
-    known = lab.core.known
-    assert known is not None
-    lab.core.known = replace(known, boot=41)
+    lab.fault("mute").pass_s(0.7)
+    assert lab.core.state.link is LinkState.LOST
+    assert lab.picture().reading is None
+    assert lab.core.state.voltage is Voltage.UNKNOWN
+
+
+def test_another_session_ends_ours(lab: Lab) -> None:
+    """Somebody else greeted the MCU: ours is over, and tried again after a pause."""
+    lab.ready()
+    old = lab.core.link
+    lab.board.feed(_hello())
+    lab.until(lambda: lab.core.state.link is LinkState.LOST, 2.0)
+    lab.until(lambda: lab.core.state.link is LinkState.GREETED, 5.0)
+    assert lab.core.link is not old
+
+
+def _hello() -> bytes:
+    from hvhost.wire.frames import Hello, encode_request
+    from hvhost.wire.lines import seal
+
+    return seal(encode_request(Hello(n=(1 << 31) + 5, session=99, version=1, lease_ms=500)))
+
+
+def test_numbers_of_stops_go_on_in_the_next_session(lab: Lab) -> None:
+    """An answer to an old stop confirms no new one."""
+    lab.ready()
+    first = lab.ask("cut")["number"]
+    lab.pass_s(0.2).unplug().plug()
+    lab.until(lambda: lab.core.state.link is LinkState.GREETED, 5.0)
+    assert lab.ask("cut")["number"] > first
+
+
+def test_a_prepared_run_is_cancelled_by_a_lost_link(lab: Lab) -> None:
+    """It was never armed, so it was not interrupted."""
+    lab.ready().prepare()
     lab.unplug()
-    lab.plug().until(lambda: lab.core.state.link is LinkState.OBSERVE, 5.0)
-    assert lab.core.link_text.startswith("observe only: another board answers: standin-demo, boot 1; ")
-    with pytest.raises(CommandRefused):
-        lab.prepare()
-    lab.ask("lower")  # a stop still goes out
-    lab.unplug()
-    lab.core.known = known
-    lab.plug().until(lambda: lab.core.state.link is LinkState.GREETED, 5.0)
+    assert lab.run.outcome == "cancelled"
+    assert lab.permission is Permission.IDLE
+
+
+def test_time_goes_on_through_the_wrap_of_the_ticks(lab: Lab) -> None:
+    """Bleed times are counted by differences of 32-bit ticks."""
+    lab.ready()
+    core = lab.core
+    at = core.time_at(core.sample.tick)  # type: ignore[union-attr]
+    assert core.last_tick is not None
+    core._t_s += ((core.last_tick + (1 << 32) - 5_000 - core.last_tick + (1 << 31)) % (1 << 32) - (1 << 31)) / 1e4
+    assert core.time_at(core.sample.tick) == pytest.approx(at - 0.5)  # type: ignore[union-attr]
