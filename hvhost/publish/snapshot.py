@@ -246,8 +246,9 @@ class LoopView:
     """How late the daemon's event loop was (see `publish.stalls`), in seconds.
 
     ``longest_s`` and ``p999_s`` since it began, ``recent_s`` in about the last hour, ``run_s`` since the run was
-    opened; ``own_s`` is the most of a lateness that this process itself can have caused; ``turn_s`` the longest turn,
-    ``piece_s`` the longest single piece of work and ``piece`` its name.
+    opened; ``own_s`` is the most of a lateness that this process itself can have caused; ``turn_s`` the longest turn
+    and ``turn_own_s`` the one that took most processor time; ``piece_s`` the longest single piece of work and
+    ``piece`` its name; ``read_s`` the median of what one read costs, the protective path and all that follows it.
     """
 
     longest_s: float = 0.0
@@ -256,8 +257,10 @@ class LoopView:
     own_s: float = 0.0
     run_s: float = 0.0
     turn_s: float = 0.0
+    turn_own_s: float = 0.0
     piece: str = ""
     piece_s: float = 0.0
+    read_s: float = 0.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -8,7 +8,8 @@ Three figures, since one alone misleads:
 * *Own part of the lateness*: the processor time that this whole process used since the timer ran last, at most the
   lateness.  It bounds from above what we ourselves can have caused; the rest is the machine's.
 * *Turns and pieces*: wall and processor time of one turn of the loop (everything between two looks at the
-  descriptors), and wall time of the named pieces of work in it, so that the longest single callback has a name.
+  descriptors), the longest of each by itself, and wall time of the named pieces of work in it, so that the longest
+  single callback has a name.  Wall time holds what the machine did meanwhile; processor time is our own doing.
 
 A stall counts once: beats that fell into it are not made up for.  Percentiles come from counts in buckets a quarter
 of an octave wide, so they are read within 19 %.
@@ -32,6 +33,7 @@ BUCKETS = PER_OCTAVE * 28 + 1  # to 268 s: whatever is longer counts as that
 RECENT_SPAN_S = 600.0
 RECENT_SPANS = 6  # the worst of the last hour, give or take ten minutes
 PIECES_MAX = 32
+READ = "read"  # the piece that is the protective path
 VIEW_S = 1.0
 
 P = ParamSpec("P")
@@ -89,7 +91,7 @@ class StallGauge:
     def start(self) -> None:
         """Begin to beat on the running loop; what came before, the start of the program, is forgotten."""
         loop = asyncio.get_running_loop()
-        self.turns, self.turn_s, self._turn = Spread(), 0.0, None
+        self.turns, self.turn_s, self.turn_processor_s, self._turn = Spread(), 0.0, 0.0, None
         self._beat_at(loop, loop.time() + PERIOD_S)
 
     def stop(self) -> None:
@@ -139,8 +141,8 @@ class StallGauge:
             return
         seconds = time.perf_counter() - self._turn[0]
         self.turns.add(seconds)
-        if seconds >= self.turn_s:
-            self.turn_s, self.turn_processor_s = seconds, time.thread_time() - self._turn[1]
+        self.turn_s = max(self.turn_s, seconds)
+        self.turn_processor_s = max(self.turn_processor_s, time.thread_time() - self._turn[1])
 
     def timed(self, name: str, call: Callable[P, R]) -> Callable[P, R]:
         """The same call, its time counted under this name."""
@@ -166,7 +168,7 @@ class StallGauge:
         """What a run's record keeps, in seconds."""
         view = self.view(float("inf"))
         return {"run_s": self.run_s, "longest_s": view.longest_s, "p999_s": view.p999_s, "own_s": view.own_s,
-                "turn_s": view.turn_s, "turn_processor_s": self.turn_processor_s, "piece": view.piece,
+                "turn_s": view.turn_s, "turn_own_s": view.turn_own_s, "piece": view.piece,
                 "piece_s": view.piece_s, "beats": self.late.count}
 
     def view(self, now_s: float) -> LoopView:
@@ -176,8 +178,9 @@ class StallGauge:
         piece, spread = max(self.pieces.items(), key=lambda item: item[1].longest_s, default=("", Spread()))
         view = LoopView(longest_s=round(self.late.longest_s, 5), recent_s=round(self.recent_s, 5),
                         p999_s=round(self.late.quantile(0.999), 5), own_s=round(self.own_s, 5),
-                        run_s=round(self.run_s, 5), turn_s=round(self.turn_s, 5), piece=piece,
-                        piece_s=round(spread.longest_s, 5))
+                        run_s=round(self.run_s, 5), turn_s=round(self.turn_s, 5),
+                        turn_own_s=round(self.turn_processor_s, 5), piece=piece, piece_s=round(spread.longest_s, 5),
+                        read_s=round(self.pieces[READ].quantile(0.5), 7) if READ in self.pieces else 0.0)
         self._view = (now_s, view)
         return view
 
