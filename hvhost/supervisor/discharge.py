@@ -43,7 +43,7 @@ class Discharge:
         self.state = Voltage.UNKNOWN
         self.text = ""
         self.lost = False  # the reading jumped, and has shown no voltage since
-        self.cut_s: float | None = None  # tick time of the last cut, or since when the output is seen off
+        self.cut_s: float | None = None  # tick time of the last cut that was told; None while energised
         self._last_s: float | None = None
         self._top = -math.inf  # highest reading of the stretch without a jump
         self._floor = -math.inf  # below this no discharge can have led
@@ -67,7 +67,7 @@ class Discharge:
         return max(SEEN_TIMES * self.chain.touch_v, self.chain.touch_v + RISE_BANDS * self.band_v)
 
     def bleeds_passed(self, t_s: float) -> float | None:
-        """Bleed times since the last cut (or since the output is seen off), None before and while energised."""
+        """Bleed times since the last cut; None while energised and where no cut was told in this session."""
         return None if self.cut_s is None else max(0.0, t_s - self.cut_s) / self.chain.bleed_s
 
     def cut(self, t_s: float) -> None:
@@ -89,8 +89,6 @@ class Discharge:
             self._forget_reached()
             self._say(Voltage.PRESENT, "output energised")
             return self.state
-        if self.cut_s is None:
-            self.cut_s = t_s
         if grounded:
             self._grounded(upper)
         elif not self.provable:
