@@ -16,7 +16,8 @@ print(f"{now.bench}: link {now.link}, {now.permission}, voltage {now.voltage}, c
 
 # %% [markdown]
 # ## Prepare a direct run
-# Set-points by hand under the bench file's limits.  A plan instead: `bench.run("withstand.plan.yaml", "my.sheet.yaml")`.
+# Set-points by hand under the bench file's limits.
+# A plan instead: `bench.run("withstand.plan.yaml", "my.sheet.yaml")`.
 
 # %%
 prepared = bench.direct("NB-1", operator="notebook", reason="trial of the notebook")
@@ -52,7 +53,8 @@ for volts, mean, highest in steps:
 bench.wait_until(lambda s: s.verdict_text != "", 120)
 record = bench.record(prepared.run)
 live = record["state"] == "energised"
-print(f"{record.summary.outcome}: {live.sum()} samples energised, highest {np.abs(record['voltage_kV'][live]).max():.3f} kV")
+highest = np.abs(record["voltage_kV"][live]).max()
+print(f"{record.summary.outcome}: {live.sum()} samples energised, highest {highest:.3f} kV")
 for run in bench.runs("highest > 0.5 kV and opened >= 2026-01-01"):
     print(run.run, run.specimen, run.outcome, run.verdict)
 bench.close()

@@ -15,9 +15,11 @@ import pytest
 from hvhost.publish import jsonrpc
 from hvhost.publish.conversation import Peer
 from hvhost.publish.local import LocalLimits, LocalServer
+from hvhost.publish.readings import Figures, ReadingsFeed
 from hvhost.publish.snapshot import Permission, Snapshot, TrendBucket
 from hvhost.words.errors import CannotConnect
 from tests.pictures.states import RUNNING
+from tests.publish.test_readings import block as sample
 
 CUT = b'\n{"jsonrpc":"2.0","id":9,"method":"cut"}\n'
 
@@ -365,3 +367,96 @@ def test_closing_leaves_nothing_behind(tmp_path: Path) -> None:
     bench = serve(tmp_path, body)
     assert os.listdir(tmp_path) == []
     assert bench.gone == [1]
+
+
+FIGURES = Figures(v_zero=0.0, v_gain=1.0, i_zero=0.0, i_gain=1e-6, tick_hz=10_000.0, utc_ns=lambda tick: tick)
+
+
+def with_readings(path: Path, body: Callable[[Bench], Awaitable[None]], limits: LocalLimits | None = None) -> None:
+    """Run ``body`` against an open server that has readings."""
+    bench = Bench(path, limits)
+    bench.server.readings = ReadingsFeed(lambda: FIGURES)
+
+    async def run() -> None:
+        await bench.server.open()
+        try:
+            await body(bench)
+        finally:
+            await bench.server.close()
+
+    asyncio.run(run())
+
+
+def feed(bench: Bench, first: int, blocks: int, now_s: float) -> int:
+    """Offer blocks and a snapshot; returns the next index."""
+    assert bench.server.readings is not None
+    for number in range(first, first + blocks):
+        bench.server.readings.take(sample(32 * number, [number] * 32))
+    bench.server.offer_nowait(at(now_s))
+    return first + blocks
+
+
+def test_whoever_asks_for_readings_gets_every_sample_until_it_asks_no_more(tmp_path: Path) -> None:
+    """Readings come with the snapshots' beat and end with 0; nobody else gets them."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as client, bench.connect() as other:
+            client.send(request("readings", {"every": 1}))
+            await turns()
+            feed(bench, 0, 3, 1.0)
+            await turns()
+            client.send(request("readings", {"every": 0}))
+            await turns()
+            feed(bench, 3, 3, 1.1)
+            await turns()
+            answer, block, end = lines(client)
+            assert (answer["result"], end["result"]) == ({"every": 1}, {"every": 0})
+            assert (block["params"]["points"], block["params"]["dropped"]) == (96, 0)
+            assert lines(other) == []
+
+    with_readings(tmp_path, body)
+
+
+def test_a_reader_that_stalls_loses_the_oldest_readings_is_told_and_slows_nobody(tmp_path: Path) -> None:
+    """Its backlog is bounded beside the socket's; what it reads at last says how much is gone."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as slow:
+            slow.send(request("readings", {"every": 1}))
+            await turns()
+            at_block = 0
+            for n in range(100):
+                at_block = feed(bench, at_block, 100, 1.0 + n * 0.1)
+                await turns(2)
+            seen = lines(slow)
+            for n in range(40):
+                feed(bench, at_block + n, 1, 20.0 + n)
+                await turns(2)
+                seen += lines(slow)
+            points = [one["params"]["points"] for one in seen[1:]]
+            assert sum(points) + seen[-1]["params"]["dropped"] == 32 * (at_block + 40)
+            assert seen[-1]["params"]["dropped"] > 32 * at_block / 2
+            assert bench.server.view().dropped > 0
+
+    with_readings(tmp_path, body)
+
+
+@pytest.mark.parametrize("params", [{"every": -1}, {"every": 1.5}, {"every": True}, {"every": 10**6}, {"rate": 1}])
+def test_a_wrong_stretch_is_refused(tmp_path: Path, params: dict[str, Any]) -> None:
+    """Nobody asks for stretches out of bounds, or by a name we do not know."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as client:
+            client.send(request("readings", params))
+            await turns()
+            assert lines(client)[0]["error"]["code"] == jsonrpc.INVALID_PARAMS
+
+    with_readings(tmp_path, body)
+
+
+def test_a_server_without_readings_says_so(tmp_path: Path) -> None:
+    """An outlet that has none refuses the request and goes on."""
+    async def body(bench: Bench) -> None:
+        with bench.connect() as client:
+            client.send(request("readings", {}))
+            await turns()
+            assert lines(client)[0]["error"]["code"] == jsonrpc.REFUSED
+
+    serve(tmp_path, body)
