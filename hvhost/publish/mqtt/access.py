@@ -39,12 +39,25 @@ def password_of(broker: Broker, environment: Mapping[str, str]) -> str | None:
     return lines[0]
 
 
+class ClosingSocket(ssl.SSLSocket):
+    """Closes itself where the handshake fails: the client library forgets such a socket open."""
+
+    def do_handshake(self, block: bool = False) -> None:
+        """Shake hands or close."""
+        try:
+            super().do_handshake(block)
+        except OSError:
+            self.close()
+            raise
+
+
 def tls_of(broker: Broker) -> ssl.SSLContext | None:
     """A context that verifies the broker's certificate and name, TLS 1.2 or later; None where TLS is not wanted."""
     if not broker.tls:
         return None
     try:
         context = ssl.create_default_context(ssl.Purpose.SERVER_AUTH, cafile=broker.ca or None)
+        context.sslsocket_class = ClosingSocket
         context.minimum_version = ssl.TLSVersion.TLSv1_2
     except (OSError, ssl.SSLError) as error:
         raise CannotConnect("certificates of authorities", _short(error), broker.ca or "system") from None

@@ -16,7 +16,7 @@ from dataclasses import dataclass
 from typing import Any, NoReturn
 
 import aiomqtt
-from paho.mqtt.client import MQTTMessage
+from paho.mqtt.client import MQTT_CLEAN_START_FIRST_ONLY, MQTTMessage
 from paho.mqtt.packettypes import PacketTypes
 from paho.mqtt.properties import Properties
 from paho.mqtt.reasoncodes import ReasonCode
@@ -64,6 +64,16 @@ class _Client(aiomqtt.Client):
         self.offered, self.session_present = properties, bool(flags.session_present)
         super()._on_connect(client, userdata, flags, reason_code, properties)
 
+    def _on_disconnect(self, client: Any, userdata: Any, flags: Any, reason_code: ReasonCode,
+                       properties: Properties | None = None) -> None:
+        super()._on_disconnect(client, userdata, flags, reason_code, properties)
+        self._look_at_end()
+
+    def _look_at_end(self) -> None:
+        """The library may replace this future unread, or nobody may wait for it: then its end was no surprise."""
+        if self._disconnected.done() and not self._disconnected.cancelled():
+            self._disconnected.exception()
+
     def _on_publish(self, client: Any, userdata: Any, mid: int, reason_code: ReasonCode,
                     properties: Properties) -> None:
         if reason_code.value >= FAILED:
@@ -71,6 +81,8 @@ class _Client(aiomqtt.Client):
         super()._on_publish(client, userdata, mid, reason_code, properties)
 
     def _on_message(self, client: Any, userdata: Any, message: MQTTMessage) -> None:
+        if len(message.payload) > LARGEST_IN:  # it lay whole in the socket's buffer
+            raise OSError(f"a message above {LARGEST_IN} bytes")
         with contextlib.suppress(UnicodeDecodeError):  # a topic that is no UTF-8 is none of ours
             self.on_payload(message.topic, bytes(message.payload), message.retain)
 
@@ -88,8 +100,7 @@ class _Client(aiomqtt.Client):
     def drop(self) -> None:
         """Close the socket and forget it, whatever state the attempt is in."""
         self._client._sock_close()
-        if self._disconnected.done() and not self._disconnected.cancelled():
-            self._disconnected.exception()  # was told already, or comes too late to matter
+        self._look_at_end()
 
 
 class Connection:
@@ -212,7 +223,8 @@ def _client(broker: Broker, password: str | None, tls: ssl.SSLContext | None, wi
         broker.host, broker.port, username=broker.user or None, password=password, logger=_LOG,
         identifier=broker.client, protocol=aiomqtt.ProtocolVersion.V5 if v5 else aiomqtt.ProtocolVersion.V311,
         will=aiomqtt.Will(will.topic, will.payload, will.qos, will.retained, will_properties),
-        clean_session=None if v5 else True, clean_start=True, timeout=ANSWER_S,
+        clean_session=None if v5 else True,
+        clean_start=True if v5 else MQTT_CLEAN_START_FIRST_ONLY, timeout=ANSWER_S,
         keepalive=max(1, round(broker.keep_alive_s)), max_queued_incoming_messages=1,
         max_queued_outgoing_messages=4 * WINDOW, properties=properties, tls_context=tls,
         socket_options=((socket.IPPROTO_TCP, socket.TCP_NODELAY, 1),))

@@ -34,6 +34,7 @@ class Waiting:
         self._came = asyncio.Event()
         self._seen = 0
         self._thread: ThreadPoolExecutor | None = None
+        self._storing: asyncio.Future[bool] | None = None
 
     @property
     def lost_in_all(self) -> int:
@@ -77,7 +78,8 @@ class Waiting:
         """Bring events to the disk as they come, for ever."""
         while True:
             await self._came.wait()
-            if not await self._store_some():
+            self._storing = asyncio.ensure_future(self._store_some())
+            if not await asyncio.shield(self._storing):  # what the thread has begun ends: or it would be written twice
                 await asyncio.sleep(AGAIN_S)
 
     async def _store_some(self) -> bool:
@@ -104,6 +106,8 @@ class Waiting:
         if self._thread is None:
             return
         try:
+            if self._storing is not None:
+                await self._storing
             if self._fresh and self.queue.is_open:
                 await self._store_some()
         finally:
