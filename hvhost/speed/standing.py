@@ -90,7 +90,7 @@ def measure_memory(setting: Setting) -> list[Line]:
         try:
             daemon.reporting()
             with Client.connect(daemon.socket) as bench:
-                _energise(bench, board)
+                energise(bench, board)
                 seen = _watch(setting, daemon, bench)
                 bench.call("lower")
         finally:
@@ -98,16 +98,16 @@ def measure_memory(setting: Setting) -> list[Line]:
     return _memory_lines(setting, seen)
 
 
-def _energise(bench: Client, board: Board) -> None:
+def energise(bench: Client, board: Board) -> None:
     """Take control, clear the boot's latch, open a long run, arm, press; returns when the output is on."""
     ticket = bench.call("seat.take", {"as": WHO})["ticket"]
-    _until(bench, lambda shot: bool(shot.get("reading")), "a reading")
-    _until(bench, lambda shot: _cleared(bench, ticket, shot), "a cleared latch")
+    until_shot(bench, lambda shot: bool(shot.get("reading")), "a reading")
+    until_shot(bench, lambda shot: _cleared(bench, ticket, shot), "a cleared latch")
     opened = bench.call("run", {**request(3.0), "ticket": ticket, "as": WHO})
     bench.call("arm", {"ticket": ticket, "typed": opened["run"], "as": WHO})
-    _until(bench, lambda shot: shot.get("permission") == "requested", "an open request")
+    until_shot(bench, lambda shot: shot.get("permission") == "requested", "an open request")
     board.press()
-    _until(bench, lambda shot: shot.get("permission") == "running" and shot.get("phase") == "hold", "a hold")
+    until_shot(bench, lambda shot: shot.get("permission") == "running" and shot.get("phase") == "hold", "a hold")
 
 
 def _cleared(bench: Client, ticket: str, shot: dict[str, Any]) -> bool:
@@ -119,7 +119,7 @@ def _cleared(bench: Client, ticket: str, shot: dict[str, Any]) -> bool:
     return not shot.get("latched")
 
 
-def _until(bench: Client, met: Any, what: str) -> None:
+def until_shot(bench: Client, met: Any, what: str) -> None:
     until = time.monotonic() + START_S
     shot: dict[str, Any] = {}
     while time.monotonic() < until:
@@ -189,7 +189,7 @@ def measure_restart(setting: Setting) -> list[Line]:
             for k in range(2 if setting.minutes < 1.0 else RESTARTS):
                 setting.say(f"restart {k + 1}")
                 with Client.connect(daemon.socket) as bench:
-                    _energise(bench, board)
+                    energise(bench, board)
                     time.sleep(1.0)
                 daemon.kill()
                 board.wait_off()
