@@ -56,6 +56,7 @@ PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
                st.Permission.LOWERING: (Permission.LOWERING, Phase.NONE)}
 COURSE_EVERY_S = 1.0  # the course is made anew so often, and at once when the run goes on to something else
 RECENT_EVERY_S = 1.0  # a minute's buckets go out so often
+RESTING = Doing.RESTING
 WAITING_MAX = 64  # blocks that wait for a picture before they are folded without one
 
 
@@ -180,7 +181,7 @@ class Composer:
             self._run_id, self._place, self._evidence = run.spec.run_id, Place(), None
             self._fold()
             self.recent.clear()
-        self._place.look(run.runner.at, run.runner.doing is Doing.RESTING and not sample.v_word, sample.last_tick)
+        self._place.look(run.runner.at, run.runner.doing is RESTING and not sample.v_word, sample.last_tick)
 
     def _look_at_evidence(self) -> None:
         """Take the newest snapshot that was fetched, before it is handed over to be stored."""

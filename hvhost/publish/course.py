@@ -48,6 +48,8 @@ def course_of(runner: Runner, permission: Permission, now_s: float, volts: float
     ``starts_s`` is the time until the first segment of a run that is not energised yet; ``rested_s`` what a rest has
     lasted.  Empty where nothing is to come.
     """
+    if runner.doing is Doing.PAUSED:  # the words are zero at once; the last block may still tell of those before
+        volts = 0.0
     bench, walk = runner.bench, _Walk(round(now_s, 3), max(0.0, volts))
     if permission is Permission.LOWERING:
         walk.to(0.0, bench.down_slew_v_per_s)

@@ -55,7 +55,9 @@ SIZES = (
 
 
 def best_size(text: str, width: int, rows: int) -> DigitSize | None:
-    """Return the largest size in which ``text`` fits, None where not even the smallest does."""
+    """Return the largest size in which ``text`` fits; None where none does or a sign has no picture."""
+    if any(letter not in _SMALL for letter in text):  # 'nan', 'inf', '1e+30'
+        return None
     return next((size for size in SIZES if size.rows <= rows and size.width(text) <= width), None)
 
 

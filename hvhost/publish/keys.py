@@ -1,7 +1,8 @@
 """Keys of the screen: bytes of a terminal -> acts, and the thread that reads them.
 
-Space or c cuts, l lowers, q leaves.  Space is the largest key, is found blind, and is the same in every keyboard
-layout.  Sequences that a terminal sends of itself (arrow keys, answers to queries: one ends in 'c') are swallowed.
+Space or c cuts, l lowers, t changes the plot, b switches the bell, q leaves.  Space is the largest key, is found
+blind, and is the same in every keyboard layout.  Sequences that a terminal sends of itself (arrow keys, answers to
+queries: one ends in 'c') are swallowed.
 
 The reader is a thread of its own: a terminal that stops taking output blocks whoever draws, and the keys that stop
 must work then too.
@@ -28,11 +29,14 @@ class Act(StrEnum):
     LOWER = "lower"
     LEAVE = "leave"
     INTERRUPT = "interrupt"
+    PLOT = "plot"
+    BELL = "bell"
 
 
 KEYS: dict[int, Act] = {
     ord(" "): Act.CUT, ord("c"): Act.CUT, ord("C"): Act.CUT, ord("l"): Act.LOWER, ord("L"): Act.LOWER,
-    ord("q"): Act.LEAVE, ord("Q"): Act.LEAVE, 0x03: Act.INTERRUPT,
+    ord("q"): Act.LEAVE, ord("Q"): Act.LEAVE, 0x03: Act.INTERRUPT, ord("t"): Act.PLOT, ord("T"): Act.PLOT,
+    ord("b"): Act.BELL, ord("B"): Act.BELL,
 }
 
 
@@ -85,7 +89,7 @@ class KeyReader:
     def __enter__(self) -> Self:
         if self.reads:
             self._before = termios.tcgetattr(self._descriptor)
-            tty.setcbreak(self._descriptor)
+            tty.setcbreak(self._descriptor, termios.TCSANOW)
             _without_signals_and_flow(self._descriptor)
             self._wake = os.pipe()
             self._thread = threading.Thread(target=self._read, name="keys", daemon=True)
@@ -98,7 +102,8 @@ class KeyReader:
             return
         os.write(self._wake[1], b"x")
         self._thread.join(timeout=1.0)
-        termios.tcsetattr(self._descriptor, termios.TCSADRAIN, self._before or [])
+        # at once: waiting for the output to drain would wait for ever on a terminal that takes none
+        termios.tcsetattr(self._descriptor, termios.TCSANOW, self._before or [])
         for end in self._wake:
             os.close(end)
 
@@ -124,7 +129,7 @@ def _without_signals_and_flow(descriptor: int) -> None:
     modes = termios.tcgetattr(descriptor)
     modes[0] &= ~(termios.IXON | termios.IXOFF)
     modes[3] &= ~termios.ISIG
-    termios.tcsetattr(descriptor, termios.TCSADRAIN, modes)
+    termios.tcsetattr(descriptor, termios.TCSANOW, modes)
 
 
 def _stdin() -> int:

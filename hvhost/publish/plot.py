@@ -11,7 +11,7 @@ from itertools import pairwise
 _BASE = 0x2800
 _DOTS = ((0x01, 0x02, 0x04, 0x40), (0x08, 0x10, 0x20, 0x80))  # Unicode braille: left and right column, top to bottom
 _JOIN_SPANS = 2.5  # spans farther apart than this many typical steps have a gap between them
-_EVERY = 3  # of the future's columns one in so many is drawn: sparse is read as 'not yet' without any colour
+_EVERY = 2  # of the future's columns one in so many is drawn: dotted is read as 'not yet' without any colour
 MARK = "┊"
 
 

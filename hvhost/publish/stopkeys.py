@@ -44,7 +44,7 @@ class Stopper:
                         self._say(f"{verb.upper()} NOT SENT, no daemon answers ({fault.found}): "
                                   "use the emergency switching off", now_s)
                 else:
-                    self._say(f"{verb} sent by this key", now_s)
+                    self._say(f"{verb} sent by this key, not answered yet", now_s)
                     return
 
     def note(self, now_s: float) -> str:
@@ -70,7 +70,7 @@ class Stopper:
             while (message := self._client.notification(0.0)) is not None:
                 verb, _ = self._verbs.pop(message.get("id", -1), ("", 0.0))
                 if verb:
-                    self._say(f"{verb}: {_answer_words(message)}", now_s)
+                    self._say(f"{verb} sent by this key: {_answer_words(message)}", now_s)
         except HvhostError:
             self._unanswered(now_s)
         if any(now_s - sent_s > ANSWER_S for _, sent_s in self._verbs.values()):
@@ -81,7 +81,7 @@ class Stopper:
         waiting = sorted({verb for verb, _ in self._verbs.values()})
         self._drop()
         if waiting:
-            self._say(f"{' and '.join(waiting)} not answered: use the emergency switching off", now_s)
+            self._say(f"{' and '.join(waiting)} sent by this key, NOT ANSWERED: use the emergency switching off", now_s)
 
     def _drop(self) -> None:
         if self._client is not None:
@@ -99,4 +99,4 @@ def _answer_words(message: dict[str, object]) -> str:
         return f"refused: {error.get('message', '')}"
     if isinstance(result, dict) and result.get("text"):
         return str(result["text"])
-    return "taken"
+    return "taken by the daemon"

@@ -7,6 +7,7 @@ full scale asks for, so that its point stands still while it changes.
 import math
 from dataclasses import dataclass, replace
 from datetime import datetime, tzinfo
+from enum import StrEnum
 
 from hvhost.bench import cautions
 from hvhost.publish.snapshot import (
@@ -28,12 +29,22 @@ _UNITS = ((1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"))
 OVERDUE = 2.5  # a snapshot that is late by this many periods no longer shows the present
 
 
+class Plotted(StrEnum):
+    """What the plot shows; 'by state' leaves the choice to the screen."""
+
+    BY_STATE = "by state"
+    MINUTE = "last minute"
+    RUN = "whole run"
+    EVIDENCE = "last arc or trip"
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class View:
     """How a client sees a snapshot: seconds since it came, the period it asked for, what it can do itself.
 
     ``can_stop`` is False for a view without keys; ``note`` is what its last key led to; ``zone`` None is the
-    machine's time zone.
+    machine's time zone; ``plotted`` and ``bell`` are what its keys chose; ``ascii_only`` is for a terminal that
+    cannot draw anything else.
     """
 
     since_s: float = 0.0
@@ -42,6 +53,9 @@ class View:
     can_stop: bool = True
     note: str = ""
     zone: tzinfo | None = None
+    plotted: Plotted = Plotted.BY_STATE
+    bell: bool = True
+    ascii_only: bool = False
 
 
 class Scale:
@@ -167,8 +181,8 @@ def as_last_known(snapshot: Snapshot, view: View) -> Snapshot:
         return snapshot
     inputs = tuple(replace(one, state=f"last {one.state}" if one.state != "unknown" else one.state,
                            judgement=InputJudgement.UNKNOWN) for one in snapshot.inputs)
-    return replace(snapshot, voltage=VoltageState.UNKNOWN, power_words="", inputs=inputs, set_volts=None,
-                   set_amps=None)
+    return replace(snapshot, voltage=VoltageState.UNKNOWN, voltage_text="", power_words="", inputs=inputs,
+                   set_volts=None, set_amps=None, course=())
 
 
 def voltage_words(snapshot: Snapshot) -> str:
@@ -206,6 +220,25 @@ def alerts(snapshot: Snapshot, view: View) -> list[str]:
     return found
 
 
+def seat_words(snapshot: Snapshot) -> str:
+    """Return who has control, and a stop by someone else that they have not acknowledged."""
+    words = f"control {printable(snapshot.seat) or 'free'}"
+    return f"{words}, stopped by {printable(snapshot.stopped_by)}, not acknowledged" if snapshot.stopped_by else words
+
+
+def polarity_words(snapshot: Snapshot) -> str:
+    """Return the bench's polarity with its sign."""
+    return "negative (-)" if snapshot.polarity < 0 else "positive (+)"
+
+
+def minutes(seconds: float) -> str:
+    """Return a short span for people: '40 ms', '7 s', '1:17', '2:05:00'."""
+    size = abs(seconds)
+    if size < 1.0:
+        return f"{size * 1e3:.3g} ms"
+    return f"{size:.0f} s" if size < 59.5 else span(size + 0.5)
+
+
 def _request_words(snapshot: Snapshot, age_s: float) -> str:
     arm = snapshot.arm
     assert arm is not None
@@ -241,12 +274,12 @@ def caution(snapshot: Snapshot) -> str:
         return ""
     parts = []
     if voltage_reason(snapshot):
-        parts.append(f"Voltage {snapshot.voltage}: {voltage_reason(snapshot)}.")
+        parts.append(f"Voltage {snapshot.voltage}: {voltage_reason(snapshot).rstrip('.')}.")
     if snapshot.bleeds_passed is not None:
         parts.append(f"{snapshot.bleeds_passed:.1f} bleed times since the cut.")
     if snapshot.discharge_text:
         parts.append(printable(snapshot.discharge_text))
-    if snapshot.voltage is VoltageState.GROUNDED:
+    if snapshot.voltage is VoltageState.GROUNDED and "proof" not in snapshot.voltage_text:
         parts.append(cautions.GROUNDED_IS_A_CONTACT)
     if cautions.BEFORE_TOUCHING not in snapshot.discharge_text:
         parts.append(cautions.BEFORE_TOUCHING)

@@ -3,31 +3,14 @@
 from dataclasses import replace
 
 import pytest
-from hypothesis import given
-from hypothesis import strategies as st
 
 from hvhost.publish import panes
-from hvhost.publish.snapshot import HoldView, InputJudgement, InputView, Reading, Severity
+from hvhost.publish.snapshot import InputJudgement, InputView, LoopView, OutletView, Permission, Reading, Severity
 from hvhost.publish.wording import View
 from tests.pictures.draw import ZONE
-from tests.pictures.states import IDLE, INPUTS_OFF, RUN, RUNNING, TRIPPED
+from tests.pictures.states import IDLE, INPUTS_OFF, RUNNING, TRIPPED
 
 VIEW = View(zone=ZONE)
-
-
-@given(st.text("ab ", max_size=200), st.integers(4, 40), st.integers(1, 5), st.sampled_from(["", "!! "]))
-def test_wrapping_keeps_to_its_room(text: str, width: int, most: int, mark: str) -> None:
-    """No more lines than allowed, none wider unless a single word is."""
-    lines = panes.wrapped(text, width, most, mark)
-    assert 1 <= len(lines) <= most
-    longest = max(map(len, text.split()), default=0)
-    assert all(len(line) <= max(width, longest + len(mark)) for line in lines)
-
-
-def test_wrapping_marks_what_it_left_out() -> None:
-    """A reader sees that there is more."""
-    assert panes.wrapped("one two three four", 8, 1) == ["one two…"]
-    assert panes.wrapped("one two", 20, 2, "ok ") == ["ok one two"]
 
 
 def test_bars_show_readback_set_point_limit_and_room() -> None:
@@ -70,59 +53,61 @@ def test_inputs_that_hinder_come_first_by_name() -> None:
     inputs = (*INPUTS_OFF[1:], replace(INPUTS_OFF[0], state="open", judgement=InputJudgement.NOT_OK),
               InputView(name="door", state="unknown"))
     many = [line.plain for line in panes.inputs(replace(IDLE, inputs=inputs), 40, 12)]
-    assert many[0] == "!! interlock open"
+    assert many[0] == "!! hinders arming: interlock open"
     assert "?? door unknown" in many
     few = [line.plain for line in panes.inputs(replace(IDLE, inputs=inputs), 78, 4)]
-    assert few[0] == "!! interlock open"
+    assert few[0] == "!! hinders arming: interlock open"
     assert few[1] == "?? door unknown"
     assert few[2].startswith("ok emergency contact closed")
     assert len(few) == 4
-
-
-def test_the_hold_clock_runs_on_and_stands_when_out_of_tolerance() -> None:
-    """Between snapshots the clock moves; outside the tolerance it stands and says so."""
-    hold = HoldView(elapsed_s=42.0, required_s=60.0, at_most_s=90.0)
-    assert panes.hold_clock(hold, 1.5, 80).plain.startswith("HOLD 0:43 of 1:00 continuous, at most 1:30 [")
-    out = panes.hold_clock(replace(hold, inside=False), 1.5, 80).plain
-    assert out.startswith("HOLD 0:42 of 1:00 OUT OF TOLERANCE: clock stands, at most 1:30")
-    assert panes.hold_clock(hold, 99.0, 80).plain.startswith("HOLD 1:00 of 1:00")
-
-
-def test_a_run_shows_step_readings_arcs_and_end() -> None:
-    """What runs, how far it is and when it ends, in local time."""
-    run = replace(RUN, arcs=2, arcs_allowed=10)
-    text = "\n".join(line.plain for line in panes.run_lines(replace(RUNNING, run=run), VIEW, 70, 8))
-    for words in ("HOLD 0:42", "step 2/4 withstand: hold 18.00 kV", "next reading in 13 s", "arcs 2 of 10 allowed",
-                  "0:38 left, ends 14:04:00", "withstand.yaml", "S-1042", "bob", "runs/20251201T130204Z-3f2a91c7"):
-        assert words in text
-
-
-def test_an_ended_run_shows_its_verdict_and_no_clock() -> None:
-    """After the trip the verdict stands first."""
-    lines = [line.plain for line in panes.run_lines(TRIPPED, VIEW, 78, 3)]
-    assert lines[0].startswith("verdict: fail")
-    assert "last run 3f2a91c7" in lines[1]
-    assert "HOLD" not in "".join(lines)
-    bare = panes.run_lines(replace(IDLE, verdict_text="pass"), VIEW, 78, 3)
-    assert [line.plain for line in bare] == ["verdict: pass", "no run"]
+    running = replace(IDLE, inputs=inputs, permission=Permission.RUNNING)
+    assert panes.inputs(running, 78, 4)[0].plain == "!! NOT AS IT MUST BE: interlock open"
 
 
 def test_events_carry_local_time_and_marks() -> None:
     """The newest lines, a trip marked with two exclamation marks."""
-    lines = [line.plain for line in panes.events(TRIPPED, VIEW, 3)]
+    lines = [line.plain for line in panes.events(TRIPPED, VIEW, 80, 3)]
     assert len(lines) == 3
     assert "!! BREAKDOWN" in lines[0]
     assert lines[0].startswith(" 14:03:14.160")
-    assert panes.events(TRIPPED, VIEW, 0) == []
+    assert panes.events(TRIPPED, VIEW, 80, 0) == []
     assert panes.EVENT_MARKS[Severity.TRIP] == "!!"
 
 
+def test_a_long_event_is_folded_and_the_newest_comes_first_to_its_room() -> None:
+    """What a guard said is read whole; where rows are few the newest line has them."""
+    long = replace(TRIPPED.events[-1], text="word " * 30, number=99)
+    snapshot = replace(TRIPPED, events=(*TRIPPED.events, long))
+    lines = [line.plain for line in panes.events(snapshot, VIEW, 80, 4)]
+    assert len(lines) == 4
+    assert "cut 4 confirmed" in lines[0]
+    assert not any(line.endswith("…") for line in lines)
+    assert " ".join(lines[1:]).count("word") == 30
+    assert panes.events(snapshot, VIEW, 80, 1)[0].plain.endswith("…")
+
+
 def test_the_seat_the_record_and_the_losses_are_named() -> None:
-    """Who has control, whether the recorder keeps up, what the link and the outlets lost."""
-    text = panes.health(RUNNING).plain
-    for words in ("control bob", "record ok 1.9 MB", "garbled 1", "gaps 0", "missed 3", "lost 0"):
+    """Who has control, whether the recorder keeps up, what the link and the outlets lost, how late the daemon was."""
+    worse = replace(RUNNING, outlets=(OutletView(name="local", dropped=3, failed=1),), loop=LoopView(recent_s=0.021))
+    text = panes.health(worse, 120, 1)[0].plain
+    for words in ("control bob", "record ok 1.9 MB", "garbled 1", "missed 3", "lost by outlets 4", "late by 21 ms"):
         assert words in text
-    assert "control free" in panes.health(replace(RUNNING, seat="")).plain
+    assert "gaps" not in text
+    assert "control free" in panes.health(replace(IDLE, seat=""), 80, 1)[0].plain
+    assert "nothing lost" in panes.health(IDLE, 80, 1)[0].plain
+    stopped = panes.health(replace(RUNNING, stopped_by="alice"), 80, 2)
+    assert "stopped by alice, not acknowledged" in stopped[0].plain
+
+
+def test_a_state_that_does_not_fit_is_folded_not_clipped() -> None:
+    """At 80 columns voltage, cut and power are all read; a link as it should be gives way first."""
+    long = replace(TRIPPED, power_words="programmed to zero, supply still powered",
+                   latched=("host: readback missing",), permission=Permission.LOWERING)
+    lines = [line.plain for line in panes.state_lines(long, VIEW, 80, 2)]
+    assert len(lines) == 2
+    text = " ".join(" ".join(lines).split())
+    assert text == ("TRIPPED, LOWERING VOLTAGE FALLING · cut confirmed programmed to zero, supply still powered")
+    assert panes.state_lines(RUNNING, VIEW, 80, 2)[0].plain.endswith("link greeted")
 
 
 def test_the_footer_names_the_keys_or_says_that_there_are_none() -> None:
@@ -133,7 +118,20 @@ def test_the_footer_names_the_keys_or_says_that_there_are_none() -> None:
     assert "CANNOT STOP NOW" in panes.footer(View(connected=False), 80).plain
 
 
+def test_the_footer_names_every_key_where_there_is_room() -> None:
+    """Plot and bell too, the bell with its state; the stop keys stand in every width."""
+    assert "t: plot  b: bell on  q" in panes.footer(VIEW, 80).plain
+    assert "b: bell silent" in panes.footer(View(bell=False), 80).plain
+    for width in (40, 80, 100, 140):
+        assert len(panes.footer(VIEW, width).plain) <= width
+        assert "cut" in panes.footer(VIEW, width).plain
+
+
 def test_a_key_note_takes_the_place_of_the_next_acts() -> None:
-    """What the last key led to is read where the eye already is."""
-    assert panes.next_line(RUNNING, VIEW).plain == " next: hvhost lower  |  hvhost cut"
-    assert panes.next_line(RUNNING, View(note="cut sent by this key")).plain == " cut sent by this key"
+    """What the last key led to is read where the eye already is; many acts are folded between them."""
+    assert panes.next_lines(RUNNING, VIEW, 80, 1)[0].plain == " next: hvhost lower  |  hvhost cut"
+    noted = panes.next_lines(RUNNING, View(note="cut sent by this key: cut 12 sent"), 80, 1)
+    assert noted[0].plain == " cut sent by this key: cut 12 sent"
+    many = panes.next_lines(replace(RUNNING, next_acts=("a" * 50, "b" * 50)), VIEW, 80, 2)
+    assert [line.plain for line in many] == [f" next: {'a' * 50}", f" {'b' * 50}"]
+    assert panes.next_lines(replace(RUNNING, next_acts=()), VIEW, 80, 1)[0].plain == ""

@@ -62,12 +62,12 @@ def test_what_lies_before_the_stretch_is_left_out() -> None:
 
 
 def test_the_future_is_sparse_and_the_past_is_not() -> None:
-    """Without any colour: of the columns to come two in three are empty."""
+    """Without any colour: every other column to come is empty."""
     past, future = Plot(30, 1, 0.0, 10.0, 1.0), Plot(30, 1, 0.0, 10.0, 1.0)
     past.spans([(float(t), 1.0, 1.0) for t in range(11)])
     future.dotted([(0.0, 1.0), (10.0, 1.0)])
     count = [sum(bin(bits(cell)).count("1") for cell in plot.lines()[0]) for plot in (past, future)]
-    assert count == [60, 20]
+    assert count == [60, 30]
 
 
 def test_the_future_of_a_ramp_rises() -> None:

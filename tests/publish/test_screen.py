@@ -91,11 +91,11 @@ def test_the_screen_at_work(tmp_path: Path) -> None:
             small = terminal.until(lambda text: "SPACE/c: cut at once" in text)
             assert "RUNNING: HOLD" in small
             terminal.resize(120, 40)
-            terminal.until(lambda text: "SPACE or c: cut at once" in text.split("\n")[39])
+            terminal.until(lambda text: "q: leave, run goes on" in text.split("\n")[39])
             terminal.press(b"l")
-            terminal.until(lambda text: "lower: lowering" in text)
+            terminal.until(lambda text: "lower sent by this key: lowering" in text)
             terminal.press(b"\x1b[A ")
-            terminal.until(lambda text: "cut: cut 1 sent" in text)
+            terminal.until(lambda text: "cut sent by this key: cut 1 sent" in text)
             assert [method for method, _ in bench.asked] == ["lower", "cut"]
         finally:
             end.set()
@@ -147,7 +147,7 @@ def test_ctrl_c_lowers_first_and_then_cuts_where_it_stops() -> None:
     acts.act(Act.INTERRUPT)
     acts.act(Act.INTERRUPT)
     assert stopper.pressed == ["lower", "cut"]
-    assert not acts.leaves()
+    assert acts.taken() == []
 
 
 def test_ctrl_c_leaves_a_mere_view() -> None:
@@ -155,10 +155,11 @@ def test_ctrl_c_leaves_a_mere_view() -> None:
     stopper = FakeStopper()
     acts = Acts(stopper, False, lambda: 0.0)
     acts.act(Act.INTERRUPT)
-    assert acts.leaves()
+    assert acts.taken() == [Act.INTERRUPT]
+    acts.act(Act.PLOT)
     acts.act(Act.LEAVE)
-    assert acts.leaves()
-    assert not acts.leaves()
+    assert acts.taken() == [Act.PLOT, Act.LEAVE]
+    assert acts.taken() == []
     assert stopper.pressed == []
 
 

@@ -27,7 +27,7 @@ def test_a_key_stops_and_tells_the_answer(tmp_path: Path, verb: str) -> None:
         stopper = Stopper(bench.path)
         stopper.prepare()
         stopper.press(verb, 1.0)
-        assert until_told(stopper, f"{verb}: ") == f"{verb}: {bench.answers[verb]['text']}"
+        assert until_told(stopper, f"{verb} sent by this key: ") == f"{verb} sent by this key: {bench.answers[verb]['text']}"
         assert bench.asked == [(verb, {})]
         assert stopper.note(1.0 + NOTE_S) == ""
         stopper.close()
@@ -41,7 +41,7 @@ def test_a_lost_connection_is_made_anew(tmp_path: Path) -> None:
     with served(tmp_path) as bench:
         stopper.press("cut", 1.0)
         stopper.press("lower", 1.0)
-        until_told(stopper, "lower: ")
+        until_told(stopper, "lower sent by this key: ")
         assert [method for method, _ in bench.asked] == ["cut", "lower"]
         stopper.close()
 
@@ -63,7 +63,8 @@ def test_a_daemon_that_dies_before_answering_is_told(tmp_path: Path) -> None:
         bench.on_call = lambda method: came.set()
         stopper.press("cut", 1.0)
         assert came.wait(20.0)
-    assert until_told(stopper, "cut not") == "cut not answered: use the emergency switching off"
+    assert until_told(stopper, "cut sent by this key, NOT") == (
+        "cut sent by this key, NOT ANSWERED: use the emergency switching off")
 
 
 def test_a_refused_stop_is_told(tmp_path: Path) -> None:
@@ -72,7 +73,7 @@ def test_a_refused_stop_is_told(tmp_path: Path) -> None:
         stopper = Stopper(bench.path)
         del bench.answers["lower"]
         stopper.press("lower", 1.0)
-        assert "refused" in until_told(stopper, "lower: ")
+        assert "refused" in until_told(stopper, "lower sent by this key: ")
         stopper.close()
 
 
@@ -82,5 +83,6 @@ def test_a_stalled_daemon_is_told_after_a_second(tmp_path: Path) -> None:
         stopper = Stopper(bench.path)
         bench.answers["lower"] = Later()
         stopper.press("lower", 1.0)
-        assert stopper.note(1.5) == "lower sent by this key"
-        assert stopper.note(1.0 + ANSWER_S + 0.1) == "lower not answered: use the emergency switching off"
+        assert stopper.note(1.5) == "lower sent by this key, not answered yet"
+        assert stopper.note(1.0 + ANSWER_S + 0.1) == (
+            "lower sent by this key, NOT ANSWERED: use the emergency switching off")
