@@ -30,6 +30,7 @@ LEASE_S = 0.5
 DOWN_SLEW = 13107  # words per second: 5 kV/s of 25 kV on 16 bits
 LOWER_MAX_S = 10.0
 LONG_S = 60.0  # for what takes a second on a free machine
+POLL_S = 0.05  # between two looks; every judgement is made on the truth file's own ticks
 SHORT_BLEED = (
     ("  time: 2 s   ", "  time: 400 ms   "),
     ("  times: 8\n", "  times: 6\n"),
@@ -67,7 +68,7 @@ def wait(condition: Condition, what: str, seconds: float = LONG_S) -> Any:
     until_s = time.monotonic() + seconds
     while not (found := condition()):
         assert time.monotonic() < until_s, f"waited {seconds:g} s for {what}"
-        time.sleep(0.02)
+        time.sleep(POLL_S)
     return found
 
 

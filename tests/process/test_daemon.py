@@ -55,9 +55,9 @@ def test_two_runs_in_one_daemon() -> None:
         assert len(scene.truth.events("press")) == 2
 
 
-@pytest.mark.parametrize("outside", ["interlock open", "emergency operate", "ground on", "fault on auxiliary-low"])
+@pytest.mark.parametrize("outside", ["interlock open", "fault on auxiliary-low"])
 def test_contacts_trip(outside: str) -> None:
-    """An opened interlock, an operated emergency contact, a moved ground, lost auxiliary supplies: each latches."""
+    """An opened interlock and lost auxiliary supplies end a run, latched."""
     with Scene() as scene:
         scene.start_standin()
         scene.start_daemon()
@@ -71,4 +71,4 @@ def test_contacts_trip(outside: str) -> None:
         assert scene.truth.last["causes"]
         assert not scene.truth.last["relay"]
         if "auxiliary" not in outside:
-            assert any(word in status["why"] for word in outside.replace("ground", "grounding").split()), status["why"]
+            assert "interlock" in status["why"], status["why"]
