@@ -13,7 +13,7 @@ import time
 from dataclasses import dataclass
 from pathlib import Path
 from statistics import median
-from typing import Any
+from typing import Any, Protocol
 
 from hvhost.publish.client import Client
 from hvhost.speed.board import Board
@@ -28,13 +28,26 @@ MEGABYTE = 1e6
 TICKS = os.sysconf("SC_CLK_TCK")
 
 
+class Opened(Protocol):
+    """What a daemon opens."""
+
+    device: str
+
+
+class Pressed(Protocol):
+    """What has an arm input."""
+
+    def press(self) -> None:
+        """Press it."""
+
+
 class Daemon:
     """``hvhost serve`` on the board's device."""
 
-    def __init__(self, setting: Setting, board: Board, runs: Path) -> None:
+    def __init__(self, setting: Setting, board: Opened, runs: Path, bench: Path | None = None) -> None:
         self.socket = str(setting.place() / "bench.sock")
-        self._arguments = ["serve", str(setting.bench), "--port", board.device, "--socket", self.socket, "--standin",
-                           "--runs", str(runs)]
+        self._arguments = ["serve", str(bench or setting.bench), "--port", board.device, "--socket", self.socket,
+                           "--standin", "--runs", str(runs)]
         self.log = setting.place() / "serve.log"
         self.begun = 0.0
         self.process: subprocess.Popen[bytes] | None = None
@@ -98,7 +111,7 @@ def measure_memory(setting: Setting) -> list[Line]:
     return _memory_lines(setting, seen)
 
 
-def energise(bench: Client, board: Board) -> None:
+def energise(bench: Client, board: Pressed) -> None:
     """Take control, clear the boot's latch, open a long run, arm, press; returns when the output is on."""
     ticket = bench.call("seat.take", {"as": WHO})["ticket"]
     until_shot(bench, lambda shot: bool(shot.get("reading")), "a reading")
