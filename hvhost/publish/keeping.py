@@ -34,6 +34,8 @@ class Keeping:
     def step(self, now_s: float) -> None:
         """Store what can be stored now."""
         station, core = self._station, self._station.core
+        if not (core.evidence.ready or core.aftermath.ready or self._fresh or self._older):
+            return
         for snapshot in core.evidence.take():
             run = core.run
             if run is not None and station.recording is not None and run.spec.tag == snapshot.tag:

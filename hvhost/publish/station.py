@@ -27,6 +27,7 @@ from hvhost.wire.frames import Block
 from hvhost.words.clocks import Clock
 
 ANCHOR_S = 1.0  # the wall clock is compared with the tick clock this often while a run is open
+CLOSED = Stage.CLOSED
 LINES = re.compile(rb"\n?[^\n]+\n?")
 
 
@@ -213,7 +214,7 @@ class Station:
         if self.settled:
             self.keeping.step(self.clock.now_s())
         run = self.core.run
-        if run is not None and run.stage is Stage.CLOSED and self.recording is not None and self.folder is not None:
+        if run is not None and run.stage is CLOSED and self.recording is not None and self.folder is not None:
             machine = self.machine.note()
             if machine["loop"]["beats"]:  # under a virtual clock no loop runs, and equal runs give equal bytes
                 self.core.note(self.clock.now_s(), "machine", **machine)

@@ -37,6 +37,11 @@ class EventBook:
             self._passed(number)
             self.last = number
 
+    @property
+    def waiting(self) -> bool:
+        """Whether there is anything to ask for, to wait for or to write down as lost."""
+        return self.answered or bool(self.missing)
+
     def _passed(self, number: int) -> None:
         self.missing.update(range(max(self.last + 1, number - 4 * KEPT), number + 1))
         self.tries = 0

@@ -54,6 +54,9 @@ LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least
 ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
 FRESH_KEPT = 512  # judged blocks that nobody has looked at yet: more than one read can hold
 WRAP, HALF = 1 << 32, 1 << 31
+# members by names of this module: reading one through its class costs as much as a call, and here it is every block
+LOST, PAUSING = LinkState.LOST, int(McuState.PAUSING)
+ARMED, RUN_LIVE, DISCHARGING = Stage.ARMED, Stage.LIVE, Stage.DISCHARGING
 GROUND_OPEN = int(Inputs.GROUND_OPEN)  # plain: IntFlag arithmetic costs a microsecond, here for every block
 
 
@@ -279,14 +282,15 @@ class Core(Teller):
 
     def _follow(self, sample: SampleBlock, now_s: float) -> None:
         """Everything about a judged block that is not protective."""
-        if self.state.link is LinkState.LOST:
+        if self.state.link is LOST:
             return  # the tail of a session that is over; nothing of it is shown or believed
         self._measure(sample, now_s)
         hearing.inputs_changed(self, sample.inputs, sample.tick, now_s)
         self.events.told(sample.event)
         if sample.event >= self.events.last and (sample.state, self.state.permission) not in STANDING:
             self.mcu_in(McuState(sample.state), sample.tick, now_s)
-        hearing.ask_events(self, now_s)
+        if self.events.waiting:
+            hearing.ask_events(self, now_s)
         if sample.latched and not self.state.latched:
             hearing.ask_causes(self)
         self.aftermath.block()
@@ -304,23 +308,24 @@ class Core(Teller):
         self.last_tick = tick
         self.sample, self.block_s, self.sampled, self.silent = sample, now_s, True, False
         self.fresh.append(sample)
-        pairs = sample.pairs
+        v, i = sample.v, sample.i
+        pairs = len(v)
         self.measured = Measured(
             index=sample.index, tick=sample.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
-            volts=self._v_zero + self._v_gain * sum(sample.v) / pairs,
-            amps=self._i_zero + self._i_gain * sum(sample.i) / pairs,
+            volts=self._v_zero + self._v_gain * sum(v) / pairs, amps=self._i_zero + self._i_gain * sum(i) / pairs,
             volts_max=self._v_zero + self._v_gain * sample.extremes[1])
 
     def _follow_run(self, run: ActiveRun, sample: SampleBlock, now_s: float) -> None:
         assert self.measured is not None
-        if run.stage is Stage.ARMED:
+        stage = run.stage
+        if stage is ARMED:
             arming.ask_again(self, run, now_s)
-        elif run.stage is Stage.LIVE and not run.ended:
-            if sample.state == McuState.PAUSING:
+        elif stage is RUN_LIVE and run.outcome is None:
+            if sample.state == PAUSING:
                 run.arcs = max(run.arcs, sample.arc)  # one that the host saw before the pause makes no event
             run.runner.block(self.measured)
             driving.drive(self, run, now_s)
-        elif run.stage is Stage.DISCHARGING:
+        elif stage is DISCHARGING:
             arming.close_when_discharged(self, run, now_s)
 
     def _voltage(self, now_s: float) -> None:

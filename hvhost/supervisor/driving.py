@@ -6,7 +6,7 @@ from hvhost.guard.limits import limits_of
 from hvhost.plan.program import HoldStep, RampStep, RestStep, Step
 from hvhost.supervisor.notes import Doing, Note, What
 from hvhost.supervisor.runs import ActiveRun, Outcome, Stage
-from hvhost.supervisor.states import Move, Permission
+from hvhost.supervisor.states import UNMOVED, Move, Permission
 from hvhost.supervisor.stopping import lower_for
 from hvhost.wire.events import Dropped, DropWhy
 from hvhost.wire.frames import Ok, Refusal, Segment
@@ -21,26 +21,28 @@ MOVES = {Doing.RAMPING: Move.RAMP_BEGUN, Doing.HOLDING: Move.HOLD_BEGUN, Doing.R
 PHASES = {What.STEP_BEGUN: "begin", What.STEP_ENDED: "end", What.CLOCK_STARTED: "clock start",
           What.CLOCK_RESTARTED: "clock stop"}
 KINDS: dict[type[Step], str] = {RampStep: "ramp", HoldStep: "hold", RestStep: "rest"}
+NOT_MOVED = frozenset({Permission.WARNING, Permission.PAUSING})  # the MCU leads out of these
 NO_ORDERS = frozenset({Permission.IDLE, Permission.REQUESTED, Permission.LOWERING})
 
 
 def drive(core: "Core", run: ActiveRun, now_s: float) -> None:
     """Hand on what the runner noted, then queue what it orders."""
-    if run.runner.notes:
-        for note in run.runner.take_notes():
+    runner = run.runner
+    if runner.notes:
+        for note in runner.take_notes():
             _noted(core, run, note, now_s)
     link, permission = core.link, core.state.permission
-    if link is None or core.link_stopping or run.ended or permission in NO_ORDERS:
+    if link is None or permission in NO_ORDERS or run.outcome is not None or core.link_stopping:
         return
-    move = MOVES.get(run.runner.doing)
-    if move is not None and permission not in (Permission.WARNING, Permission.PAUSING):
+    move = MOVES.get(runner.doing)
+    if move is not None and permission not in NOT_MOVED and (permission, move) not in UNMOVED:
         core.move(move, now_s)
-    for order in run.runner.orders():
+    for order in runner.orders():
         target = order.target
         try:
             ticket = link.request(Segment(v=target.v, i=target.i, ticks=target.ticks, arc=order.arc))
         except CommandRefused as error:
-            run.runner.fail(f"a segment could not be queued: {error}")
+            runner.fail(f"a segment could not be queued: {error}")
             return
         run.segments[ticket] = order.stretch
 

@@ -11,6 +11,7 @@ from collections.abc import Mapping
 from hvhost.plan.program import HOLD_START, WINDOW_S, HoldClock, HoldStep, Step, WhenOut
 from hvhost.supervisor.notes import Measured, Note, What
 
+ACCUMULATE = HoldClock.ACCUMULATE  # a name of this module: it is read for every block
 PEAK_BLOCKS = 6  # what stood before a collapse is the highest reading of so many blocks
 
 
@@ -27,6 +28,8 @@ class Holding:
         self._pairs: deque[int] = deque()
         self._volts: deque[float] = deque()
         self._amps: deque[float] = deque()
+        self._spanned: Step | None = None  # the step whose window `_span` is, in ticks
+        self._span = round(WINDOW_S * tick_hz)
         self._begun: int | None = None  # tick at which the clock started
         self._due: deque[float] = deque()
 
@@ -43,8 +46,11 @@ class Holding:
         self._pairs.append(measured.pairs)
         self._volts.append(measured.volts * measured.pairs)
         self._amps.append(measured.amps * measured.pairs)
-        span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
-        while len(window) > 1 and measured.end_tick - window[1].tick >= span:
+        if step is not self._spanned:
+            self._spanned = step
+            self._span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
+        since = measured.end_tick - self._span
+        while len(window) > 1 and window[1].tick <= since:
             window.popleft()
             self._pairs.popleft()
             self._volts.popleft()
@@ -58,7 +64,7 @@ class Holding:
         if inside and self._begun is None:
             self._begun = now
             self._notes.append(Note(what=What.CLOCK_STARTED, tick=now, index=index, step=step, volts=volts, amps=amps))
-        elif step.clock is HoldClock.ACCUMULATE:
+        elif step.clock is ACCUMULATE:
             self.elapsed_s += measured.ticks / self._tick_hz if inside and self.inside else 0.0
         elif inside and self._begun is not None:
             self.elapsed_s = (now - self._begun) / self._tick_hz

@@ -18,6 +18,10 @@ from hvhost.supervisor.direct import AHEAD, SetPoint, next_piece
 from hvhost.supervisor.holding import Holding
 from hvhost.supervisor.notes import Doing, Measured, Note, Order, What
 
+# members by names of this module: they are looked at for every block
+HOLDING, PAUSED = Doing.HOLDING, Doing.PAUSED
+STANDS = frozenset({Doing.PAUSED, Doing.DONE})
+BEFORE_OR_AFTER = frozenset({Doing.WAITING, Doing.DONE})
 REST_IN_PAUSE_S = 20.0  # a rest goes on inside a pause for so long; the MCU lets a pause expire 30 s after its rest
 
 
@@ -78,7 +82,7 @@ class Runner:
     def orders(self) -> list[Order]:
         """Return the segments to queue now; the caller must send them all, in this order."""
         out: list[Order] = []
-        if self.doing in (Doing.PAUSED, Doing.DONE):
+        if (not self._pending and self.set_point is None) or self.doing in STANDS:
             return out
         while self._ahead < self._ahead_max:
             if not self._pending and not self._refill():
@@ -170,13 +174,13 @@ class Runner:
         step = self.step
         self.holding.observe(measured, step)
         self.tick = measured.end_tick
-        if self.doing in (Doing.WAITING, Doing.DONE):
+        if self.doing in BEFORE_OR_AFTER:
             return
         if isinstance(step, HoldStep):
             self._hold(step, measured)
         elif self.doing is Doing.RESTING and isinstance(step, RestStep):
             self._rest(step, measured)
-        if self.doing is Doing.PAUSED and self.pause_ends is not None and self.tick >= self.pause_ends:
+        if self.doing is PAUSED and self.pause_ends is not None and self.tick >= self.pause_ends:
             self._climb_again(measured.end_index)
 
     def fail(self, text: str, index: int = 0) -> None:
@@ -269,7 +273,7 @@ class Runner:
 
     def _hold(self, step: HoldStep, measured: Measured) -> None:
         now, index = measured.end_tick, measured.end_index
-        if self.doing is Doing.HOLDING:
+        if self.doing is HOLDING:
             done, failed = self.holding.take(step, measured, self._origins)
             if failed:
                 self.fail(failed, index)

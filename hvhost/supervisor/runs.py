@@ -18,6 +18,9 @@ class Stage(StrEnum):
     CLOSED = "closed"
 
 
+OPEN = (Stage.ARMED, Stage.LIVE)
+
+
 class Outcome(StrEnum):
     """How a run ended; the words are those of the record."""
 
@@ -87,7 +90,7 @@ class ActiveRun:
     @property
     def open(self) -> bool:
         """Whether the run is armed or live."""
-        return self.stage in (Stage.ARMED, Stage.LIVE)
+        return self.stage in OPEN
 
     def end(self, outcome: Outcome, why: str) -> None:
         """Settle the outcome; see `OUTRANKED`; a closed run's stands for ever."""

@@ -201,6 +201,8 @@ HOLDS: tuple[tuple[str, Condition, tuple[Consequence, ...]], ...] = (
 
 STANDING = frozenset((int(mcu), permission) for mcu, move in MOVE_OF.items() for permission, moves in PERMISSION.items()
                      if moves.get(move) is permission)  # what a block may report without moving anything
+UNMOVED = frozenset((permission, move) for permission, moves in PERMISSION.items()
+                    for move, after in moves.items() if after is permission)
 
 
 def moved(permission: Permission, move: Move) -> Permission | None:

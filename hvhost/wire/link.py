@@ -67,6 +67,7 @@ __all__ = [
 HELLO_TRIES = 8  # with 250 ms each: a board that starts when its port is opened has 2 s
 HELLO_BIT = 1 << 31  # the number of a hello has this bit, so that it is never the number of a later request
 RENEWALS_PER_LEASE = 8
+GREETED, CUT_ANSWERED = LinkState.GREETED, CutState.ANSWERED  # looked at for every block: names of this module
 
 
 class Link:
@@ -166,7 +167,7 @@ class Link:
                     events.append(Fault(str(fault)))
                     continue
                 events.append(BlockIn(block))
-                if self._stops.cut_state is CutState.ANSWERED and self._stops.look(block, self._fitted):
+                if self._stops.cut_state is CUT_ANSWERED and self._stops.look(block, self._fitted):
                     events.append(CutConfirmed(self._stops.cut_number))
             else:
                 self._other(body, now_s, events)
@@ -272,7 +273,7 @@ class Link:
 
         False where nothing is sent: not greeted, a cut not yet confirmed, or sooner than lease/8 after the last one.
         """
-        if self.state is not LinkState.GREETED or self._stops.cutting or self._outbox.rest:
+        if self.state is not GREETED or self._stops.cutting or self._outbox.rest:
             return False
         if self._renewed_s is not None and now_s - self._renewed_s < self.lease_s / RENEWALS_PER_LEASE:
             return False
