@@ -7,9 +7,12 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+from hvhost.record.amend import AMENDMENT, FIELDS, INSPECTION, BreakdownKind
+from hvhost.record.catalogue import DELIVERED
 from hvhost.record.data import load_run
 from hvhost.record.meta import PHASES, RunMeta
 from hvhost.record.repack import repack
+from hvhost.report.row import COLUMNS
 from tests.record.making import Case, made_run
 
 PAGE = (Path(__file__).parents[2] / "hvhost" / "record" / "FORMAT.md").read_text("utf-8")
@@ -75,4 +78,10 @@ def test_a_stranger_s_reader_gives_the_same_samples_live_and_at_rest(tmp_path: P
 def test_the_page_names_every_key_of_meta_and_every_phase() -> None:
     """No key of META and no phase of a step is left out of the page."""
     for name in (*RunMeta.__dataclass_fields__, *PHASES):
+        assert f"`{name}`" in PAGE, name
+
+
+def test_the_page_names_every_field_that_may_be_corrected_every_kind_and_every_column() -> None:
+    """The closed lists of sections 8 and 9 are the program's."""
+    for name in (*FIELDS, *BreakdownKind, AMENDMENT, INSPECTION, DELIVERED, *COLUMNS):
         assert f"`{name}`" in PAGE, name
