@@ -10,6 +10,7 @@ import numpy as np
 
 from hvhost.measure.uncertainty import Value, scale_u
 from hvhost.record.data import RunData
+from hvhost.wire.frames import McuEvent
 from hvhost.wire.vocabulary import Cause, EventKind, HostRule
 
 BEFORE, AFTER = 12, 4  # rows around the deciding sample in which the fall is looked for
@@ -59,9 +60,11 @@ def _seen(run: RunData) -> set[tuple[int, str, int]]:
     found: set[tuple[int, str, int]] = set()
     if not run.rows:
         return found
+    told = {int(note.get("arc", 0)): str(note.get("seen_by", "MCU")) for note in run.notes_of("arc")}
     for event in run.events:
         if event.kind == EventKind.PAUSING:
-            found.add((run.row_of(event.b, 31), "MCU", event.a))
+            if not _only_overcurrent(run, event):
+                found.add((run.row_of(event.b, 31), told.get(event.a, "MCU"), event.a))
         elif event.kind == EventKind.CAUSE and event.a & DISCHARGES:
             found.add((run.row_of(event.b, 31), "MCU", 0))
         elif event.kind == EventKind.CAUSE and event.a == Cause.HOST_RULE and event.b == HostRule.BREAKDOWN:
@@ -71,6 +74,14 @@ def _seen(run: RunData) -> set[tuple[int, str, int]]:
             found.add((run.row_of(int(note.get("index", 0))), "host", 0))
     last = run.rows - 1
     return {(min(row, last), who, arc) for row, who, arc in found}
+
+
+def _only_overcurrent(run: RunData, pausing: McuEvent) -> bool:
+    """Whether a pause turned out to be an overcurrent without a collapse: that latched, and is no discharge."""
+    at_s = run.seconds_of_tick(pausing.tick)
+    soon = [e for e in run.events if e.kind == EventKind.CAUSE and 0.0 <= run.seconds_of_tick(e.tick) - at_s <= SAME_S]
+    return (any(e.a & Cause.OVERCURRENT for e in soon)
+            and not any(e.a & DISCHARGES or (e.a & Cause.HOST_RULE and e.b == HostRule.BREAKDOWN) for e in soon))
 
 
 def voltage_before(run: RunData, row: int) -> tuple[int, Value]:
