@@ -173,7 +173,7 @@ def health(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
         ("garbled", quality.garbled), ("gaps", quality.gaps), ("missed", quality.missed),
         ("repeated", quality.repeated), ("lost by outlets", lost)) if count]
     words = [wording.seat_words(snapshot),
-             f"record {'ok' if record.ok else 'FAILED'}{' ' + printable(record.text) if record.text else ''}",
+             f"record ok {printable(record.text)}".rstrip() if record.ok else "record FAILED",  # an alert says why
              ", ".join(counts) or "nothing lost"]
     if snapshot.loop.recent_s > 0.0:
         words.append(f"daemon late by {wording.minutes(snapshot.loop.recent_s)} at most")

@@ -1,12 +1,17 @@
 """The screen without a terminal: status in lines, events as they come, for logs, pipes and screen readers."""
 
+import math
+
 from hvhost.publish import wording
-from hvhost.publish.panes import EVENT_MARKS, MARKS
+from hvhost.publish.panes import EVENT_MARKS, inputs
+from hvhost.publish.runpane import hold_clock, request_words
 from hvhost.publish.snapshot import Snapshot
 from hvhost.publish.wording import View, measured, printable, span
 
 CANNOT_STOP = "this view cannot stop: use 'hvhost lower', 'hvhost cut' or the emergency switching off"
 EVERY_S = 5.0
+LONGEST = 1000  # columns: lines are folded by whoever reads them
+CORNERS = 4
 
 
 def reading_words(snapshot: Snapshot, view: View) -> str:
@@ -31,7 +36,9 @@ def brief(snapshot: Snapshot, view: View) -> str:
     if run is not None and not run.ended:
         parts.append(f"step {run.step_number}/{run.step_total} {printable(run.step_name)}".rstrip())
         if run.hold is not None:
-            parts.append(f"hold {span(run.hold.elapsed_s)} of {span(run.hold.required_s)}")
+            parts.append(hold_clock(run.hold, shown, view, 0).plain.lower())
+        if run.expected_s is not None:
+            parts.append(f"{span(run.expected_s - view.since_s)} to go")
     return f"{wording.clock_text(shown.utc_ns, view.zone)}  {'; '.join(parts)}"
 
 
@@ -39,7 +46,7 @@ def status_lines(snapshot: Snapshot, view: View) -> list[str]:
     """Return everything that matters, a line each."""
     shown = wording.as_last_known(snapshot, view)
     volts, amps = wording.volts_scale(shown), wording.amps_scale(shown)
-    sign = "negative (-)" if shown.polarity < 0 else "positive (+)"
+    sign = wording.polarity_words(shown)
     rehearsal = ", REHEARSAL: a stand-in, no bench" if shown.rehearsal else ""
     lines = [f"{printable(shown.bench_title or shown.bench)}, {sign}{rehearsal}, "
              f"{wording.clock_text(shown.utc_ns, view.zone)}",
@@ -49,31 +56,49 @@ def status_lines(snapshot: Snapshot, view: View) -> list[str]:
     lines += [f"reading: {reading_words(shown, view)}",
               f"set-point {volts.text(shown.set_volts)}, ceiling {volts.text(shown.ceiling_volts)}; "
               f"current limit {amps.text(shown.set_amps)}, trip {amps.text(shown.trip_amps)}"]
-    lines += _run_lines(shown)
-    lines += [f"{MARKS[one.judgement]} {printable(one.name)} {printable(one.state)}" for one in shown.inputs]
-    lines += [f"control: {printable(shown.seat) or 'free'}",
+    lines += _run_lines(shown, view)
+    lines += [line.plain for line in inputs(shown, LONGEST, len(shown.inputs))]
+    lines += [wording.seat_words(shown),
               f"record: {'ok' if shown.record.ok else 'FAILED'} {printable(shown.record.text)}".rstrip(),
-              f"link: garbled {shown.quality.garbled}, gaps {shown.quality.gaps}, missed {shown.quality.missed}"]
+              f"link: garbled {shown.quality.garbled}, gaps {shown.quality.gaps}, missed {shown.quality.missed}, "
+              f"repeated {shown.quality.repeated}"]
     lines += [f"outlet {one.name}: lost {one.dropped + one.failed}, clients {one.clients}" for one in shown.outlets]
     lines += [f"next: {printable(act)}" for act in shown.next_acts]
     caution = wording.caution(shown)
     return [*lines, caution] if caution else lines
 
 
-def _run_lines(shown: Snapshot) -> list[str]:
+def _run_lines(shown: Snapshot, view: View) -> list[str]:
     lines = []
     if shown.arm is not None:
-        arm = shown.arm
-        lines.append(f"request: {printable(arm.plan)}, specimen {printable(arm.specimen)}, highest "
-                     f"{wording.volts_scale(shown).text(arm.volts_highest)}, {span(arm.duration_s)} at most, "
-                     f"asked by {printable(arm.asked_by)}")
+        lines.append(f"request: {', '.join(request_words(shown, shown.arm))}")
     if shown.run is not None:
         run = shown.run
         lines.append(f"{'last run' if run.ended else 'run'} {run.run_id}: {printable(run.plan or run.kind)}, specimen "
-                     f"{printable(run.specimen) or '--'}, step {run.step_number}/{run.step_total}, {run.folder}")
+                     f"{printable(run.specimen) or '--'}, operator {printable(run.operator) or '--'}, step "
+                     f"{run.step_number}/{run.step_total} {printable(run.step_text or run.step_name)}, {run.folder}")
+        if run.hold is not None and not run.ended:
+            lines.append(hold_clock(run.hold, shown, view, 0).plain)
+    if shown.course:
+        lines.append(f"to come: {_course(shown)}")
+    if shown.evidence is not None:
+        one = shown.evidence
+        peak_v = max((point.v_max for point in one.points), default=math.nan)
+        peak_a = max((point.i_max for point in one.points), default=math.nan)
+        lines.append(f"last {one.kind}: snapshot {one.number} {printable(one.text)}, at most "
+                     f"{wording.volts_scale(shown).text(peak_v)} and {wording.amps_scale(shown).text(peak_a)}")
     if shown.verdict_text:
         lines.append(f"verdict: {printable(shown.verdict_text)}")
     return lines
+
+
+def _course(shown: Snapshot) -> str:
+    """The next corners of the plan's course, from the present."""
+    scale = wording.volts_scale(shown)
+    corners = [f"{scale.text(point.volts)} in {wording.minutes(max(0.0, point.t_s - shown.now_s))}"
+               for point in shown.course[1: 1 + CORNERS]]
+    more = len(shown.course) - 1 - len(corners)
+    return ", ".join(corners) + (f", and {more} more" if more > 0 else "")
 
 
 class PlainFollower:

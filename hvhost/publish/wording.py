@@ -215,6 +215,9 @@ def alerts(snapshot: Snapshot, view: View) -> list[str]:
         found.append(f"TRIPPED: {', '.join(map(printable, snapshot.latched))}")
     if not snapshot.record.ok:
         found.append(f"RECORD FAILED: {printable(snapshot.record.text)}")
+    if not snapshot.disk.ok:
+        found.append(f"DISK NEARLY FULL: {bytes_text(snapshot.disk.free_b)} free, a run needs "
+                     f"{bytes_text(snapshot.disk.floor_b)}")
     if snapshot.power_words == cautions.PROGRAMMED_TO_ZERO:
         found.append(cautions.PROGRAMMED_TO_ZERO.upper())
     return found
@@ -237,6 +240,14 @@ def minutes(seconds: float) -> str:
     if size < 1.0:
         return f"{size * 1e3:.3g} ms"
     return f"{size:.0f} s" if size < 59.5 else span(size + 0.5)
+
+
+def bytes_text(size: float | None) -> str:
+    """Return a size for people, in units of ten: 84 GB, 512 MB."""
+    if size is None or not math.isfinite(size):
+        return "--"
+    factor, unit = next(((f, u) for f, u in ((1e12, "TB"), (1e9, "GB"), (1e6, "MB")) if size >= f), (1e3, "kB"))
+    return f"{size / factor:.3g} {unit}"
 
 
 def _request_words(snapshot: Snapshot, age_s: float) -> str:

@@ -57,4 +57,6 @@ def test_help_says_what_the_keys_do(capsys: pytest.CaptureFixture[str]) -> None:
         watch.run(["--help"])
     text = capsys.readouterr().out
     assert "SPACE or c cuts at once" in text
-    assert "--once" in text
+    for option in ("--once", "--bench-display", "--no-bell", "--no-colour", "--ascii", "--plot"):
+        assert option in text
+    assert "cannot arm" in " ".join(text.split())

@@ -11,7 +11,7 @@ from rich.cells import cell_len
 from rich.style import Style
 
 from hvhost.publish.snapshot import LinkState, Permission, Phase, VoltageState
-from tests.pictures.draw import SIZES, lines_of, svg_of
+from tests.pictures.draw import PAGES, SIZES, lines_of, svg_of, without_colour
 from tests.pictures.states import STATES
 
 # What must be read in a state, at every size: the words of PROTOCOL.md's states and of the S-rules.
@@ -63,13 +63,14 @@ def text_of(state: str, size: tuple[int, int]) -> str:
     return "\n".join(line.plain for line in lines_of(state, *size))
 
 
+@pytest.mark.parametrize("page", PAGES)
 @pytest.mark.parametrize("size", SIZES)
-@pytest.mark.parametrize("state", STATES)
-def test_nothing_overflows(state: str, size: tuple[int, int]) -> None:
+def test_nothing_overflows(size: tuple[int, int], page: str) -> None:
     """Each picture has exactly its lines, each within its width."""
-    lines = lines_of(state, *size)
-    assert len(lines) == size[1]
-    assert max(cell_len(line.plain) for line in lines) <= size[0]
+    for state in STATES:
+        lines = lines_of(state, *size, PAGES[page])
+        assert len(lines) == size[1]
+        assert max(cell_len(line.plain) for line in lines) <= size[0]
 
 
 @pytest.mark.parametrize("size", SIZES)
@@ -93,15 +94,16 @@ def test_every_word_of_the_state_has_a_picture() -> None:
 @pytest.mark.parametrize("state", STATES)
 def test_no_picture_claims_safety_or_off(state: str) -> None:
     """S6: nothing is called safe, dead or off; 'switch off' is an instruction."""
-    text = " ".join(text_of(state, (120, 40)).lower().split())
-    text = text.replace("switch off", "").replace("switching off", "").replace("prove dead", "")
-    assert not re.search(r"\b(safe|dead|off|discharged|earthed)\b", text)
+    for page in PAGES.values():
+        text = " ".join(" ".join(line.plain for line in lines_of(state, 120, 40, page)).lower().split())
+        text = text.replace("switch off", "").replace("switching off", "").replace("prove dead", "")
+        assert not re.search(r"\b(safe|dead|off|discharged|earthed)\b", text)
 
 
 @pytest.mark.parametrize("state", STATES)
 def test_there_is_no_green(state: str) -> None:
     """S0: no green state, and colour only where words say the same: red alerts, yellow for an old reading."""
-    for line in lines_of(state, 120, 40):
+    for line in [line for page in PAGES.values() for line in lines_of(state, 120, 40, page)]:
         for style in [line.style, *(span.style for span in line.spans)]:
             parsed = style if isinstance(style, Style) else Style.parse(style or "")
             names = {color.name for color in (parsed.color, parsed.bgcolor) if color is not None}
@@ -126,6 +128,16 @@ def test_inputs_are_named_at_every_size(state: str) -> None:
         assert one.name in text
 
 
+def test_without_colour_the_same_is_read() -> None:
+    """A picture without colour holds the same words; what was red is reversed or capitals still."""
+    bare = svg_of("tripped", 80, 24, colour=False)
+    assert "TRIPPED" in bare
+    for line in lines_of("tripped", 80, 24):
+        plain = without_colour(line)
+        assert plain.plain == line.plain
+        assert not {style.color for style in [plain.style, *(one.style for one in plain.spans)] if style} - {None}
+
+
 def test_a_picture_is_an_svg() -> None:
     """The picture holds the text, for whoever looks and for whoever searches."""
     svg = svg_of("tripped", 80, 24)
@@ -136,7 +148,8 @@ def test_a_picture_is_an_svg() -> None:
 def test_the_command_draws_what_is_asked(tmp_path: Path) -> None:
     """``python -m tests.pictures OUTDIR --size 80x24`` writes one file a state."""
     root = Path(__file__).resolve().parents[2]
-    done = subprocess.run([sys.executable, "-m", "tests.pictures", str(tmp_path), "--size", "80x24", "--state", "hold",
-                           "--state", "idle"], cwd=root, capture_output=True, text=True, timeout=120, check=True)
-    assert sorted(os.listdir(tmp_path)) == ["hold-80x24.svg", "idle-80x24.svg"]
+    chosen = ["--size", "80x24", "--state", "hold", "--state", "idle", "--page", "screen", "--no-colour"]
+    done = subprocess.run([sys.executable, "-m", "tests.pictures", str(tmp_path), *chosen], cwd=root,
+                          capture_output=True, text=True, timeout=120, check=True)
+    assert sorted(os.listdir(tmp_path)) == ["screen-hold-80x24.svg", "screen-idle-80x24.svg"]
     assert "2 pictures" in done.stdout

@@ -6,7 +6,7 @@ import pytest
 
 from hvhost.bench import cautions
 from hvhost.publish.plain import PlainFollower, brief, reading_words, status_lines
-from hvhost.publish.snapshot import Permission, Phase
+from hvhost.publish.snapshot import CoursePoint, Permission, Phase
 from hvhost.publish.wording import View
 from tests.pictures.draw import ZONE
 from tests.pictures.states import IDLE, RUNNING, STATES, TRIPPED
@@ -18,8 +18,10 @@ def test_the_status_says_everything_that_matters() -> None:
     """State, reading, set-point, limits, inputs by name, control, record, link, next acts."""
     text = "\n".join(status_lines(RUNNING, VIEW))
     for words in ("RUNNING: HOLD; voltage present; power on; link greeted", "(17.996 ± 0.052) kV", "set-point 18.00 kV",
-                  "ceiling 20.00 kV", "trip 3.000 mA", "ok interlock closed", "control: bob", "record: ok 1.9 MB",
-                  "garbled 1, gaps 0, missed 3", "outlet local: lost 0", "next: hvhost cut", "withstand.yaml"):
+                  "ceiling 20.00 kV", "trip 3.000 mA", "ok interlock closed", "control bob", "record: ok 1.9 MB",
+                  "garbled 1, gaps 0, missed 3, repeated 0", "HOLD 0:42 of 1:00 continuous",
+                  "to come: 18.00 kV in 18 s, 0.00 kV in 27 s", "outlet local: lost 0", "next: hvhost cut",
+                  "withstand.yaml"):
         assert words in text
 
 
@@ -32,6 +34,16 @@ def test_every_state_has_its_lines(state: str) -> None:
     if snapshot.permission is Permission.IDLE:
         assert cautions.BEFORE_TOUCHING in lines[-1]
     assert brief(snapshot, view).isprintable()
+
+
+def test_the_status_tells_the_last_arc_and_an_open_request() -> None:
+    """What a picture shows is told in words too."""
+    text = "\n".join(status_lines(TRIPPED, VIEW))
+    assert "last trip: snapshot 4 breakdown, at most 18.01 kV and 1.552 mA" in text
+    asked = "\n".join(status_lines(STATES["requested"][0], VIEW))
+    assert "request: REQUEST: withstand.yaml, specimen S-1042, highest 18.00 kV" in asked
+    long = replace(RUNNING, course=tuple(CoursePoint(1078.0 + n, 1e3 * n) for n in range(9)))
+    assert "3.00 kV in 3 s, 4.00 kV in 4 s, and 4 more" in "\n".join(status_lines(long, VIEW))
 
 
 def test_an_old_reading_and_an_unknown_one_are_told_apart() -> None:

@@ -17,12 +17,14 @@ from pathlib import Path
 
 import pyte
 import pytest
+from rich.console import Console
 
 from hvhost.publish.keys import Act
-from hvhost.publish.screen import GONE, Acts, show_lines, show_once
+from hvhost.publish.screen import GONE, Acts, needs_ascii, show_lines, show_once
+from hvhost.publish.snapshot import Snapshot
 from hvhost.publish.stopkeys import Stopper
 from hvhost.words.errors import CannotConnect
-from tests.pictures.states import IDLE, RUNNING
+from tests.pictures.states import IDLE, RUNNING, STATES
 from tests.publish.serving import FakeBench, served
 
 PATIENCE_S = 40.0  # a loaded machine may take long to start an interpreter; nothing is judged by time
@@ -71,17 +73,20 @@ class Terminal:
         return code
 
 
-def keep_publishing(bench: FakeBench, end: threading.Event) -> None:
-    """Publish a running bench until told to end."""
+def keep_publishing(bench: FakeBench, end: threading.Event, shown: Snapshot = RUNNING) -> None:
+    """Publish a bench until told to end."""
     seq = 0
     while not end.is_set():
         seq += 1
-        bench.publish(replace(RUNNING, seq=seq, now_s=time.monotonic(), utc_ns=time.time_ns()))
+        now_s = time.monotonic()
+        moved = now_s - shown.now_s
+        trend = tuple(one._replace(t_s=one.t_s + moved) for one in shown.trend)
+        bench.publish(replace(shown, seq=seq, now_s=now_s, utc_ns=time.time_ns(), trend=trend, recent=trend))
         end.wait(0.05)
 
 
 def test_the_screen_at_work(tmp_path: Path) -> None:
-    """Drawn at 80x24, drawn anew at 120x40, keys lower and cut without the seat, a lost daemon is told, q leaves."""
+    """Drawn at 80x24, drawn anew at each other size, keys lower and cut without the seat, a lost daemon is told."""
     end = threading.Event()
     with served(tmp_path) as bench:
         publisher = threading.Thread(target=keep_publishing, args=(bench, end))
@@ -94,6 +99,15 @@ def test_the_screen_at_work(tmp_path: Path) -> None:
             terminal.until(lambda text: "q: leave, run goes on" in text.split("\n")[39])
             terminal.press(b"l")
             terminal.until(lambda text: "lower sent by this key: lowering" in text)
+            terminal.press(b"t")
+            terminal.until(lambda text: "last 1:00" in text)
+            terminal.press(b"b")
+            terminal.until(lambda text: "b: bell silent" in text)
+            terminal.resize(200, 60)
+            terminal.until(lambda text: "q: leave (what runs goes on)" in text.split("\n")[59])
+            terminal.resize(60, 15)
+            terminal.until(lambda text: "SPACE: cut  l: lower" in text.split("\n")[14])
+            terminal.resize(80, 24)
             terminal.press(b"\x1b[A ")
             terminal.until(lambda text: "cut sent by this key: cut 1 sent" in text)
             assert [method for method, _ in bench.asked] == ["lower", "cut"]
@@ -126,6 +140,67 @@ def test_keys_stop_though_the_terminal_takes_no_output(tmp_path: Path) -> None:
             publisher.join()
             terminal.program.send_signal(signal.SIGKILL)
             terminal.close()
+
+
+def test_a_terminal_that_takes_no_output_can_be_left(tmp_path: Path) -> None:
+    """Its modes are restored without waiting for output that nobody takes; a cut pressed meanwhile went out."""
+    end, cut = threading.Event(), threading.Event()
+    with served(tmp_path) as bench:
+        bench.on_call = lambda method: cut.set() if method == "cut" else None
+        publisher = threading.Thread(target=keep_publishing, args=(bench, end))
+        publisher.start()
+        terminal = Terminal(["--socket", bench.path], 120, 40)
+        try:
+            terminal.until(lambda text: "q: leave" in text)
+            terminal.press(b"\x13 ")  # Ctrl-S is a key like any other here: it freezes nothing
+            assert cut.wait(PATIENCE_S)
+            terminal.until(lambda text: "cut sent by this key: cut 1 sent" in text)
+            terminal.press(b"q")
+            terminal.until(lambda text: "left the view" in text)
+            assert terminal.program.wait(PATIENCE_S) == 0
+        finally:
+            end.set()
+            publisher.join()
+            terminal.close()
+
+
+def test_the_display_beside_the_arm_input(tmp_path: Path) -> None:
+    """``--bench-display`` shows the open request, and its keys stop like any view's."""
+    with served(tmp_path) as bench:
+        end = threading.Event()
+        publisher = threading.Thread(target=keep_publishing, args=(bench, end, STATES["requested"][0]))
+        publisher.start()
+        terminal = Terminal(["--socket", bench.path, "--bench-display", "--no-bell", "--ascii"], 80, 24)
+        try:
+            text = terminal.until(lambda text: "REQUEST TO ENERGISE" in text and "CANNOT ARM" in text)
+            assert "asked by bob (pid 4211)" in text
+            assert "THIS DISPLAY CANNOT ARM" in text
+            assert text.isascii()
+            terminal.press(b"c")
+            while not bench.asked:
+                time.sleep(0.001)
+            assert bench.asked[0][0] == "cut"
+        finally:
+            end.set()
+            publisher.join()
+            terminal.close()
+
+
+class Encoded(io.StringIO):
+    """A file of a stated encoding."""
+
+    encoding = "latin-1"
+
+
+def test_a_terminal_without_unicode_is_asked_for(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Another encoding than UTF-8, or a console without braille, gets ASCII."""
+    monkeypatch.setenv("TERM", "xterm-256color")
+    assert needs_ascii(Console(file=Encoded()))
+    modern = Encoded()
+    modern.encoding = "utf-8"
+    assert not needs_ascii(Console(file=modern))
+    monkeypatch.setenv("TERM", "linux")
+    assert needs_ascii(Console(file=modern))
 
 
 class FakeStopper(Stopper):
@@ -175,6 +250,7 @@ def test_once_prints_the_status(tmp_path: Path) -> None:
             end.set()
             publisher.join()
     assert "RUNNING: HOLD; voltage present" in out.getvalue()
+    assert "this view cannot stop" in out.getvalue()
 
 
 def test_lines_end_when_told_or_when_the_daemon_is_gone(tmp_path: Path) -> None:

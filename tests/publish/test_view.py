@@ -8,6 +8,7 @@ from hypothesis import strategies as st
 from rich.cells import cell_len
 
 from hvhost.bench import cautions
+from hvhost.publish import wording
 from hvhost.publish.snapshot import EventLine, InputView, Reading, RunView, Severity, VoltageState
 from hvhost.publish.view import fitted, screen
 from hvhost.publish.wording import View
@@ -69,6 +70,39 @@ def test_a_small_terminal_keeps_the_alert_and_the_keys() -> None:
     lines = [line.plain for line in screen(snapshot, view, 50, 8)]
     assert "WILL RE-ENERGISE" in lines[0]
     assert "SPACE: cut" in lines[-1]
+
+
+@pytest.mark.parametrize("state", [name for name, (one, _) in STATES.items() if one.run and one.run.hold])
+@pytest.mark.parametrize("size", [(80, 24), (90, 26), (110, 32), (120, 40)])
+def test_readings_state_clock_alerts_and_keys_are_always_there(state: str, size: tuple[int, int]) -> None:
+    """Whatever gives way at a size, an engineer still reads these."""
+    snapshot, view = STATES[state]
+    lines = [line.plain for line in screen(snapshot, replace(view, zone=ZONE), *size)]
+    text = "\n".join(lines)
+    age = "none younger" if wording.output_unknown(snapshot, view) else " age "
+    for part in ("HOLD 0:", "VOLTAGE", age, "next:" if not view.note else view.note):
+        assert part in text
+    assert "cut" in lines[-1] or "CANNOT STOP" in lines[-1]
+    for alert in wording.alerts(wording.as_last_known(snapshot, view), view):
+        assert alert.split(":")[0] in text
+
+
+@pytest.mark.parametrize("state", STATES)
+def test_nothing_that_matters_is_clipped_at_80_columns(state: str) -> None:
+    """No line but an event's ends in an ellipsis: texts are folded or said more shortly."""
+    snapshot, view = STATES[state]
+    lines = [line.plain for line in screen(snapshot, replace(view, zone=ZONE), 80, 24)]
+    assert not [line for line in lines if line.rstrip().endswith("…") and not line[1:3].isdigit()]
+
+
+@pytest.mark.parametrize("state", STATES)
+def test_ascii_is_ascii(state: str) -> None:
+    """A terminal that draws nothing else gets nothing else, at exactly the same size."""
+    snapshot, view = STATES[state]
+    lines = screen(snapshot, replace(view, ascii_only=True, zone=ZONE), 80, 24)
+    assert all(line.plain.isascii() for line in lines)
+    assert all(line.cell_len <= 80 for line in lines)
+    assert len(lines) == 24
 
 
 def test_a_clipped_line_shows_that_it_is() -> None:

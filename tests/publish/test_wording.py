@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 
 from hvhost.bench import cautions
 from hvhost.publish import wording
-from hvhost.publish.snapshot import ArmView, LinkState, Permission, Phase, StopState, VoltageState
+from hvhost.publish.snapshot import ArmView, DiskView, LinkState, Permission, Phase, StopState, VoltageState
 from hvhost.publish.wording import Scale, View, fine, left, measured, span
 from tests.pictures.states import IDLE, NOW_NS, RUNNING, STATES, TRIPPED
 
@@ -151,6 +151,45 @@ def test_the_caution_says_how_many_bleed_times_have_passed() -> None:
     assert text.startswith("14.2 bleed times since the cut. Not measured. 'Grounded' is the position of a contact")
     assert wording.caution(replace(IDLE, discharge_text=cautions.BEFORE_TOUCHING)).count("Before touching") == 1
     assert wording.caution(RUNNING) == ""
+
+
+def test_the_discharge_says_nothing_twice() -> None:
+    """A contact's position is called no proof once; a reason that ends in a stop gets no second one."""
+    grounded = replace(IDLE, voltage=VoltageState.GROUNDED,
+                       voltage_text="grounding device's contact says closed: a position, not a proof")
+    assert wording.caution(grounded).count("proof") == 1
+    stopped = wording.caution(replace(IDLE, voltage_text="the voltage rose again."))
+    assert ".." not in stopped
+    lowering = replace(RUNNING, permission=Permission.LOWERING, voltage_text="the output is being lowered")
+    assert wording.caution(lowering).startswith("Voltage present: the output is being lowered. Before touching")
+
+
+def test_nothing_to_come_is_vouched_for_where_the_output_is_unknown() -> None:
+    """S13: the course goes with the reading."""
+    assert RUNNING.course
+    assert wording.as_last_known(RUNNING, View(connected=False)).course == ()
+
+
+def test_who_has_control_and_who_stopped_them() -> None:
+    """A stop by someone else stands beside the name until it is acknowledged."""
+    assert wording.seat_words(replace(IDLE, seat="")) == "control free"
+    assert wording.seat_words(replace(IDLE, seat="bob", stopped_by="alice")) == (
+        "control bob, stopped by alice, not acknowledged")
+
+
+@pytest.mark.parametrize(("seconds", "text"), [(0.0, "0 ms"), (-0.063, "63 ms"), (0.99, "990 ms"), (7.4, "7 s"),
+                                               (59.4, "59 s"), (59.6, "1:00"), (77.0, "1:17"), (7500.0, "2:05:00")])
+def test_short_spans(seconds: float, text: str) -> None:
+    """An axis is labelled in what suits it."""
+    assert wording.minutes(seconds) == text
+
+
+def test_a_disk_that_is_nearly_full_is_an_alert() -> None:
+    """It ends runs, so it is seen before one is opened."""
+    full = replace(IDLE, disk=DiskView(free_b=312e6, floor_b=500e6, ok=False))
+    assert wording.alerts(full, View()) == ["DISK NEARLY FULL: 312 MB free, a run needs 500 MB"]
+    assert wording.bytes_text(None) == "--"
+    assert wording.bytes_text(84.4e9) == "84.4 GB"
 
 
 def test_what_could_move_a_cursor_is_made_visible() -> None:
