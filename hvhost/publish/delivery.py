@@ -132,8 +132,9 @@ def _run_command(words: tuple[str, ...], limit_s: float, place: Path) -> None:
     except BaseException:  # this process is told to end: nothing of it stays behind
         _end_group(child)
         raise
+    said = tail.text
     if code:
-        raise RecordFault("the command to end with code 0", str(code), words[0], tail.text)
+        raise RecordFault("the command to end with code 0", str(code), words[0], said)
 
 
 class _Tail:
@@ -146,8 +147,10 @@ class _Tail:
         self._thread.start()
 
     def _read(self) -> None:
-        with contextlib.suppress(OSError, ValueError):
-            while self._pipe is not None and (data := os.read(self._pipe.fileno(), 65_536)):
+        if self._pipe is None:
+            return
+        with contextlib.suppress(OSError), self._pipe as pipe:
+            while data := os.read(pipe.fileno(), 65_536):
                 self._kept = (self._kept + data)[-SAID_MAX:]
 
     @property
