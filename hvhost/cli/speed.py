@@ -29,8 +29,12 @@ def run(argv: list[str]) -> int:
                                      formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--only", default="", metavar="B1,B2", help="these budgets only")
     parser.add_argument("--quick", action="store_true", help="shorter where that is possible")
+    parser.add_argument("--minutes", type=float, default=0.0, metavar="M",
+                        help="how long B4, B5 and B6 watch a daemon: an hour judges them")
     parser.add_argument("--json", action="store_true", help="the same with the raw figures, as one JSON object")
     options = parser.parse_args(argv)
+    if not 0.0 <= options.minutes <= 1440.0:
+        parser.error("--minutes: expected at most 1440")
     from hvhost.speed.budgets import chosen, measure
     from hvhost.speed.setting import Setting
     from hvhost.speed.table import table
@@ -40,7 +44,7 @@ def run(argv: list[str]) -> int:
     begun = time.monotonic()
     with tempfile.TemporaryDirectory(prefix="hvhost-speed-") as folder:
         setting = Setting(bench=examples() / "demo.bench.yaml", folder=Path(folder), say=teller.say,
-                          minutes=QUICK_MINUTES if options.quick else MINUTES)
+                          minutes=options.minutes or (QUICK_MINUTES if options.quick else MINUTES))
         lines = measure(setting, budgets)
     teller.end()
     held = all(line.within for line in lines)
