@@ -34,6 +34,12 @@ TABLE: dict[str, tuple[Row, ...]] = {
         (127, REFUSE, "arcs.total", "at least the count, 50", "10"),
         (128, REFUSE, "arcs.restrike", "at most the rest, 500 ms", "800 ms"),
     ),
+    "archive.yaml": (
+        (130, REFUSE, "archive.results", "a whole path such as '/srv/results'", "'results'"),
+        (132, REFUSE, "archive.separator", "another character than the decimal mark", "'comma'"),
+        (133, REFUSE, "archive.command", "a program by its whole path", "'import-result'"),
+        (134, REFUSE, "archive.compress", "one of command, command_limit", "'compress'"),
+    ),
     "bad-indentation.yaml": (
         (86, REFUSE, "form", "one 'key: value' on a line,", "a second ': ', or a key indented too far"),
     ),
