@@ -29,6 +29,7 @@ MARKS = {InputJudgement.OK: "ok", InputJudgement.NOT_OK: "!!", InputJudgement.UN
 EVENT_MARKS = {Severity.NOTE: "  ", Severity.ATTENTION: "! ", Severity.TRIP: "!!"}
 HINDERED = frozenset((Permission.IDLE, Permission.REQUESTED, Permission.PROVING))
 MOST_FOLDED = 3  # rows of one event
+LEAST_HEALTH = 2  # control and record; what else there is gives way from its end
 
 
 def header(snapshot: Snapshot, view: View, width: int) -> Text:
@@ -37,9 +38,9 @@ def header(snapshot: Snapshot, view: View, width: int) -> Text:
     name = printable(snapshot.bench_title or snapshot.bench)
     clock = wording.clock_text(snapshot.utc_ns, view.zone)
     badge = "  REHEARSAL: a stand-in, no bench" if snapshot.rehearsal else ""
-    if cell_len(name) + len(sign) + len(badge) + len(clock) + 6 > width:
-        clock, badge = clock[11:], badge[:11]
-    end = f"  {sign}{badge}  {clock} "
+    brief, hour = badge[:11], clock[11:]
+    ends = [f"  {sign}{badge}  {clock} ", f"  {sign}{brief}  {hour} ", f"  {sign[-3:]}{brief}  {hour} "]
+    end = next((one for one in ends if cell_len(name) + len(one) < width), ends[-1])
     return Text(f" {cells(name, max(1, width - 1 - cell_len(end)))}{end}", style=HEAD)
 
 
@@ -177,6 +178,8 @@ def health(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
              ", ".join(counts) or "nothing lost"]
     if snapshot.loop.recent_s > 0.0:
         words.append(f"daemon late by {wording.minutes(snapshot.loop.recent_s)} at most")
+    while len(words) > LEAST_HEALTH and len(joined(words, " · ", width - 1, rows + 1)) > rows:
+        words.pop()
     lines = joined(words, " · ", width - 1, rows)
     return [Text(f" {line}", style="" if record.ok and not snapshot.stopped_by else "bold") for line in lines]
 

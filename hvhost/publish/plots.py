@@ -129,7 +129,7 @@ def _evidence(snapshot: Snapshot, scale: Scale, width: int, rows: int) -> list[s
     drawing = _room(width, rows, begin_s, end_s, top)
     drawing.spans(spans)
     drawing.mark(0.0)
-    name = f"{evidence.kind} {evidence.number}"
+    name = f"last {evidence.kind}"
     words = wording.printable(evidence.text) or evidence.kind
     marks = [(begin_s, f"-{minutes(begin_s)}"), (0.0, words), (end_s, f"+{minutes(end_s)}")]
     return _framed(drawing, scale, top, rows, name, [name, minutes(end_s - begin_s)], marks)

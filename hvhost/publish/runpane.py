@@ -6,7 +6,7 @@ from rich.cells import cell_len
 from rich.text import Text
 
 from hvhost.publish import wording
-from hvhost.publish.folding import joined, wrapped
+from hvhost.publish.folding import cells, joined, wrapped
 from hvhost.publish.snapshot import ArmView, HoldView, Permission, Phase, RunView, Snapshot
 from hvhost.publish.wording import View, left, local_time, printable, span
 
@@ -33,8 +33,9 @@ def run_lines(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Tex
         lines = [line for parts in texts for line in _flowing(parts, width)]
         if len(lines) <= spare:
             return [*head, *map(Text, lines)]
-    flowing = [part for parts in _ways(run, snapshot, view)[-1] for part in parts if part]
-    return [*head, *map(Text, joined([printable(part) for part in flowing], BETWEEN, width, max(0, spare)))][:rows]
+    who = cells(printable(BETWEEN.join(_who_brief(run))), width)
+    texts = [*_flowing(_ways(run, snapshot, view)[-1][0], width), who]
+    return [*head, *map(Text, texts[: max(0, spare)])][:rows]
 
 
 def _flowing(parts: Sequence[str], width: int) -> list[str]:
@@ -53,9 +54,10 @@ def _ways(run: RunView, snapshot: Snapshot, view: View) -> tuple[tuple[Sequence[
     """Return ways to say it, each lines of parts: from one line for everything to as few as they fit into."""
     step, timing, who = _step(run), _timing(run, snapshot, view), _who(run)
     if run.ended:
-        return ((who[:1], who[1:], [*timing, step], [run.folder]), (who, [*timing, step]), ([*who, *timing],))
+        return ((who[:1], who[1:], [*timing, step], [run.folder]), (who, [*timing, step]), ([*who, *timing],),
+                ([*_who_brief(run)[:2], *timing],))
     return (([step], timing, who[:1], who[1:], [run.folder]), ([step], timing, who), ([step, *timing], who),
-            ([_step_brief(run), *timing], who), ([_step_brief(run), *timing, *who],))
+            ([_step_brief(run), *timing], who), ([_step_brief(run), *timing], _who_brief(run)))
 
 
 def _step(run: RunView) -> str:
@@ -69,6 +71,12 @@ def _step_brief(run: RunView) -> str:
 def _who(run: RunView) -> list[str]:
     return [f"{'last run' if run.ended else 'run'} {run.run_id}: {run.plan or run.kind}",
             f"specimen {run.specimen or '--'}, operator {run.operator or '--'}"]
+
+
+def _who_brief(run: RunView) -> list[str]:
+    """The same for a narrow place: a long title may be clipped at its end, a specimen never is."""
+    return [f"specimen {run.specimen or '--'}", f"{'last run' if run.ended else 'run'} {run.run_id}",
+            run.plan or run.kind]
 
 
 def request_words(snapshot: Snapshot, arm: ArmView) -> list[str]:

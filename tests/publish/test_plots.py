@@ -73,7 +73,7 @@ def test_the_last_arc_is_shown_once_nothing_is_energised() -> None:
     assert shown(arc, View(plotted=Plotted.EVIDENCE)) is Plotted.EVIDENCE
     assert shown(RUNNING, View(plotted=Plotted.EVIDENCE)) is Plotted.RUN
     drawn = text(TRIPPED, rows=6)
-    assert "trip 4" in drawn
+    assert "last trip" in drawn
     assert "-63 ms" in drawn
     assert "+64 ms" in drawn
     assert "breakdown" in drawn
@@ -83,7 +83,7 @@ def test_with_many_rows_both_are_shown() -> None:
     """On a wall monitor nobody needs the key."""
     drawn = text(TRIPPED, width=200, rows=20)
     assert "whole run" in drawn
-    assert "trip 4" in drawn
+    assert "last trip" in drawn
 
 
 def test_the_key_goes_round_what_there_is() -> None:
