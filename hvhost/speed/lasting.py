@@ -43,8 +43,9 @@ def measure(setting: Setting) -> list[Line]:
         energise(client, loaded.board)
         time.sleep(SETTLE_S)
         watched = _watch(setting, loaded, client)
-    long = f"{setting.minutes:g} min at 10 k pairs/s, recorder, {'broker, ' if loaded.broker else ''}{WATCHERS} watchers " \
-           f"at {RATE_HZ:g} Hz and a stalled one"
+    broker = "broker, " if loaded.broker else ""
+    long = (f"{setting.minutes:g} min at 10 k pairs/s, recorder, {broker}{WATCHERS} watchers at {RATE_HZ:g} Hz and a "
+            "stalled one")
     if setting.minutes < JUDGING_MINUTES:
         long += f" (shortened: {JUDGING_MINUTES:g} min judge it)"
     return [*_stalls(watched, long), _processor(watched, long), *_memory(watched, long)]
@@ -57,7 +58,7 @@ def _watch(setting: Setting, loaded: Loaded, client: Client) -> Watched:
     try:
         while (left_s := end_s - time.monotonic()) > 0.0:
             watched.seen.append(look(pid))
-            setting.say(f"a daemon under full load, {left_s:.0f} s to go, {watched.seen[-1].resident / MEGABYTE:.0f} MB")
+            setting.say(f"a daemon under load, {left_s:.0f} s to go, {watched.seen[-1].resident / MEGABYTE:.0f} MB")
             time.sleep(min(EVERY_S, left_s, setting.minutes * 3.0))
             shot = client.call("snapshot") or {}
             if shot.get("permission") != "running":

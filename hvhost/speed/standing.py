@@ -24,6 +24,7 @@ from hvhost.words.errors import CannotConnect, CommandRefused
 
 START_S, STEP_S, CUT_S = 30.0, 0.005, 5.0
 CUTS, RESTARTS = 20, 5
+QUICK_CUTS, QUICK_RESTARTS = 3, 2
 MEGABYTE = 1e6
 TICKS = os.sysconf("SC_CLK_TCK")
 
@@ -199,7 +200,7 @@ def measure_restart(setting: Setting) -> list[Line]:
         daemon.start()
         try:
             daemon.reporting()
-            for k in range(2 if setting.minutes < 1.0 else RESTARTS):
+            for k in range(QUICK_RESTARTS if setting.minutes < 1.0 else RESTARTS):
                 setting.say(f"restart {k + 1}")
                 with Client.connect(daemon.socket) as bench:
                     energise(bench, board)
@@ -223,7 +224,7 @@ def measure_cut(setting: Setting) -> list[Line]:
         daemon.start()
         try:
             daemon.reporting()
-            for k in range(3 if setting.minutes < 1.0 else CUTS):
+            for k in range(QUICK_CUTS if setting.minutes < 1.0 else CUTS):
                 setting.say(f"cut {k + 1}")
                 seconds.append(_cut(daemon, board))
         finally:
