@@ -55,7 +55,7 @@ PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
                st.Permission.PAUSING: (Permission.PAUSING, Phase.NONE),
                st.Permission.LOWERING: (Permission.LOWERING, Phase.NONE)}
 COURSE_EVERY_S = 1.0  # the course is made anew so often, and at once when the run goes on to something else
-RECENT_EVERY_S = 1.0  # a minute's buckets go out so often
+TREND_EVERY_S = 1.0  # so are the buckets of the run and of the last minute: hundreds of numbers
 RESTING = Doing.RESTING
 WAITING_MAX = 64  # blocks that wait for a picture before they are folded without one
 
@@ -77,7 +77,8 @@ class Composer:
         self._place = Place()
         self._course: tuple[CoursePoint, ...] = ()
         self._course_of: tuple[object, ...] = ()
-        self._course_s = self._recent_s = -math.inf
+        self._course_s = self._trend_s = -math.inf
+        self._trend: tuple[TrendBucket, ...] = ()
         self._recent: tuple[TrendBucket, ...] = ()
         self._evidence: EvidenceView | None = None
         self._run_id = ""
@@ -127,6 +128,7 @@ class Composer:
         reading = self._reading(now_s)
         set_volts = bench.voltage.program.value(sample.v_word) if sample else None
         course = self._course_now(now_s, set_volts)
+        self._renew_trends(now_s)
         return Snapshot(
             utc_ns=self.utc_of(now_s), now_s=now_s, seq=self._seq, bench=bench.name, bench_title=bench.title,
             polarity=bench.polarity, rehearsal=self.rehearsal, port=self.port,
@@ -141,8 +143,8 @@ class Composer:
             trip_amps=_trip_amps(core), inputs=input_views(core), run=self._run(run, course, now_s),
             arm=self._arm(run, now_s),
             pause_s=run.runner.pause_left_s() if run else None, warning_s=self._warning(), seat=seat_words(core),
-            stopped_by=core.seat.stopped_by, events=self._events(), trend=brief(self.trend.buckets()),
-            recent=self._recent_now(now_s), course=course, evidence=self._evidence, next_acts=next_acts(core),
+            stopped_by=core.seat.stopped_by, events=self._events(), trend=self._trend,
+            recent=self._recent, course=course, evidence=self._evidence, next_acts=next_acts(core),
             cautions=(BEFORE_TOUCHING, NOT_A_SAFETY_DEVICE), discharge_text="",
             bleeds_passed=self._bleeds(), verdict_text=self.verdict_text, quality=self._quality(),
             record=self.record, outlets=outlets)
@@ -181,6 +183,7 @@ class Composer:
             self._run_id, self._place, self._evidence = run.spec.run_id, Place(), None
             self._fold()
             self.recent.clear()
+            self._trend_s = -math.inf
         self._place.look(run.runner.at, run.runner.doing is RESTING and not sample.v_word, sample.last_tick)
 
     def _look_at_evidence(self) -> None:
@@ -195,10 +198,11 @@ class Composer:
             text = causes if ours else "of an earlier run"
             self._evidence = evidence_view(newest, core.bench, info.sample_ticks / info.tick_hz, text)
 
-    def _recent_now(self, now_s: float) -> tuple[TrendBucket, ...]:
-        if now_s - self._recent_s >= RECENT_EVERY_S:
-            self._recent_s, self._recent = now_s, brief(self.recent.buckets())
-        return self._recent
+    def _renew_trends(self, now_s: float) -> None:
+        """Take the buckets anew, once a second; until then the very same tuples are handed on."""
+        if now_s - self._trend_s >= TREND_EVERY_S:
+            self._trend_s = now_s
+            self._trend, self._recent = brief(self.trend.buckets()), brief(self.recent.buckets())
 
     def _course_now(self, now_s: float, set_volts: float | None) -> tuple[CoursePoint, ...]:
         """The course to come; made anew once a second and when the run goes on to something else."""

@@ -99,4 +99,5 @@ def _answer_words(message: dict[str, object]) -> str:
         return f"refused: {error.get('message', '')}"
     if isinstance(result, dict) and result.get("text"):
         return str(result["text"])
-    return "taken by the daemon"
+    number = result.get("number") if isinstance(result, dict) else None
+    return f"taken by the daemon as number {number}" if number else "taken by the daemon"

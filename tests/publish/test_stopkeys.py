@@ -33,6 +33,18 @@ def test_a_key_stops_and_tells_the_answer(tmp_path: Path, verb: str) -> None:
         stopper.close()
 
 
+@pytest.mark.parametrize(("result", "words"), [({"number": 12}, "taken by the daemon as number 12"),
+                                               ({}, "taken by the daemon"), (None, "taken by the daemon")])
+def test_an_answer_without_words_is_told_by_its_number(tmp_path: Path, result: object, words: str) -> None:
+    """The stop's number is the one that the record and the MCU name."""
+    with served(tmp_path) as bench:
+        stopper = Stopper(bench.path)
+        bench.answers["cut"] = result
+        stopper.press("cut", 1.0)
+        assert until_told(stopper, "cut sent by this key: ") == f"cut sent by this key: {words}"
+        stopper.close()
+
+
 def test_a_lost_connection_is_made_anew(tmp_path: Path) -> None:
     """A daemon that was started again gets the stop."""
     with served(tmp_path) as bench:
