@@ -1,9 +1,12 @@
 """One connection to a broker: the only file that knows the client library, and renames its errors.
 
-The library hides three things that matter here, so its client is extended at those places and nowhere else: the
-reason in an acknowledgement (a refused publish looks like a success), what the broker offers in its CONNACK, and the
-socket that stays open after a failed attempt.  Received messages go straight to ``on_message``, within the read
-callback: no queue, so no memory, and a stop waits for nothing.
+The library hides things that matter here, so its client is extended at those places and nowhere else: the reason in an
+acknowledgement (a refused publish looks like a success), what the broker offers in its CONNACK, the socket that stays
+open after a failed attempt, and the number of a socket that was closed before the loop came to watch it: that number
+may be another file's by then, such as the port of the bench.
+
+Received messages go straight to ``on_message``, within the read callback: no queue, so no memory, and a stop waits for
+nothing.
 """
 
 import asyncio
@@ -11,9 +14,9 @@ import contextlib
 import logging
 import socket
 import ssl
-from collections.abc import AsyncIterator, Callable
+from collections.abc import AsyncIterator, Callable, Coroutine
 from dataclasses import dataclass
-from typing import Any, NoReturn
+from typing import Any, NoReturn, TypeVar
 
 import aiomqtt
 from paho.mqtt.client import MQTT_CLEAN_START_FIRST_ONLY, MQTTMessage
@@ -37,6 +40,7 @@ _LOG = logging.getLogger("hvhost.mqtt.client")
 _LOG.propagate = False  # what matters is said in our own words
 _LOG.addHandler(logging.NullHandler())
 
+T = TypeVar("T")
 OnMessage = Callable[[str, bytes, bool], None]
 
 
@@ -52,7 +56,7 @@ class Outgoing:
 
 
 class _Client(aiomqtt.Client):
-    """The library's client with its three gaps closed."""
+    """The library's client with its gaps closed."""
 
     on_payload: OnMessage
     offered: Properties | None = None
@@ -86,16 +90,43 @@ class _Client(aiomqtt.Client):
         with contextlib.suppress(UnicodeDecodeError):  # a topic that is no UTF-8 is none of ours
             self.on_payload(message.topic, bytes(message.payload), message.retain)
 
-    def guard_size(self) -> None:
-        """Over 3.1.1 a broker knows no limit of ours: a longer packet ends the connection as soon as it begins."""
-        read = self._client.loop_read
+    def _on_socket_open(self, client: Any, userdata: Any, sock: Any) -> None:
+        """Called in the thread that connects; by the time the loop comes to it the socket may be closed again."""
+        def watch() -> None:
+            if sock.fileno() >= 0:
+                self._loop.add_reader(sock.fileno(), self._read)
+                self._misc_task = self._loop.create_task(self._misc_loop())
+        self._loop.call_soon_threadsafe(watch)
 
-        def bounded(max_packets: int = 1) -> Any:
-            result = read(max_packets)
-            if self._client._in_packet["remaining_length"] > LARGEST_IN:
-                raise OSError(f"a packet above {LARGEST_IN} bytes")
-            return result
-        self._client.loop_read = bounded  # type: ignore[method-assign]
+    def _on_socket_register_write(self, client: Any, userdata: Any, sock: Any) -> None:
+        def watch() -> None:
+            if sock.fileno() >= 0:
+                self._loop.add_writer(sock.fileno(), self._write)
+        self._loop.call_soon_threadsafe(watch)
+
+    def _read(self) -> None:
+        """Read what is there.  Over 3.1.1 a broker knows no limit of ours: a longer packet ends the connection."""
+        try:
+            while True:
+                self._client.loop_read()
+                if self._client._in_packet["remaining_length"] > LARGEST_IN:
+                    raise OSError(f"a packet above {LARGEST_IN} bytes")
+                sock = self._client.socket()
+                if not isinstance(sock, ssl.SSLSocket) or not sock.pending():  # TLS may hold what epoll cannot see
+                    return
+        except Exception as error:
+            self._broken(error)
+
+    def _write(self) -> None:
+        try:
+            self._client.loop_write()
+        except Exception as error:
+            self._broken(error)
+
+    def _broken(self, error: Exception) -> None:
+        if not self._disconnected.done():
+            self._disconnected.set_exception(error)
+        self._client._sock_close()
 
     def drop(self) -> None:
         """Close the socket and forget it, whatever state the attempt is in."""
@@ -126,14 +157,7 @@ class Connection:
         self._client.refused.clear()
         if any(len(m.payload) + len(m.topic) + 64 > self.largest_out for m in messages):
             return f"longer than the {self.largest_out} bytes that the broker takes"
-        sending = [asyncio.ensure_future(self._send(message)) for message in messages]
-        try:
-            await asyncio.gather(*sending)
-        except aiomqtt.MqttError as error:
-            raise self._fault(error) from None
-        finally:
-            for one in sending:
-                one.cancel()
+        await self._done(*(self._send(message) for message in messages))
         return "; ".join(sorted({str(reason).lower() for reason in self._client.refused}))
 
     async def _send(self, message: Outgoing) -> None:
@@ -158,12 +182,27 @@ class Connection:
         if self._v5:
             options = SubscribeOptions(qos=1, noLocal=False, retainAsPublished=commands,
                                        retainHandling=2 if commands else 0)
-        try:
-            granted = await self._client.subscribe(topic, qos=0 if options else 1, options=options, timeout=ANSWER_S)
-        except aiomqtt.MqttError as error:
-            raise self._fault(error) from None
+        (granted,) = await self._done(
+            self._client.subscribe(topic, qos=0 if options else 1, options=options, timeout=ANSWER_S))
         code = granted[0].value if isinstance(granted[0], ReasonCode) else granted[0]
         return "" if code < FAILED else str(granted[0]).lower()
+
+    async def _done(self, *acts: Coroutine[Any, Any, T]) -> list[T]:
+        """Begin in order, wait for all, give their results; raises `BrokerFault`.
+
+        Each act is a task of its own: under Python 3.11 the library's waits may swallow a cancellation that comes
+        with the answer, and a daemon that ends would wait for ever.
+        """
+        tasks = [asyncio.ensure_future(act) for act in acts]
+        try:
+            await asyncio.wait(tasks, return_when=asyncio.FIRST_EXCEPTION)
+            return [task.result() for task in tasks if task.done()]
+        except aiomqtt.MqttError as error:
+            raise self._fault(error) from None
+        finally:
+            for task in tasks:
+                task.cancel()
+            await asyncio.gather(*tasks, return_exceptions=True)  # their errors were told, or come too late
 
     async def wait_end(self) -> NoReturn:
         """Wait until the connection ends and raise `BrokerFault` with the reason."""
@@ -240,7 +279,6 @@ async def connected(broker: Broker, *, password: str | None, tls: ssl.SSLContext
     where = f"{broker.host}:{broker.port}"
     client = _client(broker, password, tls, will)
     client.refused, client.on_payload = [], on_message
-    client.guard_size()
     try:
         await _enter(client)
         yield Connection(client, where, broker.version)

@@ -387,6 +387,42 @@ def test_nobody_there_is_a_fault() -> None:
     run(scene())
 
 
+def test_a_socket_that_is_closed_already_watches_nobody_elses() -> None:
+    """The number of a closed socket is given to the next file: no reader or writer of ours may land on that one."""
+    async def scene() -> None:
+        client = module._client(BROKER, None, None, WILL)
+        sock = socket.socket()
+        number = sock.fileno()
+        client._on_socket_open(None, None, sock)
+        client._on_socket_register_write(None, None, sock)
+        sock.close()
+        with socket.socket() as stranger:
+            assert stranger.fileno() == number
+            await asyncio.sleep(0)
+            await asyncio.sleep(0)
+            loop = asyncio.get_running_loop()
+            assert not loop.remove_reader(number)
+            assert not loop.remove_writer(number)
+    run(scene())
+
+
+def test_a_cancellation_that_comes_with_the_answer_is_not_lost(broker: Mosquitto) -> None:
+    """Whatever the moment at which the daemon ends, the task that sends ends too."""
+    async def scene() -> None:
+        async with connection(broker.port) as one:
+            for turns in range(40):
+                async def send_for_ever() -> None:
+                    while True:
+                        await one.subscribe("lab/command", commands=True)
+                        await one.publish(message())
+                task = asyncio.create_task(send_for_ever())
+                await asyncio.sleep(0.0005 * turns)
+                task.cancel()
+                with pytest.raises(asyncio.CancelledError):
+                    await task
+    run(scene())
+
+
 def test_cancelled_while_connecting_leaves_no_socket(monkeypatch: pytest.MonkeyPatch) -> None:
     """The daemon may end at any moment; the thread that connects is waited for, and its socket closed."""
     async def scene() -> None:
