@@ -155,6 +155,18 @@ TABLE: dict[str, tuple[Row, ...]] = {
         (104, REFUSE, "bleed.times", "at least 6: from 24 kV to 60 V", "5, which leaves 161.71 V"),
         (116, REFUSE, "limits.collapse", "a voltage such as '25 kV'", "'1 000 V'", "1000 V"),
     ),
+    "mqtt.yaml": (
+        (140, REFUSE, "mqtt.ca", "tls: yes", "tls: no"),
+        (141, REFUSE, "mqtt.certificate", "key beside it", "none"),
+        (141, REFUSE, "mqtt.certificate", "tls: yes", "tls: no"),
+        (142, REFUSE, "mqtt.password", "a known key", "'password'", "password_file"),
+        (143, REFUSE, "mqtt.password_file", "tls: yes, or a broker on this machine", "tls: no"),
+        (143, REFUSE, "mqtt.password_file", "user beside it", "none"),
+        (144, REFUSE, "mqtt.commands", "tls: yes, or a broker on this machine", "tls: no"),
+        (145, REFUSE, "mqtt.root", "a topic level of small letters", "'Lab/1'"),
+        (146, REFUSE, "mqtt.telemetry", "at least 100 ms", "'10 ms'"),
+        (147, REFUSE, "mqtt.version", "5 or 3.1.1", "'4'"),
+    ),
     "merge-key.yaml": (
         (29, REFUSE, "merge", "keys written out", "'<<'"),
     ),

@@ -44,9 +44,12 @@ def state_word(snapshot: Snapshot) -> str:
 
 def state_of(snapshot: Snapshot) -> Payload:
     """The state without stamp and session."""
+    word = state_word(snapshot)
+    known = word != "unknown"
     payload: Payload = {
-        "available": True, "state": state_word(snapshot), "rehearsal": snapshot.rehearsal,
-        "link": str(snapshot.link), "voltage": str(snapshot.voltage), "power": text(snapshot.power_words),
+        "available": True, "state": word, "rehearsal": snapshot.rehearsal, "link": str(snapshot.link),
+        "voltage": str(snapshot.voltage) if known else "unknown",
+        "power": text(snapshot.power_words) if known else "",
         "latched": text("; ".join(snapshot.latched)), "stop": str(snapshot.stop), "control": text(snapshot.seat),
         "verdict": text(snapshot.verdict_text)}
     run = snapshot.run

@@ -5,9 +5,11 @@ Statement numbers are those of MQTT Version 5.0 (OASIS Standard, 7 March 2019); 
 
 import asyncio
 import contextlib
+import re
 import socket
 from collections.abc import AsyncIterator, Callable
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -373,6 +375,14 @@ def test_a_broker_that_does_not_answer_is_given_up(monkeypatch: pytest.MonkeyPat
                     async with connection(port) as one:
                         await one.publish(message())
     run(scene())
+
+
+def test_one_file_knows_the_client_library() -> None:
+    """Nothing else in the program imports it, so nothing else can depend on its errors."""
+    package = Path(module.__file__).parents[2]
+    knowing = {path.name for path in package.rglob("*.py")
+               if re.search(r"^\s*(import|from) (aiomqtt|paho)", path.read_text("utf-8"), re.MULTILINE)}
+    assert knowing == {"connection.py"}
 
 
 def test_nobody_there_is_a_fault() -> None:

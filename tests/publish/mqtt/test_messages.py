@@ -53,6 +53,8 @@ def test_a_bench_without_a_fresh_reading_is_unknown() -> None:
     assert state_word(replace(IDLE, reading=None)) == "unknown"
     assert state_word(replace(IDLE, link=LinkState.LOST)) == "unknown"
     assert state_word(replace(IDLE, link=LinkState.NONE)) == "unknown"
+    told = state_of(replace(IDLE, link=LinkState.LOST))
+    assert (told["state"], told["voltage"], told["power"]) == ("unknown", "unknown", "")
 
 
 def test_a_death_says_unknown_and_bears_its_session() -> None:
