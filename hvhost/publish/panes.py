@@ -137,8 +137,8 @@ def _bar(quantity: tuple[Scale, float | None, float | None, float | None, float,
     return Text(f" {scale.unit:<2} [{''.join(drawn)}] {words}", style="bold" if "OVER" in words else "")
 
 
-def inputs(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
-    """Return the interlocks and other inputs by name: one a row where there are rows, else flowing.
+def inputs(snapshot: Snapshot, width: int, rows: int, *, listed: bool = True) -> list[Text]:
+    """Return the interlocks and other inputs by name: ``listed`` one a row where there are rows, else flowing.
 
     What is not as it should be comes first and says in words that it hinders arming.
     """
@@ -150,7 +150,7 @@ def inputs(snapshot: Snapshot, width: int, rows: int) -> list[Text]:
     before = {InputJudgement.NOT_OK: "hinders arming: " if hinders else "NOT AS IT MUST BE: "}
     lines = [_input(line, judgement) for text, judgement in named
              for line in wrapped(before.get(judgement, "") + text, width, 2, f"{MARKS[judgement]} ")]
-    if len(lines) <= rows:
+    if listed and len(lines) <= rows:
         return lines
     lines = []
     for group in (InputJudgement.NOT_OK, InputJudgement.UNKNOWN, InputJudgement.OK):

@@ -34,8 +34,8 @@ def run_lines(snapshot: Snapshot, view: View, width: int, rows: int) -> list[Tex
         if len(lines) <= spare:
             return [*head, *map(Text, lines)]
     who = cells(printable(BETWEEN.join(_who_brief(run))), width)
-    texts = [*_flowing(_ways(run, snapshot, view)[-1][0], width), who]
-    return [*head, *map(Text, texts[: max(0, spare)])][:rows]
+    fewest = [*_flowing(_ways(run, snapshot, view)[-1][0], width), who]
+    return [*head, *map(Text, fewest[: max(0, spare)])][:rows]
 
 
 def _flowing(parts: Sequence[str], width: int) -> list[str]:
@@ -136,6 +136,8 @@ def _how(hold: HoldView, snapshot: Snapshot, counts: bool, unknown: bool) -> str
 
 def _timing(run: RunView, snapshot: Snapshot, view: View) -> list[str]:
     parts = []
+    if not run.ended and wording.output_unknown(snapshot, view):  # no clock is vouched for
+        return [f"last known after {span(run.elapsed_s)}"]
     if run.next_reading_s is not None and not run.ended:
         parts.append(f"next reading in {left(run.next_reading_s - view.since_s)}")
     if run.arcs or run.arcs_allowed is not None:

@@ -91,7 +91,7 @@ def _rooms(snapshot: Snapshot, view: View, width: int, wide: bool) -> dict[Pane,
     """Return what the panes that grow need at this width."""
     inputs_width = width - _left_width(width) - 1 if wide else width - 2
     run = len(run_lines(snapshot, view, (_left_width(width) if wide else width) - 2, 12))
-    inputs = len(panes.inputs(snapshot, inputs_width, len(snapshot.inputs) + 4 if wide else 5))
+    inputs = len(panes.inputs(snapshot, inputs_width, len(snapshot.inputs) + 4 if wide else 5, listed=wide))
     hindering = sum(one.judgement is not InputJudgement.OK for one in snapshot.inputs)
     health = len(panes.health(snapshot, width, 3))
     digits = len(panes.readbacks(snapshot, view, width, max(DIGIT_ROWS)))
@@ -125,7 +125,7 @@ def _drawn(pane: Pane, snapshot: Snapshot, view: View, width: int, rows: int, wi
         case Pane.RUN:
             return [Text.assemble(" ", line) for line in run_lines(snapshot, view, width - 2, rows)]
         case Pane.INPUTS:
-            return [Text.assemble(" ", line) for line in panes.inputs(snapshot, width - 2, rows)]
+            return [Text.assemble(" ", line) for line in panes.inputs(snapshot, width - 2, rows, listed=False)]
         case Pane.HEALTH:
             return panes.health(snapshot, width, rows)
         case _:

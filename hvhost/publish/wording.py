@@ -181,8 +181,9 @@ def as_last_known(snapshot: Snapshot, view: View) -> Snapshot:
         return snapshot
     inputs = tuple(replace(one, state=f"last {one.state}" if one.state != "unknown" else one.state,
                            judgement=InputJudgement.UNKNOWN) for one in snapshot.inputs)
+    acts = snapshot.next_acts if view.connected else ("use the emergency switching off", "see to the daemon")
     return replace(snapshot, voltage=VoltageState.UNKNOWN, voltage_text="", power_words="", inputs=inputs,
-                   set_volts=None, set_amps=None, course=())
+                   set_volts=None, set_amps=None, course=(), next_acts=acts)
 
 
 def voltage_words(snapshot: Snapshot) -> str:

@@ -15,7 +15,8 @@ from hvhost.publish.keys import Act, KeyParser, KeyReader
 
 @pytest.mark.parametrize(("data", "acts"), [
     (b" ", [Act.CUT]), (b"c", [Act.CUT]), (b"C", [Act.CUT]), (b"l", [Act.LOWER]), (b"L", [Act.LOWER]),
-    (b"q", [Act.LEAVE]), (b"\x03", [Act.INTERRUPT]), (b"xyz\r\n\t0", []), (b"tB", [Act.PLOT, Act.BELL]), (b"lc", [Act.LOWER, Act.CUT]),
+    (b"q", [Act.LEAVE]), (b"\x03", [Act.INTERRUPT]), (b"xyz\r\n\t0", []),
+    (b"tB", [Act.PLOT, Act.BELL]), (b"lc", [Act.LOWER, Act.CUT]),
     (b"\x1b[A", []), (b"\x1bOc", []), (b"\x1b[?62;22c", []), (b"\x1b[3~ ", [Act.CUT]), (b"\x1bl", []),
     (b"\x1b[?62c\x1b[Bc", [Act.CUT]), ("ц ".encode(), [Act.CUT]),
 ])

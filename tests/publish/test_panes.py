@@ -60,6 +60,8 @@ def test_inputs_that_hinder_come_first_by_name() -> None:
     assert few[1] == "?? door unknown"
     assert few[2].startswith("ok emergency contact closed")
     assert len(few) == 4
+    flowing = panes.inputs(IDLE, 78, 12, listed=False)
+    assert len(flowing) == 3
     running = replace(IDLE, inputs=inputs, permission=Permission.RUNNING)
     assert panes.inputs(running, 78, 4)[0].plain == "!! NOT AS IT MUST BE: interlock open"
 

@@ -66,6 +66,14 @@ def test_a_run_shows_step_readings_arcs_and_end() -> None:
         assert part in text
 
 
+def test_no_countdown_runs_on_without_the_daemon() -> None:
+    """S13: neither the next reading nor the end is counted down where nothing is known."""
+    text = "".join(line.plain for line in run_lines(RUNNING, View(connected=False, since_s=2.0), 78, 8))
+    assert "last known after 1:18" in text
+    assert "to go" not in text
+    assert "next reading" not in text
+
+
 def test_what_is_at_most_left_is_told_as_such() -> None:
     """Where the plan's end is not known the longest is told, and an unknown plan only its time."""
     longest = replace(RUN, expected_s=None, hold=None)

@@ -27,7 +27,8 @@ def test_a_key_stops_and_tells_the_answer(tmp_path: Path, verb: str) -> None:
         stopper = Stopper(bench.path)
         stopper.prepare()
         stopper.press(verb, 1.0)
-        assert until_told(stopper, f"{verb} sent by this key: ") == f"{verb} sent by this key: {bench.answers[verb]['text']}"
+        start = f"{verb} sent by this key: "
+        assert until_told(stopper, start) == f"{start}{bench.answers[verb]['text']}"
         assert bench.asked == [(verb, {})]
         assert stopper.note(1.0 + NOTE_S) == ""
         stopper.close()

@@ -167,7 +167,9 @@ def test_the_discharge_says_nothing_twice() -> None:
 def test_nothing_to_come_is_vouched_for_where_the_output_is_unknown() -> None:
     """S13: the course goes with the reading."""
     assert RUNNING.course
-    assert wording.as_last_known(RUNNING, View(connected=False)).course == ()
+    gone = wording.as_last_known(RUNNING, View(connected=False))
+    assert gone.course == ()
+    assert gone.next_acts[0] == "use the emergency switching off"
 
 
 def test_who_has_control_and_who_stopped_them() -> None:
