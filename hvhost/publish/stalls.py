@@ -78,7 +78,8 @@ class StallGauge:
         self.late, self.turns = Spread(), Spread()
         self.own_s = 0.0  # the longest own part of a lateness
         self.turn_s = self.turn_processor_s = 0.0
-        self.run_s = 0.0  # the longest lateness since a run was opened
+        self.run_s = self.run_turn_own_s = 0.0  # the longest lateness, and turn, since a run was opened
+        self._opening = False
         self.pieces: dict[str, Spread] = {}
         self._recent: deque[list[float]] = deque(maxlen=RECENT_SPANS)  # [begin, longest]
         self._used_s = processor()
@@ -142,7 +143,12 @@ class StallGauge:
         seconds = time.perf_counter() - self._turn[0]
         self.turns.add(seconds)
         self.turn_s = max(self.turn_s, seconds)
-        self.turn_processor_s = max(self.turn_processor_s, time.thread_time() - self._turn[1])
+        own_s = time.thread_time() - self._turn[1]
+        self.turn_processor_s = max(self.turn_processor_s, own_s)
+        if self._opening:
+            self._opening = False
+        elif own_s > self.run_turn_own_s:
+            self.run_turn_own_s = own_s
 
     def timed(self, name: str, call: Callable[P, R]) -> Callable[P, R]:
         """The same call, its time counted under this name."""
@@ -161,13 +167,15 @@ class StallGauge:
     # ------------------------------------------------------------ telling
 
     def run_opened(self) -> None:
-        """A run begins: its own worst stall counts from here."""
-        self.run_s = 0.0
+        """A run begins: its own worst stall counts from here; the turn that opens it is not yet the run's."""
+        self.run_s = self.run_turn_own_s = 0.0
+        self._opening = True
 
     def note(self) -> dict[str, Any]:
         """What a run's record keeps, in seconds."""
         view = self.view(float("inf"))
-        return {"run_s": self.run_s, "longest_s": view.longest_s, "p999_s": view.p999_s, "own_s": view.own_s,
+        return {"run_s": self.run_s, "run_turn_own_s": self.run_turn_own_s, "longest_s": view.longest_s,
+                "p999_s": view.p999_s, "own_s": view.own_s,
                 "turn_s": view.turn_s, "turn_own_s": view.turn_own_s, "piece": view.piece,
                 "piece_s": view.piece_s, "beats": self.late.count}
 
@@ -179,7 +187,8 @@ class StallGauge:
         view = LoopView(longest_s=round(self.late.longest_s, 5), recent_s=round(self.recent_s, 5),
                         p999_s=round(self.late.quantile(0.999), 5), own_s=round(self.own_s, 5),
                         run_s=round(self.run_s, 5), turn_s=round(self.turn_s, 5),
-                        turn_own_s=round(self.turn_processor_s, 5), piece=piece, piece_s=round(spread.longest_s, 5),
+                        turn_own_s=round(self.turn_processor_s, 5), run_turn_own_s=round(self.run_turn_own_s, 5),
+                        piece=piece, piece_s=round(spread.longest_s, 5),
                         read_s=round(self.pieces[READ].quantile(0.5), 7) if READ in self.pieces else 0.0)
         self._view = (now_s, view)
         return view

@@ -11,10 +11,12 @@ from pathlib import Path
 from typing import Self
 
 from hvhost.speed.board import Board
+from hvhost.speed.child import set_fifo
 from hvhost.standin.bench import config_of
 from hvhost.standin.params import demo
 
 SAMPLE_TICKS = 1  # of 10 k ticks a second
+BOARD_FIFO = 30  # hardware waits for no processor; where this is not permitted the machine's stalls are the board's
 
 
 class LoadBoard:
@@ -41,6 +43,7 @@ class LoadBoard:
 
 def main(bench: str) -> None:
     """Run until standard input ends."""
+    set_fifo(BOARD_FIFO)
     with Board(Path(bench), replace(config_of(demo()), sample_ticks=SAMPLE_TICKS)) as board:
         print("port", board.device, flush=True)
         for _ in sys.stdin:

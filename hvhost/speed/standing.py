@@ -114,7 +114,7 @@ def measure_memory(setting: Setting) -> list[Line]:
 
 def energise(bench: Client, board: Pressed) -> None:
     """Take control, clear the boot's latch, open a long run, arm, press; returns when the output is on."""
-    ticket = bench.call("seat.take", {"as": WHO})["ticket"]
+    ticket = bench.call("seat.take", {"as": WHO, "reason": WHO})["ticket"]
     until_shot(bench, lambda shot: bool(shot.get("reading")), "a reading")
     until_shot(bench, lambda shot: _cleared(bench, ticket, shot), "a cleared latch")
     opened = bench.call("run", {**request(3.0), "ticket": ticket, "as": WHO})
