@@ -56,14 +56,11 @@ def serve(daemon: "object") -> int:
         with asyncio.Runner(loop_factory=lambda: asyncio.SelectorEventLoop(daemon.gauge.selector())) as runner:
             runner.run(daemon.run())
     except BaseExceptionGroup as group:
-        known = group.subgroup(HvhostError)
-        if known is None:
-            raise
-        raise first_of(known) from None
+        raise first_of(group.subgroup(HvhostError) or group) from None
     return exits.PASSED
 
 
-def first_of(group: BaseExceptionGroup[HvhostError]) -> HvhostError:
+def first_of(group: BaseExceptionGroup[BaseException]) -> BaseException:
     """The first error inside a group of groups."""
     for error in group.exceptions:
         return first_of(error) if isinstance(error, BaseExceptionGroup) else error
