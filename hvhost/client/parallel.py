@@ -67,6 +67,8 @@ class Line:
                             return result_of(message)
             except TimeoutError:
                 raise CannotConnect("an answer in time", "none", self.path, _GONE) from None
+            except OSError as error:
+                raise CannotConnect("a connected daemon", error.strerror or str(error), self.path, _GONE) from None
 
     async def message(self) -> dict[str, Any]:
         """The next line; raises `CannotConnect` where the daemon is gone or talks something else."""
