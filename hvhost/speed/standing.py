@@ -22,7 +22,7 @@ from hvhost.speed.scene import WHO, request
 from hvhost.speed.setting import Setting
 from hvhost.words.errors import CannotConnect, CommandRefused
 
-START_S, STEP_S, CUT_S = 30.0, 0.005, 5.0
+START_S, STEP_S, CUT_S = 30.0, 0.025, 5.0  # a client may ask 50 times a second
 CUTS, RESTARTS = 20, 5
 QUICK_CUTS, QUICK_RESTARTS = 3, 2
 MEGABYTE = 1e6
