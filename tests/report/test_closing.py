@@ -10,6 +10,7 @@ from hvhost.record.entries import Outcome
 from hvhost.record.folder import RunFolder
 from hvhost.record.manifest import append_revision, check_folder
 from hvhost.record.recorder import Recorder
+from hvhost.report import closing
 from hvhost.report.closing import close_run, main, page_of, recover_and_close
 from hvhost.words.errors import RecordFault
 from tests.record.making import OPENED_NS, TAG, Case, made_meta, made_run
@@ -82,3 +83,27 @@ def test_the_command_prints_the_verdict_or_a_sentence(tmp_path: Path, capsys: py
     assert main([str(folder.path)]) == 7
     assert main([]) == 2
     assert "not closed yet" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("step", ["page", "export_in_child", "repack", "write_manifest"])
+def test_a_crash_while_closing_leaves_an_open_run_that_recovery_closes_whole(
+        tmp_path: Path, monkeypatch: pytest.MonkeyPatch, step: str) -> None:
+    """Nothing is due before the manifest stands; afterwards the result is whole and due to be handed over."""
+    bench = {"file": "b.yaml", "text": "", "own_f": 500e-12, "own_s": 0.0, "bandwidth_hz": 160.0, "archive": True}
+    folder = made_run(tmp_path, Case(hold_s=0.2, meta={"bench": bench}))
+
+    class Died(BaseException):
+        pass
+
+    def die(*_: object, **__: object) -> None:
+        raise Died
+
+    with monkeypatch.context() as patch:
+        patch.setattr(closing, step, die)
+        with pytest.raises(Died):
+            close_run(folder)
+    assert list_runs(tmp_path)[0].delivery == ""
+    assert recover_and_close(folder, utc_ns=7) is not None
+    assert check_folder(folder).sound
+    assert json.loads((folder.path / "result.json").read_text())["outcome"] == "finished"
+    assert list_runs(tmp_path)[0].delivery == "due"
