@@ -378,10 +378,10 @@ def test_a_broker_that_does_not_answer_is_given_up(monkeypatch: pytest.MonkeyPat
 
 
 def test_one_file_knows_the_client_library() -> None:
-    """Nothing else in the program imports it, so nothing else can depend on its errors."""
+    """Nothing else that runs a bench imports it (what measures sets a bare client beside it)."""
     package = Path(module.__file__).parents[2]
-    knowing = {path.name for path in package.rglob("*.py")
-               if re.search(r"^\s*(import|from) (aiomqtt|paho)", path.read_text("utf-8"), re.MULTILINE)}
+    knowing = {path.name for path in package.rglob("*.py") if path.parent.name != "speed"
+               and re.search(r"^\s*(import|from) (aiomqtt|paho)", path.read_text("utf-8"), re.MULTILINE)}
     assert knowing == {"connection.py"}
 
 
