@@ -36,7 +36,7 @@ from hvhost.publish.snapshot import OutletView, Severity, Snapshot
 from hvhost.words.errors import CannotConnect, HvhostError
 
 READ_AT_ONCE = 64  # events fetched from disk with one call of its thread
-BETWEEN_WINDOWS_S = 0.004  # while a backlog is delivered the loop has room for everything else
+BETWEEN_WINDOWS_S = 0.002  # while a backlog is delivered the loop has room for everything else
 REFUSED_S = (5.0, 60.0)  # events refused by the broker are tried again: first and longest pause
 REASSERT_S = 1.0
 ANSWERS_KEPT = 20

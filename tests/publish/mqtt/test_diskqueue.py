@@ -109,7 +109,7 @@ def test_a_queue_cut_at_every_byte_gives_every_whole_event(tmp_path: Path) -> No
     (path,) = (tmp_path / "whole").glob("events-*.log")
     data = path.read_bytes()
     ends = [n + 1 for n, byte in enumerate(data) if byte == 10]
-    for at in range(ends[8], len(data) + 1):
+    for at in range(ends[10], len(data) + 1):
         shutil.copytree(tmp_path / "whole", tmp_path / "cut", dirs_exist_ok=True)
         (tmp_path / "cut" / path.name).write_bytes(data[:at])
         again = opened(tmp_path / "cut")

@@ -3,6 +3,7 @@
 import asyncio
 import json
 import signal
+import subprocess
 import time
 from pathlib import Path
 from typing import Any
@@ -16,7 +17,7 @@ from hvhost.publish.mqtt import outlet as module
 from hvhost.publish.mqtt.topics import TOPICS
 from hvhost.publish.snapshot import LinkState, Permission, Phase
 from tests.publish.mqtt.fakebroker import ACCEPT, far_end
-from tests.publish.mqtt.mosquitto import Mosquitto
+from tests.publish.mqtt.mosquitto import Mosquitto, need_broker
 from tests.publish.mqtt.scene import BASE, Scene
 from tests.publish.mqtt.wireclient import CONTENT_TYPE, DISCONNECT, EXPIRY, Got, WireClient, packet
 
@@ -184,6 +185,7 @@ def test_the_state_follows_and_is_renewed(broker: Mosquitto, tmp_path: Path, mon
 
 def test_events_wait_for_a_broker_and_for_the_next_daemon(tmp_path: Path) -> None:
     """Offered with no broker and two daemons later: all come, in order, with ids that repeats can be dropped by."""
+    need_broker()
     broker = Mosquitto(tmp_path / "broker")
 
     async def scene() -> None:
@@ -210,29 +212,27 @@ def test_events_wait_for_a_broker_and_for_the_next_daemon(tmp_path: Path) -> Non
 
 
 def test_a_backlog_is_delivered_while_state_and_telemetry_go_on(broker: Mosquitto, tmp_path: Path) -> None:
-    """Two thousand events wait: telemetry is not held up behind them, and the loop is never held for long."""
+    """Eight hundred events wait: telemetry is not held up behind them, and the loop is never held for long."""
     async def scene() -> None:
         one = Scene(tmp_path, port=broker.port)
-        for n in range(1, 2001):
+        for n in range(1, 801):
             one.outlet.waiting.add(n, module.Severity.NOTE, f"event {n}")
         client = await watching(broker.port)
         async with one.serving():
-            while one.outlet.waiting.queue.waiting or one.outlet.waiting.queue.last < 2000:
+            while one.outlet.waiting.queue.waiting or one.outlet.waiting.queue.last < 800:
                 one.offer(after_s=0.1)
                 await asyncio.sleep(0.02)
-            await one.until(lambda: sum(m.topic == BASE + "event" for m in client.got) == 2000)
+            await one.until(lambda: sum(m.topic == BASE + "event" for m in client.got) == 800)
         kinds = [m.topic.removeprefix(BASE) for m in client.got]
         first, last = kinds.index("event"), len(kinds) - kinds[::-1].index("event")
         assert kinds[first:last].count("telemetry") >= 2
-        assert [m.data["seq"] for m in client.got if m.topic == BASE + "event"] == list(range(1, 2001))
+        assert [m.data["seq"] for m in client.got if m.topic == BASE + "event"] == list(range(1, 801))
         await client.close()
     run(scene())
 
 
 def test_events_that_the_broker_refuses_are_kept(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """An access list that forbids the topic: told once, nothing is dropped, everything comes once it is mended."""
-    from tests.publish.mqtt.mosquitto import need_broker
-
     need_broker()
     monkeypatch.setattr(module, "REFUSED_S", (0.05, 0.1))
     acl = tmp_path / "acl"
@@ -252,6 +252,44 @@ def test_events_that_the_broker_refuses_are_kept(tmp_path: Path, monkeypatch: py
                 assert (await client.next()).data["text"] == word
         await client.close()
         assert one.outlet.view().failed > 0
+    try:
+        run(scene())
+    finally:
+        broker.kill()
+
+
+def test_the_example_access_list_lets_each_do_its_part(tmp_path: Path) -> None:
+    """With the shipped list everything is published, the desk may stop, and the viewer's stop goes nowhere."""
+    need_broker()
+    for user in ("bench", "desk", "viewer"):
+        new = [] if (tmp_path / "passwords").exists() else ["-c"]
+        subprocess.run(["mosquitto_passwd", "-b", *new, str(tmp_path / "passwords"), user, f"{user}-word"], check=True)
+    (tmp_path / "word").write_text("bench-word\n")
+    (tmp_path / "word").chmod(0o600)
+    acl = Path(__file__).parents[3] / "configs" / "broker.acl"
+    broker = Mosquitto(tmp_path / "broker", f"allow_anonymous false\npassword_file {tmp_path / 'passwords'}\n"
+                       f"acl_file {acl}\n").start()
+
+    async def scene() -> None:
+        one = Scene(tmp_path, port=broker.port, root="hvhost", station="demo", user="bench",
+                    password_file=str(tmp_path / "word"))
+        desk = await watching(broker.port, user="desk", password="desk-word")
+        viewer = await watching(broker.port, user="viewer", password="viewer-word")
+        async with one.serving():
+            one.offer("event")
+            await one.until(lambda: any("connected to" in words for words in one.host.said))
+            session = str([m.data for m in desk.got if m.topic.endswith("/state")][-1]["session"])
+            good = order(session)
+            assert await viewer.publish("hvhost/v1/demo/command/cut", good | {"from": "viewer"}) == 0x87
+            assert await desk.publish("hvhost/v1/demo/command/cut", good) == 0
+            assert (await viewer.next("answer")).data["accepted"]
+            one.offer(after_s=0.2)
+            await viewer.next("telemetry")
+            await one.until(lambda: not one.outlet.waiting.queue.waiting)
+        assert one.host.asked == [("cut", "mqtt:desk")]
+        assert not [words for words in one.host.said if "refuse" in words or "cannot" in words]
+        await desk.close()
+        await viewer.close()
     try:
         run(scene())
     finally:
