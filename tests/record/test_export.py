@@ -28,7 +28,7 @@ def test_a_child_that_fails_is_a_sentence(tmp_path: Path) -> None:
 def test_a_child_that_hangs_is_given_up(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """After its time the child is ended and the run is closed without the file."""
     monkeypatch.setattr(export_module, "export_command",
-                        lambda folder: (sys.executable, "-c", "import threading; threading.Event().wait()"))
+                        lambda folder, path: (sys.executable, "-c", "import threading; threading.Event().wait()"))
     assert "did not run" in export_in_child(RunFolder(tmp_path), timeout_s=0.3).fault
 
 

@@ -60,7 +60,7 @@ def test_only_what_changed_is_read_again(tmp_path: Path, monkeypatch: pytest.Mon
     revisions.mkdir()
     later(paths[2])
     runs.runs()
-    (revisions / "0001.json").write_text(json.dumps({"data": {"result": {"verdict": "fail"}}}))
+    (revisions / "0001-result.json").write_text(json.dumps({"kind": "result", "data": {"result": {"verdict": "fail"}}}))
     later(revisions)
     assert [run.verdict for run in runs.runs()] == ["", "pass", "fail"]
     read.clear()
