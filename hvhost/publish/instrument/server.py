@@ -29,9 +29,11 @@ CHUNK = 2_048  # bytes read at once: what one look for stops costs
 BACKLOG = 32
 AT_ONCE = 4  # sessions whose turn comes in one go
 SHARE = 4.0  # after so much work, so many times as long for everything else
-PROBES = (("SO_KEEPALIVE", socket.SOL_SOCKET, 1), ("TCP_KEEPIDLE", socket.IPPROTO_TCP, 5),
-          ("TCP_KEEPINTVL", socket.IPPROTO_TCP, 2), ("TCP_KEEPCNT", socket.IPPROTO_TCP, 3),
-          ("TCP_USER_TIMEOUT", socket.IPPROTO_TCP, 11_000), ("TCP_NODELAY", socket.IPPROTO_TCP, 1))
+# probes that find a machine that is gone, no delay, and kernel buffers that bound what is unread
+OPTIONS = (("SO_KEEPALIVE", socket.SOL_SOCKET, 1), ("TCP_KEEPIDLE", socket.IPPROTO_TCP, 5),
+           ("TCP_KEEPINTVL", socket.IPPROTO_TCP, 2), ("TCP_KEEPCNT", socket.IPPROTO_TCP, 3),
+           ("TCP_USER_TIMEOUT", socket.IPPROTO_TCP, 11_000), ("TCP_NODELAY", socket.IPPROTO_TCP, 1),
+           ("SO_SNDBUF", socket.SOL_SOCKET, 32_768), ("SO_RCVBUF", socket.SOL_SOCKET, 32_768))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -190,7 +192,7 @@ class _Connection(asyncio.BufferedProtocol):
             return
         self.session, self._transport = session, transport
         transport.set_write_buffer_limits(high=self._server.limits.unread)
-        for name, level, value in PROBES:
+        for name, level, value in OPTIONS:
             option = getattr(socket, name, None)
             with contextlib.suppress(OSError):  # a system without this option has its own, longer, times
                 if option is not None:

@@ -31,6 +31,7 @@ _WHITE = bytes(range(33))
 UNITS_A_TURN = 8
 ALL_UNITS = syntax.UNITS_MAX + 1
 TOLD_EVERY_S = 1.0
+SHORTEST_S = 0.001  # a shorter wait is not worth a timer
 
 
 class Stop(IntFlag):
@@ -222,7 +223,7 @@ class Session:
         if not self.ready:
             return 0.0
         if self._tokens < 1.0:
-            return (1.0 - self._tokens) / self.limits.rate_hz
+            return max(SHORTEST_S, (1.0 - self._tokens) / self.limits.rate_hz)
         if self._active is None:
             self._active = self._queue.popleft()
             self._queued_bytes -= len(self._active.line)
@@ -301,8 +302,8 @@ class Session:
         try:
             command = self._command(unit)
             check_count(command, unit.params, query=unit.query)
-            if active.at <= active.overtaken and command.overtakable and not unit.query and not stops(command, unit):
-                raise ScpiError(Err.EXECUTION, "not carried out: overtaken by a stop")
+            if command.overtakable and not unit.query and not stops(command, unit):
+                self.need_not_overtaken()
             act = command.query if unit.query else command.act
             assert act is not None
             outcome = act(self, unit.params)
@@ -322,6 +323,11 @@ class Session:
             if stop_of(unit, self.tree) is not None:
                 return self.tree.find(unit.written, query=unit.query)
             raise
+
+    def need_not_overtaken(self) -> None:
+        """Raise -200 where a stop came after the command that is being carried out, and was done before it."""
+        if self._active is not None and self._active.at <= self._active.overtaken:
+            raise ScpiError(Err.EXECUTION, "not carried out: overtaken by a stop")
 
     def attempt(self, act: Callable[[], object]) -> None:
         """Do something whose error belongs into the queue."""

@@ -79,11 +79,21 @@ def _numeric(pattern: str, name: str, units: Units, span: Range, does: str) -> C
 # ---------------------------------------------------------------- OUTPut
 
 
-def _output(session: Session, params: Params) -> None:
+def _output(session: Session, params: Params) -> Waiting | None:
     if boolean_of(params[0]):
-        session.device.switch_on(session.caller, session.now_s)
-    elif not session.stopped_already(Stop.LOWER):
+        return _switch_on(session)
+    if not session.stopped_already(Stop.LOWER):
         session.stop(Stop.LOWER)
+    return None
+
+
+def _switch_on(session: Session) -> Waiting:
+    """Judged by a picture younger than the command: a run that was energised a moment ago is no conflict."""
+    session.device.need_seat(session.caller)
+    yield from session.until_seen(session.now_s)
+    session.need_not_overtaken()
+    session.device.switch_on(session.caller, session.now_s)
+    return None
 
 
 def _off(params: Params) -> bool:
