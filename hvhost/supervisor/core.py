@@ -6,7 +6,8 @@ everything after the yield - journal, runner, discharge, screens' figures - foll
 a file or reads a clock; the same core runs on a serial port, under a virtual clock, and on a recording.
 
 What belongs together lives beside this: `hearing` (events and answers), `linking` (greeting and losing an MCU),
-`arming` and `driving` (a run), `stopping` (decided stops), `commands` (what people ask).
+`arming` and `driving` (a run), `moving` and `settling` (the two tables), `stopping` (decided stops), `commands` (what
+people ask).
 """
 
 from collections import deque
@@ -19,7 +20,7 @@ from hvhost.guard.guard import Guard
 from hvhost.guard.verdicts import Severity, Verdict
 from hvhost.samples.assembler import Assembler
 from hvhost.samples.blocks import SampleBlock
-from hvhost.supervisor import arming, commands, driving, hearing, linking, stopping
+from hvhost.supervisor import arming, commands, driving, hearing, linking, moving, settling, stopping
 from hvhost.supervisor.aftermath import AftermathReader
 from hvhost.supervisor.catchup import EventBook
 from hvhost.supervisor.discharge import Chain, Discharge
@@ -29,18 +30,11 @@ from hvhost.supervisor.runs import ActiveRun, Outcome, Stage, rule_word
 from hvhost.supervisor.seat import Seat
 from hvhost.supervisor.states import (
     LIVE,
-    MOVE_OF,
-    SEAT_EMPTY_MAX_S,
     STANDING,
-    Consequence,
-    Facts,
     LinkState,
     Move,
     Permission,
     State,
-    Voltage,
-    moved,
-    owed,
 )
 from hvhost.supervisor.telling import Teller
 from hvhost.wire.events import BlockIn, LinkEvent
@@ -105,7 +99,7 @@ class Core(Teller):
         self._i_gain = abs(bench.current.monitor.gain)
         self._v_zero = self._i_zero = 0.0
         self._tells_ground = bool(bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH))
-        self._settled: tuple[object, ...] = ()  # what the second table looked at when it last asked for nothing
+        self.settled: tuple[object, ...] = ()  # what the second table looked at when it last asked for nothing
         self.discharge = Discharge(Chain(
             touch_v=bench.touch_v, bleed_s=bench.bleed_s, bleeds=bench.bleeds,
             slew_v_per_s=max(bench.slew_v_per_s, bench.down_slew_v_per_s), u_zero_v=bench.voltage.monitor.u(0.0),
@@ -342,78 +336,15 @@ class Core(Teller):
 
     def mcu_in(self, mcu: McuState, tick: int, now_s: float) -> None:
         """The MCU reports this state, by an event or by a block at least as new as the last event."""
-        if self.late:
-            return
-        run = self.run
-        if (mcu in (McuState.REQUESTED, McuState.PROVING) and self.state.permission is Permission.IDLE
-                and run is not None and run.stage is Stage.ARMED and run.requested_s is None and not run.ended):
-            arming.accepted(self, run, now_s)  # its event and its answer were lost
-        before = self.state.permission
-        after = moved(before, MOVE_OF[mcu])
-        if after is None:
-            if self.link is not None and not self.link_stopping:
-                self.say(now_s, "trip", f"the MCU reports {mcu.name.lower()} while {before} is permitted: cut")
-                stopping.cut_for(self, HostRule.DISAGREEMENT, now_s)
-            after = Permission.IDLE if mcu is McuState.OFF else before
-        if after is not before:
-            self.permit(after, now_s)
-            if after is Permission.IDLE:
-                arming.off(self, tick, now_s)
+        moving.mcu_in(self, mcu, tick, now_s)
 
     def move(self, move: Move, now_s: float) -> None:
         """A move of our own (arm accepted, hold begun, ...)."""
-        after = moved(self.state.permission, move)
-        if after is not None and after is not self.state.permission:
-            self.permit(after, now_s)
-
-    def permit(self, permission: Permission, now_s: float) -> None:
-        """Enter a permission and write it down."""
-        self.state = replace(self.state, permission=permission)
-        self.note(now_s, "state", permission=str(permission), link=str(self.state.link), latched=self.state.latched)
+        moving.move(self, move, now_s)
 
     def settle(self, now_s: float) -> None:
         """Run the second table to a fixed point."""
-        if self._looked_at(now_s) == self._settled:
-            return  # it held then, and holds now
-        for _ in range(len(Consequence)):
-            run = self.run
-            facts = Facts(
-                run_open=run is not None and run.open, direct=run is not None and run.spec.kind == "direct",
-                seat_empty_s=self.seat.empty_s(now_s), recorder_ready=self.recorder_ready,
-                block_age_s=now_s - max(self.block_s, self.awake_s), lease_s=self.bench.lease_s,
-                stopping=self.link_stopping)
-            asked = owed(self.state, facts)
-            if not asked:
-                self._settled = self._looked_at(now_s)
-                return
-            for consequence in asked:
-                self._obey(consequence, now_s)
-
-    def _looked_at(self, now_s: float) -> tuple[object, ...]:
-        """All that the rows of the second table look at, each number as what its row compares it with."""
-        run, empty_s = self.run, self.seat.empty_since_s
-        return (self.state, run is not None and run.open, run is not None and run.spec.kind == "direct",
-                empty_s is not None and now_s - empty_s >= SEAT_EMPTY_MAX_S, self.recorder_ready,
-                now_s - max(self.block_s, self.awake_s) > self.bench.lease_s, self.link_stopping)
-
-    def _obey(self, consequence: Consequence, now_s: float) -> None:
-        match consequence:
-            case Consequence.CUT_DISAGREEMENT:
-                stopping.cut_for(self, HostRule.DISAGREEMENT, now_s)
-            case Consequence.CUT_STALE:
-                stopping.cut_for(self, HostRule.STALE, now_s)
-            case Consequence.LOWER_RECORDER:
-                stopping.lower_for(self, Outcome.RECORD_FAILED, "the recorder failed: the run is lowered", now_s)
-            case Consequence.LOWER_SEAT:
-                stopping.lower_for(self, Outcome.LOWERED, "nobody has had control for 10 s", now_s)
-            case Consequence.END_INTERRUPTED:
-                if self.run is not None:
-                    self.run.end(Outcome.INTERRUPTED, self.link_text)
-            case Consequence.PERMISSION_IDLE:
-                self.permit(Permission.IDLE, now_s)
-            case Consequence.VOLTAGE_UNKNOWN:
-                self.discharge.unknown("no readback")
-                self.state = replace(self.state, voltage=Voltage.UNKNOWN)
+        settling.settle(self, now_s)
 
     # ------------------------------------------------------------ figures
 
