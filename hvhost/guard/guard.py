@@ -10,6 +10,7 @@ from typing import Any
 from hvhost.guard.amplitude import Run
 from hvhost.guard.collapse import Fallen, ended, follow_fall, history_needed
 from hvhost.guard.limits import GuardLimits
+from hvhost.guard.quiet import ASKED, ASKED_ALWAYS, at_rest, band_of, quiet
 from hvhost.guard.rules import EVERY, LIVE, RULES, SLOT, WORDS_OUT
 from hvhost.guard.stream import POWERED
 from hvhost.guard.verdicts import Severity, Verdict
@@ -44,8 +45,8 @@ class GuardState:
 class Guard:
     """Judges sample blocks; ``judge`` is called for every block, in any state, before anything else sees it."""
 
-    __slots__ = ("_arrival_s", "_before", "_fallen", "_last_index", "_last_tick", "_memories", "_needed", "_silent",
-                 "_state", "_turns", "limits")
+    __slots__ = ("_arrival_s", "_band", "_before", "_fallen", "_last_index", "_last_tick", "_memories", "_needed",
+                 "_resting", "_silent", "_state", "_turns", "limits")
 
     def __init__(self, limits: GuardLimits) -> None:
         self._memories: list[Any] = [rule.fresh for rule in RULES]
@@ -61,6 +62,8 @@ class Guard:
     def with_limits(self, limits: GuardLimits) -> None:
         """Judge by these limits from the next block on; what was counted so far stays counted."""
         self.limits = limits
+        self._band = band_of(limits)
+        self._resting = False  # until every rule has judged a block by these limits
         self._needed = history_needed(limits)
 
     def heard(self, kind: str, tick: int) -> None:
@@ -133,15 +136,19 @@ class Guard:
         found: tuple[Verdict, ...] = ()
         if state in _FALLS or state not in LIVE:
             self._fallen, view.collapse = follow_fall(view, limits, self._fallen)
-        for at, rule in LIVE.get(state, EVERY):
+        spared = self._resting and quiet(view, self._band)
+        for at, rule in ASKED.get(state, ASKED_ALWAYS) if spared else LIVE.get(state, EVERY):
             memories[at], verdict = rule(view, limits, memories[at])
             if verdict is not None:
                 found += (verdict,)
+        if not spared:
+            self._resting = at_rest(memories)
         self._remember(view)
         return found
 
     def _enter(self, state: int, index: int) -> None:
         """Start afresh the memories of rules that are not live in the new state."""
+        self._resting = False
         live = {at for at, _ in LIVE.get(state, EVERY)}
         for at, rule in enumerate(RULES):
             if at not in live and not rule.lasting:
