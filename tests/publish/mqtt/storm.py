@@ -187,8 +187,11 @@ class Storm:
             self.broker.signal(signal.SIGSTOP)
             await asyncio.sleep(last_s if self.random.random() < 0.7 else 2.5)
             self.broker.signal(signal.SIGCONT)
-        elif kind == "cut off":
+        elif kind == "cut off":  # what is under way either way is lost with the line
+            self.relay.flowing.clear()
+            await asyncio.sleep(last_s / 2)
             self.relay.cut()
+            self.relay.flowing.set()
         elif kind == "black hole":
             self.relay.flowing.clear()
             await asyncio.sleep(last_s if self.random.random() < 0.7 else 2.5)
