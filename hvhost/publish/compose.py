@@ -57,6 +57,7 @@ PERMISSIONS = {st.Permission.IDLE: (Permission.IDLE, Phase.NONE),
 COURSE_EVERY_S = 1.0  # the course is made anew so often, and at once when the run goes on to something else
 TREND_EVERY_S = 1.0  # so are the buckets of the run and of the last minute: hundreds of numbers
 RESTING = Doing.RESTING
+FOLD_S = 0.1  # blocks of so long a time go into the trends together: well below a bucket
 WAITING_MAX = 64  # blocks that wait for a picture before they are folded without one
 
 
@@ -99,17 +100,33 @@ class Composer:
 
     def _fold(self) -> None:
         """Take the blocks that wait into trend and span: with each picture, not with each read."""
-        core = self.core
+        core, until_s = self.core, -math.inf
+        v_low = v_high = i_low = i_high = 0
+        before_s = 0.0
         for t_s, sample in self._waiting:
-            v_low, v_high, i_low, i_high = sample.extremes
-            v_min, v_max, i_min, i_max = core.volts(v_low), core.volts(v_high), core.amps(i_low), core.amps(i_high)
-            self.trend.add(t_s, v_min, v_max, i_min, i_max)
-            self.recent.add(t_s, v_min, v_max, i_min, i_max)
-            pairs = len(sample.v)
-            self._span.add(sample.index, pairs, gap=sample.gap, flagged=bool(sample.flags),
-                           volts=(v_min, core.volts(sum(sample.v) / pairs), v_max),
-                           amps=(i_min, core.amps(sum(sample.i) / pairs), i_max))
+            low, high, least, most = sample.extremes
+            if t_s > until_s:
+                if until_s > -math.inf:
+                    self._draw(before_s, v_low, v_high, i_low, i_high)
+                until_s = t_s + FOLD_S
+                v_low, v_high, i_low, i_high = low, high, least, most
+            else:
+                v_low, v_high = min(v_low, low), max(v_high, high)
+                i_low, i_high = min(i_low, least), max(i_high, most)
+            before_s, pairs = t_s, len(sample.v)
+            self._span.add(sample.index, pairs, gap=sample.gap, flagged=int(sample.flags) != 0,
+                           volts=(core.volts(low), core.volts(sum(sample.v) / pairs), core.volts(high)),
+                           amps=(core.amps(least), core.amps(sum(sample.i) / pairs), core.amps(most)))
+        if until_s > -math.inf:
+            self._draw(before_s, v_low, v_high, i_low, i_high)
         self._waiting.clear()
+
+    def _draw(self, t_s: float, v_low: int, v_high: int, i_low: int, i_high: int) -> None:
+        """Add extreme codes over at most ``FOLD_S`` to both trends."""
+        core = self.core
+        extremes = (t_s, core.volts(v_low), core.volts(v_high), core.amps(i_low), core.amps(i_high))
+        self.trend.add(*extremes)
+        self.recent.add(*extremes)
 
     def clear_trend(self) -> None:
         """A run is opened: its trend begins with it."""

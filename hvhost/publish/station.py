@@ -28,6 +28,7 @@ from hvhost.words.clocks import Clock
 
 ANCHOR_S = 1.0  # the wall clock is compared with the tick clock this often while a run is open
 CLOSED = Stage.CLOSED
+LF = 0x0A
 LINES = re.compile(rb"\n?[^\n]+\n?")
 
 
@@ -57,6 +58,9 @@ class RunJournal:
 
     def sent(self, now_s: float, data: bytes) -> None:
         """Bytes handed to the port, a line at a time."""
+        if data[0] != LF and data.find(b"\n") == len(data) - 1:  # one line, as nearly always
+            self.recording.put(SentEntry(now_s, data))
+            return
         for line in LINES.findall(data):
             self.recording.put(SentEntry(now_s, line))
 

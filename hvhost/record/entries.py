@@ -11,6 +11,7 @@ from typing import Any
 
 from hvhost.supervisor.runs import Outcome as Outcome  # how a run ended is the supervisor's word
 from hvhost.wire.frames import Block
+from hvhost.words.values import swift
 
 Json = Mapping[str, Any]
 
@@ -54,7 +55,7 @@ class LineEntry:
     body: bytes
 
 
-@dataclass(frozen=True, slots=True)
+@swift
 class SentEntry:
     """A whole line sent to the MCU, its trailer and LF included."""
 

@@ -102,6 +102,8 @@ class Discharge:
         if self._last_s is None or grounded:
             self._top = self._floor = volts
             self.lost = False
+        elif volts >= self._floor and not self.lost:  # nothing fell
+            self._top, self._floor = max(self._top, volts), volts
         else:
             span_s = max(t_s - self._last_s, 0.0)
             # v(t) = v0 exp(-t / tau) with tau the bleed time over FASTEST, and what the words took while they were out
