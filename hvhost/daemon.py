@@ -38,11 +38,10 @@ from hvhost.publish.station import CloseJob, Station, end_recording
 from hvhost.record.catalogue import unclosed
 from hvhost.record.folder import RunFolder
 from hvhost.record.recorder import Recorder
-from hvhost.report.closing import recover_and_close
 from hvhost.supervisor import arming
 from hvhost.supervisor.runs import Outcome
 from hvhost.supervisor.states import Permission
-from hvhost.words.errors import CannotConnect, HvhostError
+from hvhost.words.errors import CannotConnect, HvhostError, RecordFault
 
 SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
@@ -179,9 +178,9 @@ class Daemon:
 
     async def _recover_one(self, folder: RunFolder) -> None:
         try:
-            await asyncio.to_thread(recover_and_close, folder, utc_ns=self.clock.utc_ns())
+            await _closing("--recover", str(self.clock.utc_ns()), str(folder.path))
             self.say(f"run {folder.name} was left open: closed as interrupted")
-        except (HvhostError, OSError) as error:
+        except (HvhostError, OSError, TimeoutError) as error:
             self.say(f"run {folder.name} cannot be recovered: {error}")
 
     # ------------------------------------------------------------ the port
@@ -330,18 +329,22 @@ class Daemon:
         verdict = "not decided: the record could not be closed"
         try:
             await asyncio.to_thread(end_recording, job)
-            child = await asyncio.create_subprocess_exec(
-                sys.executable, "-m", "hvhost.report.closing", str(job.folder.path),
-                stdin=asyncio.subprocess.DEVNULL, stdout=asyncio.subprocess.PIPE, stderr=asyncio.subprocess.PIPE)
-            out, err = await asyncio.wait_for(child.communicate(), CLOSE_S)
-            if child.returncode:
-                self.say(f"closing run {job.folder.name}: {err.decode(errors='replace').strip()}")
-            else:
-                verdict = str(json.loads(out)["verdict"])
+            verdict = str(json.loads(await _closing(str(job.folder.path)))["verdict"])
         except (HvhostError, OSError, TimeoutError, ValueError, KeyError) as error:
             self.say(f"closing run {job.folder.name}: {error}")
         finally:
             self.station.closed(verdict)
+
+
+async def _closing(*arguments: str) -> bytes:
+    """Close or recover a run folder in a process of its own: nothing of it holds the loop or the interpreter."""
+    child = await asyncio.create_subprocess_exec(
+        sys.executable, "-m", "hvhost.report.closing", *arguments, stdin=asyncio.subprocess.DEVNULL,
+        stdout=asyncio.subprocess.PIPE, stderr=asyncio.subprocess.PIPE)
+    out, err = await asyncio.wait_for(child.communicate(), CLOSE_S)
+    if child.returncode:
+        raise RecordFault(err.decode(errors="replace").strip() or f"exit code {child.returncode}")
+    return out
 
 
 def user_name(uid: int) -> str:

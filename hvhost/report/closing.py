@@ -79,17 +79,20 @@ def recover_and_close(folder: RunFolder, *, utc_ns: int) -> Closed | None:
 
 
 def main(arguments: list[str]) -> int:
-    """Close one run folder; a sentence and code 7 where that fails."""
-    if len(arguments) != 1:
-        print("usage: python -m hvhost.report.closing RUNDIR", file=sys.stderr)
+    """Close one run folder, or recover it first (``--recover UTC_NS``); a sentence and code 7 where that fails."""
+    recovering = len(arguments) == 3 and arguments[0] == "--recover" and arguments[1].isdecimal()
+    if not recovering and len(arguments) != 1:
+        print("usage: python -m hvhost.report.closing [--recover UTC_NS] RUNDIR", file=sys.stderr)
         return 2
     try:
-        closed = close_run(RunFolder.at(Path(arguments[0])))
+        folder = RunFolder.at(Path(arguments[-1]))
+        closed = recover_and_close(folder, utc_ns=int(arguments[1])) if recovering else close_run(folder)
     except HvhostError as error:
         print(error, file=sys.stderr)
         return error.exit_code
-    print(json.dumps({"verdict": closed.result.verdict.value, "outcome": closed.result.outcome,
-                      "remarks": closed.remarks}))
+    if closed is not None:
+        print(json.dumps({"verdict": closed.result.verdict.value, "outcome": closed.result.outcome,
+                          "remarks": closed.remarks}))
     return 0
 
 
