@@ -92,7 +92,7 @@ class Daemon:
         self._services: list[tuple[str, Callable[[], Coroutine[Any, Any, None]]]] = []
         self._tasks: list[asyncio.Task[None]] = []
         for attach in ATTACHED:
-            attach(bench, self)
+            attach(bench, _Attached(self))
 
     # ------------------------------------------------------------ life
 
@@ -334,6 +334,22 @@ class Daemon:
             self.say(f"closing run {job.folder.name}: {error}")
         finally:
             self.station.closed(verdict)
+
+
+class _Attached:
+    """The daemon as an outlet sees it: what an outlet says stands in the record of the run as well.
+
+    It makes no line on screens: an outlet that forwards those lines would forward its own complaints for ever.
+    """
+
+    def __init__(self, daemon: Daemon) -> None:
+        self._daemon = daemon
+        self.ask, self.add_outlet, self.add_service = daemon.ask, daemon.add_outlet, daemon.add_service
+
+    def say(self, text: str) -> None:
+        """Tell the operator of the daemon and the record."""
+        self._daemon.say(text)
+        self._daemon.station.core.note(self._daemon.clock.now_s(), "outlet", text=text)
 
 
 async def _closing(*arguments: str) -> bytes:

@@ -316,7 +316,8 @@ def voltage_text(core: Core) -> str:
 
 def power_words(core: Core) -> str:
     """What stands behind zero: never 'off' where the supply stays powered."""
-    if core.state.permission is not st.Permission.IDLE:
+    if core.state.permission is not st.Permission.IDLE or core.state.link not in (st.LinkState.GREETED,
+                                                                                 st.LinkState.OBSERVE):
         return ""
     if core.bench.programming_only:
         return "programmed to zero, supply still powered"

@@ -248,7 +248,8 @@ class LoopView:
     ``longest_s`` and ``p999_s`` since it began, ``recent_s`` in about the last hour, ``run_s`` since the run was
     opened; ``own_s`` is the most of a lateness that this process itself can have caused; ``turn_s`` the longest turn
     and ``turn_own_s`` the one that took most processor time (``run_turn_own_s``: since the run was opened);
-    ``piece_s`` the longest single piece of work and ``piece`` its name; ``read_s`` the median of what one read costs, the protective path and all that follows it.
+    ``piece_s`` the longest single piece of work and ``piece`` its name; ``read_s`` the median of what one read costs,
+    the protective path and all that follows it.
     """
 
     longest_s: float = 0.0
