@@ -169,9 +169,7 @@ def _request(session: Session, params: Params) -> str:
             return "0"
         raise
     session.seated = True
-    try:
-        device.need_seat(caller)
-    except ScpiError:
+    if device.stopped_by(caller):
         device.ask("seat.acknowledge", {"ticket": caller.ticket}, caller)
     return "1"
 

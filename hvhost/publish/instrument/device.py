@@ -150,8 +150,14 @@ class Device:
     # ------------------------------------------------------------ the seat and the latch
 
     def need_seat(self, caller: Caller) -> None:
-        """Raise -203 unless this connection has control."""
-        self.ask("seat.check", {"ticket": caller.ticket}, caller)
+        """Raise -203 unless this connection has control and has acknowledged every stop by somebody else."""
+        stopped_by = self.stopped_by(caller)
+        if stopped_by:
+            raise ScpiError(Err.PROTECTED, f"stopped by {stopped_by}")
+
+    def stopped_by(self, caller: Caller) -> str:
+        """Who stopped the bench under this connection and waits to be acknowledged; raises -203 without control."""
+        return str(self.ask("seat.check", {"ticket": caller.ticket}, caller).get("stopped_by", ""))
 
     def ask(self, method: str, params: dict[str, Any], caller: Caller) -> dict[str, Any]:
         """One request to the bench; what it refuses becomes the standard's error."""

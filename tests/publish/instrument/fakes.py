@@ -78,9 +78,9 @@ class FakeBench:
             return {"acknowledged": True}
         if method == "reply":
             return {"reply": self.replies.get(params["ticket_number"], "")}
+        if method == "seat.check" and self.seat.holds(ticket):
+            return {"holder": who, "stopped_by": self.seat.stopped_by}
         self.seat.require(ticket)
-        if method == "seat.check":
-            return {"holder": who}
         if method == "reset":
             return self._reset(params)
         assert method == "set"
