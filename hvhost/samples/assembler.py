@@ -59,10 +59,14 @@ class Assembler:
         if not pairs:
             counters.empty += 1
             return None
-        index, gap = self._place(block.index, pairs)
-        if gap < 0:
-            return None
-        tick = self._tick(block, index, gap, arrival_s)
+        expected, at_tick = self._next_index, self._at_tick
+        if expected is not None and block.index == expected % WRAP and block.tick == at_tick % WRAP:
+            index, gap, tick = expected, 0, at_tick  # it continues the last block
+        else:
+            index, gap = self._place(block.index, pairs)
+            if gap < 0:
+                return None
+            tick = self._tick(block, index, gap, arrival_s)
         flags = self._pending
         self._pending = _NONE
         v_low, v_high, i_low, i_high = min(v), max(v), min(i), max(i)

@@ -23,8 +23,9 @@ class Holding:
         self.inside = False
         self.restarts = 0
         self._tick_hz, self._notes = tick_hz, notes
-        self._window: deque[Measured] = deque()
-        # what the mean sums up, block by block in the same order: sum() over numbers is ten times a generator's pace
+        # the window's blocks, each in what the mean sums up: sum() over numbers is ten times a generator's pace
+        self._ticks: deque[int] = deque()
+        self._peaks: deque[float] = deque(maxlen=PEAK_BLOCKS)
         self._pairs: deque[int] = deque()
         self._volts: deque[float] = deque()
         self._amps: deque[float] = deque()
@@ -41,24 +42,28 @@ class Holding:
 
     def observe(self, measured: Measured, step: Step | None) -> None:
         """Take one block into the window, whatever the run does."""
-        window = self._window
-        window.append(measured)
-        self._pairs.append(measured.pairs)
-        self._volts.append(measured.volts * measured.pairs)
-        self._amps.append(measured.amps * measured.pairs)
+        ticks, pairs = self._ticks, measured.pairs
+        ticks.append(measured.tick)
+        self._peaks.append(measured.volts_max)
+        self._pairs.append(pairs)
+        self._volts.append(measured.volts * pairs)
+        self._amps.append(measured.amps * pairs)
         if step is not self._spanned:
             self._spanned = step
             self._span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
-        since = measured.end_tick - self._span
-        while len(window) > 1 and window[1].tick <= since:
-            window.popleft()
+        since = measured.tick + measured.ticks - self._span
+        while len(ticks) > 1 and ticks[1] <= since:
+            ticks.popleft()
+            if len(self._peaks) > len(ticks):
+                self._peaks.popleft()
             self._pairs.popleft()
             self._volts.popleft()
             self._amps.popleft()
 
     def take(self, step: HoldStep, measured: Measured, origins: Mapping[str, int]) -> tuple[bool, str]:
         """Judge one block of a hold; returns whether the hold is done, and why it failed ('' where it has not)."""
-        volts, amps = self._mean()
+        pairs = sum(self._pairs)
+        volts, amps = sum(self._volts) / pairs, sum(self._amps) / pairs
         now, index = measured.end_tick, measured.end_index
         inside = abs(volts - step.v) <= step.tolerance * abs(step.v)
         if inside and self._begun is None:
@@ -74,7 +79,8 @@ class Holding:
             if failed:
                 return False, failed
         self.inside = inside
-        self._take_readings(step, now, index, (volts, amps), origins)
+        if self._due:
+            self._take_readings(step, now, index, (volts, amps), origins)
         return self.elapsed_s >= step.hold_s and not self._due, ""
 
     def interrupted(self, step: HoldStep, tick: int, index: int) -> str:
@@ -94,13 +100,9 @@ class Holding:
     @property
     def peak_v(self) -> float:
         """The highest readback of the last blocks: what stood before a collapse."""
-        return max((m.volts_max for m in list(self._window)[-PEAK_BLOCKS:]), default=0.0)
+        return max(self._peaks, default=0.0)
 
     # ------------------------------------------------------------ inside
-
-    def _mean(self) -> tuple[float, float]:
-        pairs = sum(self._pairs)
-        return sum(self._volts) / pairs, sum(self._amps) / pairs
 
     def _origin(self, step: HoldStep, origins: Mapping[str, int]) -> int | None:
         return self._begun if step.origin == HOLD_START else origins.get(step.origin)
