@@ -8,14 +8,13 @@ that both find the processor's caches in the same state.
 
 import asyncio
 import copy
-import gc
 import os
 from collections.abc import Callable
 from typing import Any
 
 from hvhost.ports.descriptor import DescriptorPort
 from hvhost.record.recorder import Recorder
-from hvhost.speed.child import Device, set_fifo
+from hvhost.speed.child import Device, as_a_daemon, set_fifo
 from hvhost.speed.figures import Line, Sides, flat, p99_interval, quantile
 from hvhost.speed.scene import Player
 from hvhost.speed.setting import Setting
@@ -31,29 +30,25 @@ OVERCURRENT = 30_000  # code: far above every limit, and no collapse of the volt
 def measure(setting: Setting) -> list[Line]:
     """Return the lines of B2: at ordinary priority, and in real time where that is permitted."""
     bench = _Trips(setting)
-    cores = os.sched_getaffinity(0)
     try:
-        if len(cores) > 1:
-            own, far = sorted(cores)[:2]
-            os.sched_setaffinity(0, {own})
-            os.sched_setaffinity(bench.device.process, {far})
-        gc.collect()
-        gc.freeze()  # as the daemon does
-        sides = asyncio.run(bench.take(setting, "ordinary priority"))
-        lines = [_median(sides, 3.5, "median")]
-        if bench.device.fifo(DEVICE_FIFO) and set_fifo(HOST_FIFO):
-            try:
-                sides = asyncio.run(bench.take(setting, "SCHED_FIFO"))
-            finally:
-                set_fifo(0)
-            lines += [_median(sides, 2.5, "median, real-time"), _tail(sides)]
-        else:
-            setting.say("SCHED_FIFO is not permitted here: its two bounds are not judged")
-        return lines
+        with as_a_daemon(bench.device):
+            return _both(setting, bench)
     finally:
-        gc.unfreeze()
-        os.sched_setaffinity(0, cores)
         bench.close()
+
+
+def _both(setting: Setting, bench: "_Trips") -> list[Line]:
+    sides = asyncio.run(bench.take(setting, "ordinary priority"))
+    lines = [_median(sides, 3.5, "median")]
+    if bench.device.fifo(DEVICE_FIFO) and set_fifo(HOST_FIFO):
+        try:
+            sides = asyncio.run(bench.take(setting, "SCHED_FIFO"))
+        finally:
+            set_fifo(0)
+        lines += [_median(sides, 2.5, "median, real-time"), _tail(sides)]
+    else:
+        setting.say("SCHED_FIFO is not permitted here: its two bounds are not judged")
+    return lines
 
 
 def _median(sides: Sides, bound: float, what: str) -> Line:
