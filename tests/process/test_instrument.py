@@ -1,4 +1,4 @@
-"""The instrument socket, the whole way: PyVISA and plain sockets, the real daemon, a stand-in behind a pseudo-terminal, in real time."""
+"""The instrument socket, the whole way: PyVISA and sockets, the real daemon, a stand-in behind a pseudo-terminal."""
 
 import contextlib
 import os

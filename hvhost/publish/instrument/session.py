@@ -63,6 +63,7 @@ class _Line:
     overtaken: int = 0
     stopped: Stop = NOTHING
     at: int = 0
+    asked: tuple[int, float] = (-1, 0.0)  # the last measurement: the place behind its unit, since when it is asked for
     answers: list[str] = field(default_factory=list)
     waiting: Waiting | None = None
 
@@ -345,6 +346,14 @@ class Session:
             self.status.error(Err.DEVICE, f"a fault of ours: {type(error).__name__}")
 
     # ------------------------------------------------------------ what commands wait for
+
+    def asked_since(self) -> float:
+        """Since when a measurement is asked for: those that follow each other in a message are taken together."""
+        active = self._active
+        if active is None:
+            return self.now_s
+        active.asked = (active.at, active.asked[1] if active.asked[0] == active.at - 1 else self.now_s)
+        return active.asked[1]
 
     def until_done(self) -> Waiting:
         """Wait until no operation is pending, or a trip ends the wait."""

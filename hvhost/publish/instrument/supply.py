@@ -182,8 +182,8 @@ OUTPUT: tuple[Command, ...] = (
 def _measured(pick: Callable[[Reading], float | None]) -> Callable[[Session, Params], Waiting]:
     """A mean over a sample block that began after the question came; the standard's not-a-number where none comes."""
     def query(session: Session, params: Params) -> Waiting:
-        asked_s = session.now_s
-        while session.now_s - asked_s <= MEASURE_S:
+        asked_s, until_s = session.asked_since(), session.now_s + MEASURE_S
+        while session.now_s <= until_s:
             shot = session.device.shot
             reading = shot.reading if shot is not None else None
             if shot is not None and reading is not None and shot.now_s - reading.age_s - shot.block_s > asked_s:
@@ -196,7 +196,8 @@ def _measured(pick: Callable[[Reading], float | None]) -> Callable[[Session, Par
 
 MEASURE: tuple[Command, ...] = (
     Command(pattern="MEASure[:SCALar]:VOLTage[:DC]", query=_measured(lambda reading: reading.volts),
-            does="the mean of a sample block younger than the question, in V"),
+            does="the mean of a sample block younger than the question, in V; VOLTage? and CURRent? that follow each "
+                 "other in a line are of the same block"),
     Command(pattern="MEASure[:SCALar]:CURRent[:DC]", query=_measured(lambda reading: reading.amps),
             does="the same of the current, in A"),
 )

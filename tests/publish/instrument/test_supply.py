@@ -229,6 +229,19 @@ def test_a_measurement_is_younger_than_its_question(talk: Talk, holder: Client) 
     assert holder.answers == ["1.000000E+03"]
 
 
+def test_voltage_and_current_of_one_line_are_of_the_same_block(talk: Talk) -> None:
+    """They are asked for together; anything between them makes the second a question of its own."""
+    client = talk.client()
+    client.write("MEAS:VOLT?;CURR?")
+    client.write("MEAS:VOLT?;*ESE?;CURR?")
+    talk.after(0.1)
+    assert client.answers == ["0.000000E+00;0.000000E+00"]
+    talk.after(0.1)
+    assert len(client.answers) == 1
+    talk.after(0.1)
+    assert len(client.answers) == 2
+
+
 def test_a_reading_that_does_not_come_is_not_a_number(talk: Talk) -> None:
     """S13: nothing old is told as new; the error says why."""
     client = talk.client()
