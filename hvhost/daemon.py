@@ -43,6 +43,7 @@ from hvhost.supervisor.runs import Outcome
 from hvhost.supervisor.states import Permission
 from hvhost.words.errors import CannotConnect, HvhostError, RecordFault
 
+SWITCH_S = 0.0005  # the recorder's thread gives the interpreter back within this; the default of 5 ms is a late cut
 SNAPSHOT_S = 0.1  # ten pictures a second
 REOPEN_S = (0.5, 1.0, 2.0)  # pauses between attempts to open a port that is gone; the last one repeats
 LAST_LOWER_S = 2.0  # how long the end waits for a lowering, beyond the longest that the MCU may take
@@ -116,6 +117,7 @@ class Daemon:
                     self.say(f"real-time scheduling refused: {refused}" if refused else "real-time scheduling taken")
                 self._attach(port)
                 gc.collect()
+                sys.setswitchinterval(SWITCH_S)
                 gc.freeze()  # a full collection of what lives for ever would stall the loop
                 self._tasks = [group.create_task(self._publish()), group.create_task(self._reopen()),
                                group.create_task(self._recover()), group.create_task(self.life.beat()),

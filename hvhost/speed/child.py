@@ -99,9 +99,12 @@ def as_a_daemon(device: Device | None = None) -> Iterator[None]:
 
     Which cores the two ends get by chance decides by a factor of two what passes between them.
     """
-    cores = os.sched_getaffinity(0)
+    from hvhost.daemon import SWITCH_S  # not for the child, which must start fast
+
+    cores, interval = os.sched_getaffinity(0), sys.getswitchinterval()
     gc.collect()
     gc.freeze()
+    sys.setswitchinterval(SWITCH_S)
     try:
         if device is not None and len(cores) > 1:
             own, far = sorted(cores)[:2]
@@ -110,6 +113,7 @@ def as_a_daemon(device: Device | None = None) -> Iterator[None]:
         yield
     finally:
         os.sched_setaffinity(0, cores)
+        sys.setswitchinterval(interval)
         gc.unfreeze()
 
 
