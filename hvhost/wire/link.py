@@ -307,6 +307,8 @@ class Link:
         return number
 
     def _drop(self, why: DropWhy) -> None:
+        if self._requests.idle:
+            return
         gone = self._requests.drop(all_of_them=why is DropWhy.ENDED)
         self._notices += [Dropped(one.ticket, one.frame, why, one.sent) for one in gone if one.ticket]
 

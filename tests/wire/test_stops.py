@@ -1,9 +1,11 @@
 """The three stops: order, repetition, escalation, confirmation."""
 
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from hvhost.wire.events import CutState
-from hvhost.wire.frames import McuEvent, Ok, Refusal
+from hvhost.wire.frames import ArcSeen, Cut, Lower, McuEvent, Ok, Refusal, encode_request
 from hvhost.wire.lines import seal
 from hvhost.wire.stops import ARCS_MAX, ESCALATE_S, REPEAT_S, Stops, in_cut_position
 from hvhost.wire.vocabulary import Fitted, HostRule, Inputs, McuState
@@ -13,6 +15,18 @@ from tests.wire.device import BACKS, CUT_POSITION, block
 def line(body: str) -> bytes:
     """Return a stop as it leaves: LF, then the line."""
     return b"\n" + seal(body.encode("ascii"))
+
+
+@given(st.integers(0, 2**32 - 1), st.integers(1, 2**32 - 1), st.integers(0, 2**32 - 1), st.integers(0, 99))
+def test_stops_are_written_as_the_table_of_requests_writes_them(number: int, session: int, index: int,
+                                                                rule: int) -> None:
+    """Their short way may not differ from the grammar's one writer."""
+    for decide, frame in ((lambda s: s.cut(rule, 0.0), Cut(n=number, rule=rule)),
+                          (lambda s: s.lower(0.0), Lower(n=number, session=session)),
+                          (lambda s: s.arc(index, 0.0), ArcSeen(n=number, session=session, index=index))):
+        stops = Stops(session, number)
+        decide(stops)
+        assert stops.due(0.0) == b"\n" + seal(encode_request(frame))
 
 
 def test_a_cut_is_repeated_every_20_ms_until_answered() -> None:
