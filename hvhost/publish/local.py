@@ -41,7 +41,7 @@ FIELDS = tuple(one.name for one in fields(Snapshot))
 class LocalLimits:
     """Bounds of the server: clients with every right, clients for stops only, unread bytes, seconds unread."""
 
-    clients: int = 16
+    clients: int = 64
     stops_only: int = 2 * BACKLOG
     unread_notify: int = 65_536  # above this a notification is dropped
     unread_most: int = 524_288  # above this the client is disconnected

@@ -25,6 +25,7 @@ from hvhost.supervisor.journal import NoJournal
 from hvhost.supervisor.runs import ActiveRun, Outcome, Stage
 from hvhost.wire.frames import Block
 from hvhost.words.clocks import Clock
+from hvhost.words.errors import HvhostError
 
 ANCHOR_S = 1.0  # the wall clock is compared with the tick clock this often while a run is open
 CLOSED = Stage.CLOSED
@@ -164,6 +165,9 @@ class Station:
         """Carry out one request; raises `HvhostError`; stops are on the wire when this returns."""
         try:
             return self.requests.handle(method, params, who)
+        except HvhostError as refused:
+            self.core.note(self.clock.now_s(), "refused", method=method[:60], who=who, text=str(refused)[:500])
+            raise
         finally:
             self.flush()
             self.after()

@@ -2,10 +2,14 @@
 
 from collections.abc import Callable
 from dataclasses import replace
+from pathlib import Path
 
 import pytest
 
 from hvhost.guard.guard import Guard
+from hvhost.record.blockfile import read_blocks
+from hvhost.record.entries import Entry, NoteEntry
+from hvhost.record.folder import RunFolder
 from hvhost.supervisor.runs import Outcome, Stage
 from hvhost.supervisor.states import LIVE, LinkState, Permission, Voltage
 from hvhost.wire.vocabulary import Cause, HostRule, McuState
@@ -731,3 +735,19 @@ def test_what_the_mcu_may_not_do_is_cut(lab: Lab) -> None:
     lab.pass_s(0.1)
     assert lab.core.host_rule == HostRule.DISAGREEMENT
     assert any(data.startswith(b"\ncut ") for _, data in lab.sent)
+
+
+def test_what_was_refused_stands_in_the_record_with_its_asker(lab: Lab) -> None:
+    """Everything asked and what came of it: a set-point without control is on the record, refused."""
+    lab.ready().prepare()
+    with pytest.raises(CommandRefused):
+        lab.ask("set", ticket="someone else", volts=1e3, amps=1e-3)
+    lab.ask("cancel")
+    lab.closed()
+    folder = RunFolder.at(Path(lab.ask("status")["folder"]))
+    notes = [entry.content.data for entry in read_blocks(folder.blocks)
+             if isinstance(entry, Entry) and isinstance(entry.content, NoteEntry)
+             and entry.content.data["what"] == "refused"]
+    assert len(notes) == 1
+    assert notes[0]["method"] == "set"
+    assert "control" in notes[0]["text"]
