@@ -242,6 +242,11 @@ class WireFaults:
         self._echo = bytearray()
         self.spoiled = 0
 
+    @property
+    def echoing(self) -> bool:
+        """Whether bytes of the host are on their way back to it."""
+        return bool(self._echo)
+
     def to_host(self, data: bytes) -> bytes:
         """Pass bytes from the MCU to the host."""
         if not self._look() and not self._echo:

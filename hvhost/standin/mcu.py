@@ -94,6 +94,8 @@ class Mcu:
     def take_output(self) -> bytes:
         """Return and forget what was sent since the last call."""
         out = self.core.stream.out
+        if not out:
+            return b""
         data = bytes(out)
         out.clear()
         return data

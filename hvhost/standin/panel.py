@@ -1,8 +1,8 @@
 """Wiring around the supply: relay, hard-wired interlock, danger signal, grounding device, arm input, read-backs.
 
-Two contacts stand in series in the supply's mains.  The MCU's relay closes one.  The interlock loop and the emergency
-contact, in series, hold the other, a contactor that latches open until somebody resets it outside.  The danger signal
-burns from behind both, so it tells what no computer can pretend.
+Two contacts stand in series in the supply's mains.  The MCU's relay closes one, where there is one.  The interlock
+loop and the emergency contact, in series, hold the other, a contactor that latches open until somebody resets it
+outside.  The danger signal burns from behind both, so it tells what no computer can pretend.
 """
 
 from collections.abc import Mapping
@@ -127,12 +127,13 @@ class Wiring:
 
     def _lines(self) -> None:
         inhibit, clear, _ = self.wanted
-        self.inhibit = inhibit and "inhibit-dead" not in self._faults and "inhibit-lies" not in self._faults
+        fitted = self._params.inhibit
+        self.inhibit = inhibit and fitted and "inhibit-dead" not in self._faults and "inhibit-lies" not in self._faults
         self.clear = clear and "clear-dead" not in self._faults
 
     def _read(self) -> None:
         faults = self._faults
-        self.power = self.relay and self.contactor and self.mains
+        self.power = (self.relay or not self._params.relay) and self.contactor and self.mains
         grounded = (self.ground_on or "ground-on" in faults or "ground-contact" in faults)
         inhibit_back = bool(faults.get("inhibit-back-stuck", self.inhibit or (
             "inhibit-lies" in faults and self.wanted[0])))

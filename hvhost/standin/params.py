@@ -136,6 +136,8 @@ class ContactParams:
     bounce_s: float = 3e-3
     interlock_latches: bool = True
     arm_input: bool = True
+    relay: bool = True  # without one the supply has power as long as the contactor is closed
+    inhibit: bool = True  # without one the output stage knows the words only
     ground_ohm: float = 100e3  # resistor of the grounding device
     auxiliary_back_s: float = 50e-3
 
