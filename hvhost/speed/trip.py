@@ -3,17 +3,19 @@
 Both sides run on one event loop through the port that the daemon uses; the far end is a process of its own, on another
 core where there is one, and times what it asks: from its write to the first byte that comes back.  Before every trip
 the core is put back to where it held the voltage, so each one is the first; the same is done before every echo, so
-that both find the processor's caches in the same state.
+that both find the processor's caches in the same state.  The record is written between the trips and not by a thread
+of its own: two thousand trips in seconds would keep that thread busier than any run does.
 """
 
 import asyncio
 import copy
 import os
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from typing import Any
 
 from hvhost.ports.descriptor import DescriptorPort
-from hvhost.record.recorder import Recorder
+from hvhost.record.folder import RunFolder
+from hvhost.record.recorder import DiskFile, Recorder
 from hvhost.speed.child import Device, as_a_daemon, set_fifo
 from hvhost.speed.figures import Line, Sides, flat, p99_interval, quantile
 from hvhost.speed.scene import Player
@@ -75,13 +77,20 @@ class _Trips:
     def __init__(self, setting: Setting) -> None:
         scene = setting.scene
         own = scene.blocks(scene.hold)
-        self.player: Player = scene.player(scene.hold + 40, setting.place(), Recorder.open)
+        self.recorder: Recorder | None = None
+        self.player: Player = scene.player(scene.hold + 40, setting.place(), self._open)
         self.journal, self.kept = self._keep()
         self.line = seal(encode_block(_offending(own, self.kept), scene.signs))
         body = unseal(self.line[:-1])
         assert isinstance(body, bytes)
         decode_block(body, scene.signs)
         self.device = Device(setting.place())
+
+    def _open(self, folder: RunFolder, meta: Mapping[str, Any], *, tag: int, signs: str,
+              on_failed: Callable[[str], None]) -> Recorder:
+        self.recorder = Recorder(DiskFile(folder.blocks), mark=tag, signs=signs, on_failed=on_failed)
+        self.recorder.begin(meta)
+        return self.recorder
 
     def close(self) -> None:
         self.player.close()
@@ -96,6 +105,8 @@ class _Trips:
     def again(self) -> None:
         """Put the station back to where it held."""
         kept, station = self.kept, self.player.station
+        if self.recorder is not None:
+            self.recorder.step(0.0)
         shared: list[Any] = [kept.bench, kept._sessions, kept.run.spec if kept.run else None]
         core = copy.deepcopy(kept, {id(one): one for one in shared if one is not None})
         core.journal = self.journal
