@@ -47,6 +47,9 @@ def check_contacts(b: BenchFile, say: Say) -> Iterator[Finding]:
         yield say(REASON, "danger_signal.input", "yes: the signal is seen lit before the output is on", "no")
     if not b.inputs.auxiliary_supplies:
         yield say(REASON, "inputs.auxiliary_supplies", "yes: the driver's and converters' rails are watched", "no")
+    if b.danger_signal.dark_with_relay_open and b.cut_path.means and CutMeans.RELAY not in b.cut_path.means:
+        yield say(REFUSE, "danger_signal.dark_with_relay_open", "no: without a relay the signal burns as long as the "
+                  "supply has power", "yes", "the MCU would take the lit signal for power that a cut left on")
 
 
 def check_cut_path(b: BenchFile, say: Say) -> Iterator[Finding]:

@@ -81,10 +81,18 @@ class FastRehearsal:
             raise CommandRefused("a greeted stand-in", core.link_text, "rehearse")
         station.handle("seat.take", {"ticket": "rehearsal"}, WHO)
         if core.state.latched and core.state.link is LinkState.GREETED:
-            from hvhost.publish.compose import latched_words
+            self._reset()
 
-            station.handle("reset", {"ticket": "rehearsal", "causes": list(latched_words(core))}, WHO)
-            self.line.run(lambda: not core.state.latched, RESET_S)
+    def _reset(self) -> None:
+        """Clear the latch.  Where no reading can tell the discharge, the MCU wants bleed times and 'grounded by hand'."""
+        from hvhost.publish.compose import latched_words
+
+        core, bench = self.station.core, self.station.core.bench
+        blind = not (bench.monitor_powered_after_cut and bench.monitor_at_specimen)
+        if blind:
+            self.line.run(lambda: False, bench.bleed_s * bench.bleeds)
+        self.station.handle("reset", {"ticket": "rehearsal", "causes": list(latched_words(core)), "grounded": blind}, WHO)
+        self.line.run(lambda: not core.state.latched, RESET_S)
 
     def run(self, params: dict[str, Any], for_s: float) -> Rehearsed:
         """Open, arm, press, follow to the close, at most for so many virtual seconds."""

@@ -19,9 +19,11 @@ def plant_of(bench: Bench, like: PlantParams | None = None) -> PlantParams:
     supply = replace(like.supply, v_full=v_full, i_full=i_full, output_f=bench.output_f or like.supply.output_f,
                      ripple_v=0.0, ripple_v_per_a=bench.ripple_v / i_full, ripple_hz=bench.ripple_hz or 100.0,
                      bleed_ohm=_bleed(bench), slew_v_per_s=max(like.supply.slew_v_per_s, 2 * bench.slew_v_per_s))
+    supply = replace(supply, clear_input="clear" in bench.cut_path)
     return replace(like, name=bench.name, v_dac=_dac(volts.program), i_dac=_dac(amps.program),
                    supply=_programmed(supply), chain=_chain(bench, like.chain), cable_f=bench.cable_f or like.cable_f,
-                   contacts=replace(like.contacts, arm_input=bench.arm_input,
+                   contacts=replace(like.contacts, arm_input=bench.arm_input, relay="relay" in bench.cut_path,
+                                    inhibit="inhibit" in bench.cut_path,
                                     interlock_latches=bench.interlock_latches))
 
 

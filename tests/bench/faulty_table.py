@@ -247,12 +247,14 @@ TABLE: dict[str, tuple[Row, ...]] = {
     ),
     "programming-alone.yaml": (
         (81, REASON, "cut_path.means", "a relay or an inhibit", "programming alone"),
+        (92, REFUSE, "danger_signal.dark_with_relay_open", "no: without a relay the signal burns", "yes"),
         (124, REFUSE, "arcs.count", "0: an arc pause needs an", "50"),
     ),
     "read-back-without-means.yaml": (
         (81, REFUSE, "cut_path.means", "each means once", "inhibit twice"),
         (82, REFUSE, "cut_path.read_back", "only means that are listed", "relay"),
         (82, REFUSE, "cut_path.read_back", "relay or inhibit: the others have", "clear"),
+        (92, REFUSE, "danger_signal.dark_with_relay_open", "no: without a relay the signal burns", "yes"),
     ),
     "reasons.yaml": (
         (2, REASON, "calibration", "a certificate and its last day", "nothing"),

@@ -19,8 +19,10 @@ SIDES: list[Side] = [
     (("inputs.arm=no",), ("cut_path.inhibits_without_mcu=no",), REASON, "cut_path.inhibits_without_mcu"),
     (("cut_path.means=[relay, inhibit]",), ("cut_path.means=[relay, relay, inhibit]",), REFUSE, "cut_path.means"),
     ((), ("cut_path.read_back=[inhibit]",), REASON, "cut_path.read_back"),
-    (("cut_path.read_back=[inhibit]", "cut_path.means=[inhibit]"), ("cut_path.means=[inhibit]",), REFUSE,
-     "cut_path.read_back"),
+    (("cut_path.read_back=[inhibit]", "cut_path.means=[inhibit]", "danger_signal.dark_with_relay_open=no"),
+     ("cut_path.means=[inhibit]", "danger_signal.dark_with_relay_open=no"), REFUSE, "cut_path.read_back"),
+    (("cut_path.read_back=[inhibit]", "cut_path.means=[inhibit]", "danger_signal.dark_with_relay_open=no"),
+     ("cut_path.read_back=[inhibit]", "cut_path.means=[inhibit]"), REFUSE, "danger_signal.dark_with_relay_open"),
     (("bleed.times=6",), ("bleed.times=5",), REFUSE, "bleed.times"),
     (("bleed.time=750 ms",), ("bleed.time=740 ms",), REFUSE, "bleed.time"),
     (("bleed.time=10 ms", "bleed.resistance=1 MΩ"), ("bleed.time=1 ms", "bleed.resistance=1 MΩ"), REFUSE, "bleed.time"),
@@ -57,7 +59,8 @@ def test_interlock_by_software_is_allowed_below_the_touch_threshold() -> None:
 
 def test_programming_alone_is_graded() -> None:
     """A cut that only programs zero needs a reason, and cannot pause."""
-    told = findings("cut_path.means=[programming]", "cut_path.read_back=[]", "arcs.count=0", "arcs.total=0")
+    told = findings("cut_path.means=[programming]", "cut_path.read_back=[]", "arcs.count=0", "arcs.total=0",
+                    "danger_signal.dark_with_relay_open=no")
     assert [(f.grade, f.what) for f in told] == [(REASON, "cut_path.means")]
     assert "still" in told[0].remedy or "stays powered" in told[0].remedy
 

@@ -31,3 +31,17 @@ def test_a_mute_board_is_refused(tmp_path: Path) -> None:
     rehearsal = FastRehearsal(bench, plant_of(bench), seed=1, runs=tmp_path, day=DAY, faults=["mute"])
     with pytest.raises(HvhostError, match="a greeted stand-in"):
         rehearsal.prepare()
+
+
+@pytest.mark.parametrize(("fine", "blind"), [("powered_after_cut: yes", "powered_after_cut: no"),
+                                             ("measured_at: specimen", "measured_at: supply")])
+def test_prepare_waits_and_grounds_where_no_reading_tells_the_discharge(tmp_path: Path, fine: str, blind: str) -> None:
+    """Such a bench is rehearsed too: bleed times pass, 'grounded by hand' is declared, the latch is gone."""
+    text = (CONFIGS / "demo.bench.yaml").read_text(encoding="utf-8")
+    file = tmp_path / "blind.yaml"
+    file.write_text(text.replace(fine, blind), encoding="utf-8")
+    bench = load_bench(file)
+    rehearsal = FastRehearsal(bench, plant_of(bench), seed=1, runs=tmp_path, day=DAY)
+    rehearsal.prepare()
+    assert rehearsal.station.handle("status", {}, "test")["obstacles"] == []
+    assert rehearsal.clock.elapsed_ns >= bench.bleed_s * bench.bleeds * 1e9

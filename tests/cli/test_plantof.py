@@ -1,5 +1,7 @@
 """A plant made to a bench file's measure reads back in the bench's own scales."""
 
+from dataclasses import replace
+
 import pytest
 
 from hvhost.bench.file import load_bench
@@ -28,3 +30,11 @@ def test_the_bleed_time_is_the_bench_s(name: str) -> None:
     """R C of the bleed on the bench's capacitance is the bleed time of the file."""
     bench = load_bench(CONFIGS / f"{name}.bench.yaml")
     assert plant_of(bench).supply.bleed_ohm * bench.stored_f == pytest.approx(bench.bleed_s)
+
+
+@pytest.mark.parametrize("means", [{"inhibit", "programming"}, {"programming"}, {"relay", "inhibit", "clear"}])
+def test_the_plant_has_the_means_that_the_bench_has(means: set[str]) -> None:
+    """What the bench file does not list is not in the wiring: no relay, no inhibit, no clear."""
+    contacts = plant_of(replace(load_bench(CONFIGS / "demo.bench.yaml"), cut_path=frozenset(means)))
+    assert (contacts.contacts.relay, contacts.contacts.inhibit, contacts.supply.clear_input) == (
+        "relay" in means, "inhibit" in means, "clear" in means)

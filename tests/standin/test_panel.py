@@ -1,5 +1,6 @@
 """Relay, interlock, emergency contact, arm input, grounding device and their read-backs, in time."""
 
+from dataclasses import replace
 from itertools import pairwise
 
 import pytest
@@ -57,6 +58,26 @@ def test_inhibit_reaches_the_output_stage_after_its_delay() -> None:
     contacts.drive(0.0, False, False, False, 2e-4)
     assert levels(contacts, Inputs.INHIBIT_BACK, [1e-4, 3e-4]) == [True, False]
     assert not contacts.clear
+
+
+def test_without_a_relay_the_supply_has_power_as_long_as_the_contactor_is_closed() -> None:
+    """The signal burns after a cut too; only the interlock's contactor takes the power."""
+    contacts = Wiring(replace(PARAMS, relay=False), 1)
+    assert contacts.power
+    assert contacts.bits & Inputs.DANGER
+    assert not contacts.bits & Inputs.RELAY_BACK
+    contacts.set_interlock(0.0, False)
+    contacts.move(0.1)
+    assert not contacts.power
+
+
+def test_without_an_inhibit_the_output_stage_knows_the_words_only() -> None:
+    """Programming alone: nothing inhibits, whatever the MCU drives, and no read-back shows it."""
+    contacts = Wiring(replace(PARAMS, inhibit=False), 1)
+    contacts.drive(0.0, True, True, False, 2e-4)
+    contacts.move(0.1)
+    assert not contacts.inhibit
+    assert not contacts.bits & Inputs.INHIBIT_BACK
 
 
 def test_interlock_drops_the_power_by_itself_and_latches() -> None:
