@@ -84,14 +84,15 @@ class FastRehearsal:
             self._reset()
 
     def _reset(self) -> None:
-        """Clear the latch.  Where no reading can tell the discharge, the MCU wants bleed times and 'grounded by hand'."""
+        """Clear the latch.  Where no reading tells the discharge the MCU wants bleed times and 'grounded by hand'."""
         from hvhost.publish.compose import latched_words
 
         core, bench = self.station.core, self.station.core.bench
         blind = not (bench.monitor_powered_after_cut and bench.monitor_at_specimen)
         if blind:
             self.line.run(lambda: False, bench.bleed_s * bench.bleeds)
-        self.station.handle("reset", {"ticket": "rehearsal", "causes": list(latched_words(core)), "grounded": blind}, WHO)
+        causes = list(latched_words(core))
+        self.station.handle("reset", {"ticket": "rehearsal", "causes": causes, "grounded": blind}, WHO)
         self.line.run(lambda: not core.state.latched, RESET_S)
 
     def run(self, params: dict[str, Any], for_s: float) -> Rehearsed:
