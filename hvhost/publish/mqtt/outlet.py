@@ -94,7 +94,7 @@ class MqttOutlet:
     def view(self) -> OutletView:
         """What was not delivered, and whether a broker is there."""
         return OutletView(name=self.name, dropped=self._dropped + self.waiting.lost_in_all,
-                          failed=self._failed + self.orders.refused, clients=self._connection is not None)
+                          failed=self._failed + self.orders.refused, clients=int(self._connection is not None))
 
     # ------------------------------------------------------------ life
 

@@ -69,6 +69,7 @@ def test_everything_that_is_sent_fits_the_table(broker: Mosquitto, tmp_path: Pat
         async with one.serving():
             one.offer("first")
             await one.until(lambda: one.outlet.view().clients)
+            assert type(one.outlet.view().clients) is int  # a screen refuses a count that is a truth value
             for _ in range(4):
                 one.offer("more", after_s=0.2, permission=Permission.RUNNING, phase=Phase.RAMP)
                 await one.until(lambda: one.outlet._telemetry is None)
