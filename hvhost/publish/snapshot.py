@@ -290,7 +290,8 @@ class Snapshot:
 
     ``block_s`` is the span of one sample block and ``lease_s`` the lease: a reading older than two blocks is shown
     as old, one older than the lease not at all (S13).  ``power_words`` says what stands behind zero: with
-    programming alone 'programmed to zero, supply still powered', never 'off'.  ``trend`` is the whole run, ``recent``
+    programming alone 'programmed to zero, supply still powered', never 'off'.  ``inhibits_without_mcu`` is what the
+    bench file states of the wiring; where it is not so, every screen says it.  ``trend`` is the whole run, ``recent``
     the last minute; ``course`` begins at the present and is what the plan has still to come.  ``stopped_by`` names who
     stopped the bench under the one in control, until that one acknowledges.
     """
@@ -312,6 +313,7 @@ class Snapshot:
     voltage: VoltageState = VoltageState.UNKNOWN
     voltage_text: str = ""
     power_words: str = ""
+    inhibits_without_mcu: bool = True
     stop: StopState = StopState.NONE
 
     set_volts: float | None = None

@@ -221,6 +221,8 @@ def alerts(snapshot: Snapshot, view: View) -> list[str]:
                      f"{bytes_text(snapshot.disk.floor_b)}")
     if snapshot.power_words == cautions.PROGRAMMED_TO_ZERO:
         found.append(cautions.PROGRAMMED_TO_ZERO.upper())
+    if not snapshot.inhibits_without_mcu:
+        found.append(cautions.NOT_INHIBITED_WITHOUT_MCU)
     return found
 
 

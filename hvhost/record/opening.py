@@ -6,7 +6,7 @@ from pathlib import Path
 from typing import Any
 
 from hvhost import __version__
-from hvhost.bench.model import Bench
+from hvhost.bench.model import Bench, CutMeans
 from hvhost.plan.passing import Preflight
 from hvhost.plan.plan import Plan, RunSheet
 from hvhost.record.folder import RunFolder
@@ -69,6 +69,9 @@ def _bench(bench: Bench, *, rehearsal: bool) -> dict[str, Any]:
             "bandwidth_hz": bench.bandwidth_hz, "ripple_hz": bench.ripple_hz, "own_f": bench.cable_f,
             "calibrated": bench.calibrated, "touch_v": bench.touch_v, "arm_input": bench.arm_input,
             "programming_only": bench.programming_only, "monitor_at_specimen": bench.monitor_at_specimen,
+            "supply_stays_powered": CutMeans.RELAY not in bench.cut_path,
+            "monitor_powered_after_cut": bench.monitor_powered_after_cut,
+            "inhibits_without_mcu": bench.inhibits_when_mcu_absent,
             "archive": bench.archive is not None and (bench.archive.rehearsals or not rehearsal)}
 
 

@@ -9,7 +9,13 @@ from collections.abc import Iterable, Iterator, Mapping
 from datetime import UTC, datetime
 from math import floor, log10
 
-from hvhost.bench.cautions import BEFORE_TOUCHING, NO_ARM_INPUT, PROGRAMMED_TO_ZERO
+from hvhost.bench.cautions import (
+    BEFORE_TOUCHING,
+    NO_ARM_INPUT,
+    NOT_INHIBITED_WITHOUT_MCU,
+    NOT_MEASURED,
+    PROGRAMMED_TO_ZERO,
+)
 from hvhost.measure.result import Result
 from hvhost.measure.uncertainty import Value
 from hvhost.measure.verdict import Decision
@@ -177,10 +183,16 @@ def _cautions(meta: RunMeta, result: Result) -> Iterator[str]:
     said = [BEFORE_TOUCHING]
     if bench.get("programming_only"):
         said.append(f"After a cut this bench is {PROGRAMMED_TO_ZERO}.")
+    elif bench.get("supply_stays_powered"):
+        said.append("After a cut this bench is inhibited, supply still powered.")
+    if bench.get("inhibits_without_mcu") is False:
+        said.append(f"On this bench {NOT_INHIBITED_WITHOUT_MCU}.")
     if bench.get("arm_input") is False:
         said.append(f"{NO_ARM_INPUT[0].upper()}{NO_ARM_INPUT[1:]}.")
     if bench.get("monitor_at_specimen") is False:
         said.append("The voltage is not measured at the specimen.")
+    if bench.get("monitor_powered_after_cut") is False:
+        said.append(f"After a cut the voltage monitor has no power: the discharge was {NOT_MEASURED}.")
     said += [f"Under a reason: {r.get('what', '')}: {r.get('reason', '')} ({r.get('by', 'no name')})"
              for r in meta.reasons if isinstance(r, dict)]
     for text in said:

@@ -213,6 +213,7 @@ def _states() -> dict[str, tuple[Snapshot, View]]:
         "old reading": (replace(RUNNING, reading=_reading(17_996.0, 2.46e-5, 0.21)), plain),
         "cut not confirmed": (replace(RUNNING, stop=StopState.CUT_NOT_CONFIRMED, permission=Permission.RUNNING,
                                       next_acts=("use the emergency switching off",)), plain),
+        "wiring does not inhibit": (replace(IDLE, inhibits_without_mcu=False), plain),
         "programming only": (replace(TRIPPED, power_words=cautions.PROGRAMMED_TO_ZERO, inputs=INPUTS_OFF[:4]), plain),
         "negative bench": (replace(
             RUNNING, polarity=-1, bench="small", bench_title="Small bench 5 kV", volts_full=5e3, amps_full=20e-3,

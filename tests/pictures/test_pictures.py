@@ -47,6 +47,7 @@ LABELS: dict[str, tuple[str, ...]] = {
     "lost": ("LINK LOST", "LAST KNOWN: RUNNING: HOLD", "OUTPUT UNKNOWN - USE THE EMERGENCY SWITCHING OFF", "??"),
     "old reading": ("OLD READING, age 0.21 s", "▒"),
     "cut not confirmed": ("CUT NOT CONFIRMED: USE THE EMERGENCY SWITCHING OFF",),
+    "wiring does not inhibit": ("does not inhibit when the MCU is absent",),
     "programming only": ("PROGRAMMED TO ZERO, SUPPLY STILL POWERED",),
     "negative bench": ("negative (-)", "-3.998", "-4.000 kV"),
     "rehearsal": ("REHEARSAL",),

@@ -197,3 +197,9 @@ def test_a_disk_that_is_nearly_full_is_an_alert() -> None:
 def test_what_could_move_a_cursor_is_made_visible() -> None:
     """A specimen's name cannot write elsewhere on the screen."""
     assert wording.printable("S-1\x1b[2J\n") == "S-1?[2J?"
+
+
+def test_wiring_that_does_not_inhibit_without_the_mcu_is_said_on_every_screen() -> None:
+    """S4's exception stands among the alerts as long as the bench file states it."""
+    assert wording.alerts(replace(IDLE, inhibits_without_mcu=False), View()) == [
+        "the wiring does not inhibit when the MCU is absent or in reset"]

@@ -59,6 +59,15 @@ def test_cautions_name_what_the_bench_lacks_and_every_reason(tmp_path: Path) -> 
         assert words in text
 
 
+def test_cautions_name_a_supply_that_stays_powered_and_a_monitor_that_does_not(tmp_path: Path) -> None:
+    """Inhibit alone, wiring that does not inhibit without the MCU, a blind monitor: the page says each."""
+    bench = {"supply_stays_powered": True, "inhibits_without_mcu": False, "monitor_powered_after_cut": False}
+    text = " ".join(page_for(tmp_path, Case(hold_s=0.6, meta={"bench": bench, "program": program()})).split())
+    for words in ("inhibited, supply still powered", "does not inhibit when the MCU is absent or in reset",
+                  "monitor has no power: the discharge was not measured here"):
+        assert words in text
+
+
 def test_faults_of_the_folder_and_damages_are_said(tmp_path: Path) -> None:
     """A changed file and a torn record are on the page, not behind it."""
     run = load_run(made_run(tmp_path, Case(hold_s=0.6)))
