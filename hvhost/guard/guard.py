@@ -166,8 +166,9 @@ class Guard:
         view.before = ()
         view.collapse = None
         self._before = before
-        self._last_index = view.index + len(view.v) - 1
-        self._last_tick = view.tick(len(view.v) - 1)
+        behind_first = len(view.v) - 1
+        self._last_index = view.index + behind_first
+        self._last_tick = view.block.tick + behind_first * view.block.sample_ticks
 
     def _trimmed(self, view: View) -> tuple[View, ...]:
         kept, pairs = [view], len(view.v)

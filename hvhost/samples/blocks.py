@@ -119,12 +119,8 @@ class SampleBlock:
         known = self._extremes
         if known is None:
             known = (min(self.v), max(self.v), min(self.i), max(self.i))
-            self.know(known)
+            object.__setattr__(self, "_extremes", known)
         return known
-
-    def know(self, extremes: Extremes) -> None:
-        """Spare everyone the search: whoever made the block knows its extremes."""
-        object.__setattr__(self, "_extremes", extremes)
 
     @property
     def pairs(self) -> int:

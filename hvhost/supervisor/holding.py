@@ -64,23 +64,24 @@ class Holding:
         """Judge one block of a hold; returns whether the hold is done, and why it failed ('' where it has not)."""
         pairs = sum(self._pairs)
         volts, amps = sum(self._volts) / pairs, sum(self._amps) / pairs
-        now, index = measured.end_tick, measured.end_index
+        now = measured.tick + measured.ticks
         inside = abs(volts - step.v) <= step.tolerance * abs(step.v)
         if inside and self._begun is None:
             self._begun = now
-            self._notes.append(Note(what=What.CLOCK_STARTED, tick=now, index=index, step=step, volts=volts, amps=amps))
+            self._notes.append(Note(what=What.CLOCK_STARTED, tick=now, index=measured.end_index, step=step,
+                                    volts=volts, amps=amps))
         elif step.clock is ACCUMULATE:
             self.elapsed_s += measured.ticks / self._tick_hz if inside and self.inside else 0.0
         elif inside and self._begun is not None:
             self.elapsed_s = (now - self._begun) / self._tick_hz
         elif self._begun is not None:
             why = f"mean {volts:.6g} V outside {step.tolerance * 100:g} % of {step.v:g} V after {self.elapsed_s:.1f} s"
-            failed = self._broken(step, why, now, index)
+            failed = self._broken(step, why, now, measured.end_index)
             if failed:
                 return False, failed
         self.inside = inside
         if self._due:
-            self._take_readings(step, now, index, (volts, amps), origins)
+            self._take_readings(step, now, measured.end_index, (volts, amps), origins)
         return self.elapsed_s >= step.hold_s and not self._due, ""
 
     def interrupted(self, step: HoldStep, tick: int, index: int) -> str:

@@ -173,7 +173,7 @@ class Runner:
         """Take one judged block: clocks, readings, the end of rests and pauses."""
         step = self.step
         self.holding.observe(measured, step)
-        self.tick = measured.end_tick
+        self.tick = measured.tick + measured.ticks
         if self.doing in BEFORE_OR_AFTER:
             return
         if isinstance(step, HoldStep):
@@ -272,18 +272,18 @@ class Runner:
                 self._next_step(tick, index)
 
     def _hold(self, step: HoldStep, measured: Measured) -> None:
-        now, index = measured.end_tick, measured.end_index
+        now = self.tick
         if self.doing is HOLDING:
             done, failed = self.holding.take(step, measured, self._origins)
             if failed:
-                self.fail(failed, index)
+                self.fail(failed, measured.end_index)
                 return
             if done:
-                self._next_step(now, index)
+                self._next_step(now, measured.end_index)
                 return
         if now - self._step_begun > round(step.at_most_s * self.tick_hz):  # pauses and retreats count
             self.fail(f"{step.place}: {step.name}: not held for {step.hold_s:g} s within at_most "
-                      f"{step.at_most_s:g} s (clock at {self.elapsed_s:.1f} s)", index)
+                      f"{step.at_most_s:g} s (clock at {self.elapsed_s:.1f} s)", measured.end_index)
 
     def _rest(self, step: RestStep, measured: Measured) -> None:
         now = measured.end_tick

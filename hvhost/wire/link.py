@@ -273,9 +273,9 @@ class Link:
 
         False where nothing is sent: not greeted, a cut not yet confirmed, or sooner than lease/8 after the last one.
         """
-        if self.state is not GREETED or self._stops.cutting or self._outbox.rest:
-            return False
         if self._renewed_s is not None and now_s - self._renewed_s < self.lease_s / RENEWALS_PER_LEASE:
+            return False
+        if self.state is not GREETED or self._stops.cutting or self._outbox.rest:
             return False
         self._renewed_s = now_s
         self._outbox.renewal = seal(renewal(self.session, index % WRAP))
@@ -373,12 +373,18 @@ class Link:
         """Return all that is due now, stops first; what the port does not take comes back through `unsent`."""
         if now_s - self._last_s > self.lease_s:
             self._notices = self._begin(now_s)
-        if self._outbox.empty and self._requests.idle and not self._stops.waiting:
+        outbox, requests = self._outbox, self._requests
+        if not (outbox.renewal or outbox.rest or requests.out or requests.waiting) and self._nothing_else:
             return b""
         out, more = self._outbox.take(self._stops.due(now_s))
         if more and self.state is not LinkState.ENDED:
             out += self._requests.due(now_s)
         return out
+
+    @property
+    def _nothing_else(self) -> bool:
+        """No stop waits, and no torn line asks for an LF."""
+        return self._outbox.empty and not self._stops.waiting
 
     def unsent(self, rest: bytes) -> None:
         """Take back what the port did not accept; it leaves before anything new, but never before a stop."""
