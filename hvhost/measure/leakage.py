@@ -83,13 +83,15 @@ def _reading(run: RunData, span: StepSpan, spans: tuple[StepSpan, ...], at_s: fl
     origin = str(span.step.get("origin", HOLD_START))
     window_s = span.number_of("window_s", 1.0)
     start = _origin_row(span, spans, origin)
-    row = run.rows
+    row, reached = run.rows, False
+    blocks = 2 * int(run.head["pairs"].max()) if len(run.head) else 0
     if start is not None and start < run.rows:
         tick = int(run.tick(start, start + 1)[0]) + round(at_s * run.meta.tick_hz)
         row = run.row_of_tick(tick)
+        # a record that ends earlier has no row at that tick, and its last one stands for none
+        reached = tick <= int(run.tick(run.rows - 1)[0]) + blocks * run.meta.sample_ticks
     first = max(span.begin, row - window_rows(run, window_s))
-    blocks = 2 * int(run.head["pairs"].max()) if len(run.head) else 0
-    taken = start is not None and row <= span.end + blocks and first < min(row, span.end)
+    taken = reached and row <= span.end + blocks and first < min(row, span.end)
     if not taken or not run.usable(first, row).any():
         return Reading(number=span.number, hold=span.name, at_s=at_s, origin=origin, taken=False, row=row,
                        window_s=window_s)

@@ -5,9 +5,13 @@ from pathlib import Path
 import pytest
 
 from hvhost.measure.leakage import Reading
+from hvhost.measure.result import evaluate
 from hvhost.measure.uncertainty import Value
+from hvhost.record.blockfile import read_blocks
+from hvhost.record.data import load_run
+from hvhost.record.entries import BlockEntry, Entry
 from tests.measure.making import result_of
-from tests.record.making import OWN_F, Case
+from tests.record.making import OWN_F, Case, made_run
 
 
 def reading(amps: Value, volts: Value | None = None) -> Reading:
@@ -56,4 +60,22 @@ def test_the_bench_s_own_draw_is_taken_off_with_its_uncertainty(tmp_path: Path) 
 def test_a_reading_that_was_not_reached_says_so(tmp_path: Path) -> None:
     """A breakdown at 3 s leaves the reading at 4 s untaken."""
     two, four = result_of(tmp_path, Case(break_at_s=3.0)).readings
+    assert (two.taken, four.taken, four.amps) == (True, False, None)
+
+
+@pytest.mark.parametrize("before", [1, 500, 1500])
+def test_a_record_that_ends_before_the_reading_time_has_no_reading(tmp_path: Path, before: int) -> None:
+    """The board died in the hold: what the record's last samples say is no reading of a later time."""
+    folder = made_run(tmp_path)
+    due = evaluate(load_run(folder)).readings[1].row
+    rows, cut = 0, 0
+    for entry in read_blocks(folder.blocks):
+        assert isinstance(entry, Entry)
+        if isinstance(entry.content, BlockEntry):
+            rows += entry.content.block.pairs
+            if rows > due - 65 - before:
+                cut = entry.offset
+                break
+    folder.blocks.write_bytes(folder.blocks.read_bytes()[:cut])
+    two, four = evaluate(load_run(folder)).readings
     assert (two.taken, four.taken, four.amps) == (True, False, None)
