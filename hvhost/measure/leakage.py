@@ -89,7 +89,7 @@ def _reading(run: RunData, span: StepSpan, spans: tuple[StepSpan, ...], at_s: fl
         tick = int(run.tick(start, start + 1)[0]) + round(at_s * run.meta.tick_hz)
         row = run.row_of_tick(tick)
         # a record that ends earlier has no row at that tick, and its last one stands for none
-        reached = tick <= int(run.tick(run.rows - 1)[0]) + blocks * run.meta.sample_ticks
+        reached = span.end > 0 and tick <= int(run.tick(span.end - 1, span.end)[0]) + blocks * run.meta.sample_ticks
     first = max(span.begin, row - window_rows(run, window_s))
     taken = reached and row <= span.end + blocks and first < min(row, span.end)
     if not taken or not run.usable(first, row).any():
