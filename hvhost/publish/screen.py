@@ -30,6 +30,7 @@ from hvhost.words.errors import CannotConnect
 
 RATE_HZ = 10.0
 REDRAW_S = 0.2  # countdowns and ages move without a new snapshot
+SWITCH_S = 0.0005  # drawing holds the interpreter; a key that stops must not wait for a picture
 FIRST_S = 5.0  # a daemon that runs publishes several times a second
 GONE = "DAEMON GONE: output unknown - use the emergency switching off"
 
@@ -130,6 +131,7 @@ def show_screen(path: str, until: Until = never, interrupt_stops: bool = False, 
     """Draw until a key leaves or ``until`` says so; raises CannotConnect where there is no daemon at the start."""
     look = look or Look()
     follower, stopper = Follower(path, RATE_HZ), Stopper(path)
+    sys.setswitchinterval(SWITCH_S)
     follower.open(time.monotonic())
     _first(follower)
     stopper.prepare()

@@ -14,6 +14,7 @@ Measure = Callable[[Setting], list[Line]]
 MEASURES: dict[str, tuple[str, ...]] = {
     "B1": ("path:measure",),
     "B2": ("trip:measure",),
+    "B3": ("stops:measure",),
     "B4": ("lasting:measure",),
     "B5": ("lasting:measure",),
     "B6": ("standing:measure_memory",),

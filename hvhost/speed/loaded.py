@@ -20,7 +20,7 @@ from hvhost.words.errors import CannotConnect
 
 WATCHERS, RATE_HZ = 10, 10.0
 STATION = "speed"
-BROKER_CONFIG = "listener {port} 127.0.0.1\nallow_anonymous true\npersistence false\nlog_type none\n"
+BROKER_CONFIG = "listener {port} 127.0.0.1\nallow_anonymous true\npersistence false\nlog_type none\nset_tcp_nodelay true\n"
 MQTT = """mqtt:
   host: 127.0.0.1
   port: {port}
