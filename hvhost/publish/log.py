@@ -71,9 +71,6 @@ class Log:
         if len(lines) >= self._lines_max:
             lines.popleft()
             self._crowded_out += 1
-        elif missing := self.dropped - self._told:
-            self._told += missing
-            lines.append(self._line("attention", f"{missing} lines of the log were dropped: nobody read them", {}))
         lines.append(self._line(level, text, fields))
         self._idle.clear()
         if self._thread is None:
@@ -111,9 +108,17 @@ class Log:
                     line = self._lines.popleft()
                 except IndexError:  # the other side dropped it meanwhile
                     break
+                self._own_up()
                 if not self._written(line):
                     self._unwritten += 1
             self._idle.set()
+
+    def _own_up(self) -> None:
+        """Say before the next line how many are missing; not through the queue, which could drop the saying too."""
+        missing = self.dropped - self._told
+        if missing and self._written(self._line(
+                "attention", f"{missing} lines of the log were dropped: nobody read them", {})):
+            self._told += missing
 
     def _written(self, line: bytes) -> bool:
         """Write a whole line, waiting for the reader as long as it takes; False where there is no reader any more."""

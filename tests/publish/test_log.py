@@ -68,12 +68,13 @@ def test_a_reader_who_never_reads_holds_nobody() -> None:
     assert len(log._lines) <= 51
     assert log.dropped > 0
     log.close(0.0)
-    before = log.dropped
-    seen = pipe.lines(3000 - before)
     log("after")
-    text = "\n".join([*seen, *pipe.lines(2)])
-    assert f"{before} lines of the log were dropped" in text
-    assert text.endswith("hvhost: after")
+    seen: list[str] = []
+    while not seen or not seen[-1].endswith("after"):
+        seen += pipe.lines(1)
+    told = [int(line.split()[1]) for line in seen if "lines of the log were dropped" in line]
+    assert sum(told) == log.dropped
+    assert len(seen) - len(told) + log.dropped == 3001
     pipe.close()
 
 
