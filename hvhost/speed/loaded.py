@@ -20,7 +20,9 @@ from hvhost.words.errors import CannotConnect
 
 WATCHERS, RATE_HZ = 10, 10.0
 STATION = "speed"
-BROKER_CONFIG = "listener {port} 127.0.0.1\nallow_anonymous true\npersistence false\nlog_type none\nset_tcp_nodelay true\n"
+# a broker that waits with a small packet for the acknowledgement of the one before delays a stop by tens of ms
+BROKER_CONFIG = ("listener {port} 127.0.0.1\nallow_anonymous true\npersistence false\nlog_type none\n"
+                 "set_tcp_nodelay true\n")
 MQTT = """mqtt:
   host: 127.0.0.1
   port: {port}
