@@ -1,6 +1,6 @@
 """Clients that watch: ``python -m hvhost.speed.watchers SOCKET COUNT RATE`` subscribes so many times and reads.
 
-One more subscribes and never reads again, as a screen does whose terminal was stopped.
+One more subscribes and never reads again, as a screen does whose terminal was stopped; thrown out, it comes again.
 """
 
 import json
@@ -9,6 +9,7 @@ import socket
 import sys
 
 READ_MAX = 1 << 20
+LOOK_S = 1.0
 
 
 def subscribed(path: str, rate_hz: float) -> socket.socket:
@@ -26,10 +27,20 @@ def main(path: str, count: int, rate_hz: float) -> None:
     lines = [subscribed(path, rate_hz) for _ in range(count)]
     print("ready", flush=True)
     while lines:
-        for line in select.select(lines, [], [])[0]:
+        for line in select.select(lines, [], [], LOOK_S)[0]:
             if not line.recv(READ_MAX):
                 lines.remove(line)
+        if thrown_out(stalled):
+            stalled.close()
+            stalled = subscribed(path, rate_hz)
     stalled.close()
+
+
+def thrown_out(line: socket.socket) -> bool:
+    """Whether the other end is gone, told without reading anything."""
+    look = select.poll()
+    look.register(line, 0)
+    return any(event & select.POLLHUP for _, event in look.poll(0))
 
 
 if __name__ == "__main__":
