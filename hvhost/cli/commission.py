@@ -19,7 +19,7 @@ from hvhost.supervisor.core import Core
 from hvhost.supervisor.states import LinkState
 from hvhost.wire.settings import KEYS, SETTINGS, Settings
 from hvhost.wire.vocabulary import Inputs
-from hvhost.words.errors import CannotConnect, CommandRefused
+from hvhost.words.errors import CannotConnect, CommandRefused, UsageFault
 
 ABOUT = """Compares the MCU's settings with the bench file's, shows both, and with your consent writes them into its
 EEPROM.  The interlock must be open; a latch does not hinder.  Who and when is kept in the runs folder
@@ -100,7 +100,12 @@ async def _commission(core: Core, daemon: Daemon, bench: Bench, root: Path, opti
 
 
 def _consent() -> bool:
-    return input("write the bench file's values into the MCU? (yes/no) ").strip() == "yes"
+    try:
+        return input("write the bench file's values into the MCU? (yes/no) ").strip() == "yes"
+    except EOFError:
+        print()
+        raise UsageFault("an answer", "the end of the input", "commission", "answer from a terminal, or give --yes"
+                         ) from None
 
 
 async def _reply(core: Core, number: int) -> str:

@@ -10,6 +10,7 @@ from pathlib import Path
 import hvhost
 from hvhost.cli import exits
 from hvhost.cli.live import clear_boot_latch, press_when_asked
+from hvhost.cli.outfile import open_output
 from hvhost.cli.rig import Rig
 from hvhost.publish.snapshot import Snapshot
 from hvhost.words.errors import FileFault
@@ -47,18 +48,20 @@ def run(argv: list[str]) -> int:
     if check([str(bench), str(plan), str(sheet)]):
         return exits.REFUSED
     print(f"checked: {bench.name}, {plan.name}, {sheet.name}: nothing to remark", flush=True)
+    if options.truth:
+        open_output(Path(options.truth)).close()
     runs = Path(options.runs or "runs").absolute()
     with Rig(bench, profile="demo", seed=options.seed, runs=runs) as rig:
         clear_boot_latch(rig)
-        ended = _show(rig, plan, sheet, plain=options.plain or not sys.stdout.isatty())
+        ended, code = _show(rig, plan, sheet, plain=options.plain or not sys.stdout.isatty())
         if options.truth:
             Path(options.truth).write_bytes(rig.truth.read_bytes())
         truth = rig.truth.read_text(encoding="ascii").splitlines()
-    return _tell(ended, truth)
+    return _tell(ended, code, truth)
 
 
-def _show(rig: Rig, plan: Path, sheet: Path, *, plain: bool) -> str:
-    """Run the plan in a child, press when asked, show the bench meanwhile; returns the child's JSON line."""
+def _show(rig: Rig, plan: Path, sheet: Path, *, plain: bool) -> tuple[str, int]:
+    """Run the plan in a child, press when asked, show the bench meanwhile; returns its JSON line and exit code."""
     child = subprocess.Popen(
         [sys.executable, "-m", "hvhost", "run", str(plan), "--sheet", str(sheet), "--json", "--reason", "demonstration",
          "--repeat-of", "demonstration", "--socket", rig.socket, "--as", "demonstration"],
@@ -87,14 +90,14 @@ def _show(rig: Rig, plan: Path, sheet: Path, *, plain: bool) -> str:
             child.wait()
     if err.strip():
         print(err.strip(), file=sys.stderr)
-    return out.strip()
+    return out.strip(), child.returncode
 
 
-def _tell(ended: str, truth: list[str]) -> int:
+def _tell(ended: str, code: int, truth: list[str]) -> int:
     """Print cause, voltage, time to the cut and the folder, beside what the plant says really happened."""
     if not ended:
         print("hvhost demo: the run did not begin", file=sys.stderr)
-        return exits.INTERRUPTED
+        return code if code > 0 else exits.INTERRUPTED
     status = json.loads(ended.splitlines()[-1])
     result = json.loads((Path(status["folder"]) / "result.json").read_text(encoding="utf-8"))
     print(f"run {status['run']}: {status['outcome']}: {status['why']}")

@@ -10,6 +10,7 @@ from pathlib import Path
 from hvhost.bench.file import load_bench
 from hvhost.bench.model import Bench
 from hvhost.cli import exits
+from hvhost.cli.outfile import open_output
 from hvhost.cli.run import request_of
 from hvhost.words.errors import UsageFault
 
@@ -73,7 +74,7 @@ def _fast(bench: Bench, options: argparse.Namespace, seed: int, runs: Path) -> i
         raise UsageFault(f"one of {', '.join(PROFILES)}", repr(profile), "--profile")
     plant = changed(plant_of(bench, PROFILES[profile]()), options.changes)
     say = (lambda text: None) if options.quiet or options.json else (lambda text: print(text, flush=True))
-    file = open(options.truth, "w", encoding="ascii") if options.truth else None  # noqa: SIM115
+    file = open_output(Path(options.truth)) if options.truth else None
     try:
         rehearsal = FastRehearsal(bench, plant, seed=seed, runs=runs, day=day, faults=options.faults, say=say,
                                   truth=TruthLog(file.write, tick_hz=10_000) if file else None)

@@ -8,6 +8,7 @@ from pathlib import Path
 from hvhost.cli import exits
 from hvhost.record.catalogue import RunSummary, list_runs
 from hvhost.record.where import COLUMNS, where
+from hvhost.words.errors import CommandRefused
 
 DEFAULT_ROOT = "runs"
 ABOUT = """Lists all runs, oldest first.
@@ -19,8 +20,11 @@ A date is midnight UTC.  Columns: """ + ", ".join(COLUMNS) + "."
 
 
 def root_of(option: str) -> Path:
-    """The folder of the runs."""
-    return Path(option or DEFAULT_ROOT).expanduser()
+    """The folder of the runs; raises CommandRefused where one was named that is none."""
+    root = Path(option or DEFAULT_ROOT).expanduser()
+    if option and not root.is_dir():
+        raise CommandRefused("a folder of runs", "a file" if root.exists() else "none", str(root), "see --runs")
+    return root
 
 
 def run(argv: list[str]) -> int:

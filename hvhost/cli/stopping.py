@@ -29,7 +29,7 @@ def stop_all(verb: str, option: str, as_json: bool) -> int:
     try:
         paths = chosen_sockets(option)
     except CannotConnect as fault:
-        return _tell(verb, "", {"error": str(fault)}, str(fault), exits.CANNOT_CONNECT, as_json)
+        return _tell(verb, "", {"error": str(fault)}, _advised(verb, fault), exits.CANNOT_CONNECT, as_json)
     return max(_stop_one(verb, path, as_json) for path in paths)
 
 
@@ -39,12 +39,15 @@ def _stop_one(verb: str, path: str, as_json: bool) -> int:
             answer = bench.call(verb)
             stop = _confirmation(bench) if verb == "cut" else ""
     except HvhostError as fault:
-        advice = f"{fault}\n{NOT_CONFIRMED if verb == 'cut' else NOT_LOWERED}"
-        return _tell(verb, path, {"error": str(fault)}, advice, fault.exit_code, as_json)
+        return _tell(verb, path, {"error": str(fault)}, _advised(verb, fault), fault.exit_code, as_json)
     text = answer.get("text", "") if isinstance(answer, dict) else str(answer or "")
     words = "; ".join(part for part in (text or f"{verb} taken", stop) if part)
     code = exits.PASSED if verb == "lower" or stop == CONFIRMED else exits.CANNOT_CONNECT
     return _tell(verb, path, {"answer": answer, "stop": stop}, words, code, as_json)
+
+
+def _advised(verb: str, fault: HvhostError) -> str:
+    return f"{fault}\n{NOT_CONFIRMED if verb == 'cut' else NOT_LOWERED}"
 
 
 def _confirmation(bench: Client) -> str:

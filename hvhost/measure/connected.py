@@ -122,8 +122,13 @@ def _current(run: RunData, spans: tuple[StepSpan, ...], window: tuple[float, flo
     return _judged(amps, window, 1e6, "µA", f"current in the hold {span.name!r}", own_conductance(run) is not None)
 
 
+def _two_figures(value: float) -> str:
+    """An uncertainty, two figures without an exponent where it is one of everyday's size."""
+    return f"{float(f'{value:.2g}'):.4g}"
+
+
 def _judged(value: Value, window: tuple[float, float], factor: float, unit: str, what: str, own_known: bool) -> Proof:
-    shown = f"{what} {value.value * factor:.4g} {unit} ± {value.expanded * factor:.2g} {unit}"
+    shown = f"{what} {value.value * factor:.4g} {unit} ± {_two_figures(value.expanded * factor)} {unit}"
     limits = f"the declared {window[0] * factor:.4g} to {window[1] * factor:.4g} {unit}"
     if not own_known:
         return Proof(seen=False, text=f"no specimen seen: {shown}, but the bench's own draw is not known")

@@ -151,7 +151,8 @@ class Composer:
             polarity=bench.polarity, rehearsal=self.rehearsal, port=self.port,
             link=LinkState(core.state.link.value), link_text=core.link_text, permission=permission, phase=phase,
             latched=latched_words(core), voltage=self._voltage(), voltage_text=voltage_text(core),
-            power_words=power_words(core), inhibits_without_mcu=bench.inhibits_when_mcu_absent, stop=StopState(cut_words(core, now_s)),
+            power_words=power_words(core), inhibits_without_mcu=bench.inhibits_when_mcu_absent,
+            stop=StopState(cut_words(core, now_s)),
             set_volts=set_volts,
             set_amps=bench.current.program.value(sample.i_word) if sample else None, reading=reading,
             span=self._span.take() if outlets else self._span.so_far,  # a picture for no outlet takes nothing from them
@@ -351,6 +352,8 @@ def next_acts(core: Core) -> tuple[str, ...]:
     elif state.permission in st.LIVE:
         acts += [] if state.permission is st.Permission.LOWERING else ["lower"]
         acts.append("cut")
+    elif core.greeting is not None and core.greeting.settings is None:
+        acts.append("hvhost commission, with the interlock open")  # without settings the MCU refuses a reset too
     elif state.latched:
         acts.append("reset by naming the causes: " + ", ".join(latched_words(core)))
     elif run is not None and run.stage is Stage.PREPARED:

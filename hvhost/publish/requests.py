@@ -150,7 +150,8 @@ class Requests:
         hindered = [o for o in arming.obstacles(core) if o.startswith(("link", "permission", "what the MCU"))]
         if hindered or (core.run is not None and core.run.stage is not Stage.CLOSED) or station.recording is not None:
             raise CommandRefused("an idle, greeted bench with no open run", "; ".join(hindered) or "a run is open",
-                                 "run", "wait for its end, or cancel it")
+                                 "run", "'hvhost status' says what hinders it" if hindered else
+                                 "wait for its end, or cancel it")
         utc_ns, now_s = station.clock.utc_ns(), station.clock.now_s()
         operator = sheet.operator or str(params.get("operator", "")) or who
         spec = RunSpec(run_id=self._run_id(utc_ns), kind=kind, plan=title, specimen=sheet.specimen,

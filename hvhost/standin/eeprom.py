@@ -13,7 +13,7 @@ from typing import Protocol
 from zlib import crc32
 
 from hvhost.wire.settings import SETTINGS, Settings
-from hvhost.words.errors import WireFault
+from hvhost.words.errors import UsageFault, WireFault
 
 BLANK = 0xFF  # what an erased cell reads
 U32 = 0xFFFFFFFF
@@ -67,8 +67,12 @@ class FileStore:
     def save(self, cells: bytes) -> None:
         """Write beside, then rename: a kill leaves the old or the new cells."""
         beside = self._path.with_suffix(self._path.suffix + ".new")
-        beside.write_bytes(cells)
-        os.replace(beside, self._path)
+        try:
+            beside.write_bytes(cells)
+            os.replace(beside, self._path)
+        except OSError as refused:
+            raise UsageFault(f"cannot write it: {refused.strerror}", where=str(self._path),
+                             remedy="name another file") from None
 
 
 class Eeprom:

@@ -22,6 +22,7 @@ from hvhost.words.errors import CommandRefused
 if TYPE_CHECKING:
     from hvhost.supervisor.core import Core
 
+BLANK = "settings blank or damaged: 'hvhost commission BENCH' writes them, with the interlock open"
 RELINK_S = 0.5  # pause before a new session is tried
 
 
@@ -72,7 +73,7 @@ def adopt(core: "Core", greeting: Greeting, now_s: float) -> None:
     agreed = greeting.settings is not None and not findings and not strange
     core.state = replace(core.state, link=LinkState.GREETED if agreed else LinkState.OBSERVE)
     core.link_text = (f"greeted {info.firmware}, boot {info.boot}" if agreed else
-                      "observe only: " + (strange or ("settings blank or damaged" if greeting.settings is None
+                      "observe only: " + (strange or (BLANK if greeting.settings is None
                                                       else "; ".join(f.text for f in findings))))
     core.zeros(settings["vzero"], settings["izero"])
     core.block_span_s = info.block_pairs * info.sample_ticks / info.tick_hz

@@ -30,6 +30,8 @@ def read_text(path: Path) -> str:
             data = file.read(LARGEST * 4 + 1)
     except OSError as error:
         raise _unreadable(path, "a readable file", error.strerror or str(error)) from error
+    if len(data) > LARGEST * 4:
+        raise _unreadable(path, f"at most {LARGEST // 1024} KiB", f"more than {LARGEST * 4 // 1024} KiB")
     try:
         return data.decode("utf-8")
     except UnicodeDecodeError as error:

@@ -51,3 +51,30 @@ def test_every_fault_of_every_file(tmp_path: Path, capsys: pytest.CaptureFixture
     assert by_file["o.yaml"]
     assert check.run(words) == exits.REFUSED
     assert "Traceback" not in capsys.readouterr().err
+
+
+def test_a_calibration_that_has_run_out_is_told(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """The bench file alone and the three together: a reason will be needed, nothing is refused."""
+    bench = tmp_path / "b.yaml"
+    bench.write_text((CONFIGS / "demo.bench.yaml").read_text(encoding="utf-8").replace("2099-12-31", "2020-01-01"),
+                     encoding="utf-8")
+    for more in ([], [str(CONFIGS / "demo.plan.yaml"), str(CONFIGS / "demo.sheet.yaml")]):
+        assert check.run([str(bench), *more]) == exits.PASSED
+        told = capsys.readouterr().out.splitlines()
+        assert len(told) == 1
+        assert "reason needed: calibration.valid_until" in told[0]
+        assert "2020-01-01" in told[0]
+
+
+def test_a_file_in_another_encoding_says_so(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """UTF-16 is no file of an unknown kind: save it as UTF-8."""
+    bench = tmp_path / "b.yaml"
+    bench.write_bytes((CONFIGS / "demo.bench.yaml").read_text(encoding="utf-8").encode("utf-16"))
+    assert check.run([str(bench)]) == exits.REFUSED
+    assert "expected text in UTF-8, found byte 0xFF; save the file as UTF-8" in capsys.readouterr().err
+
+
+def test_an_endless_file_is_refused_after_its_first_piece(capsys: pytest.CaptureFixture[str]) -> None:
+    """Reading is bounded, whatever the path leads to."""
+    assert check.run(["/dev/zero"]) == exits.REFUSED
+    assert "expected at most 256 KiB, found more than 1024 KiB" in capsys.readouterr().err

@@ -78,11 +78,13 @@ def test_a_refusal_keeps_its_words_and_code(tmp_path: Path, capsys: pytest.Captu
 def test_no_daemon_is_told_without_a_traceback(command: Callable[[list[str]], int], tmp_path: Path,
                                                capsys: pytest.CaptureFixture[str],
                                                monkeypatch: pytest.MonkeyPatch) -> None:
-    """A missing socket and an empty folder end in a sentence that points to the emergency switching off or serve."""
+    """A missing socket and an empty folder end in a sentence pointing to serve and to the emergency switching off."""
     monkeypatch.setenv("XDG_RUNTIME_DIR", str(tmp_path))
     monkeypatch.delenv("HVHOST_SOCKET", raising=False)
     assert command([]) == exits.CANNOT_CONNECT
-    assert "hvhost serve" in capsys.readouterr().err
+    error = capsys.readouterr().err
+    assert "hvhost serve" in error
+    assert "emergency switching off" in error
     assert command(["--socket", str(tmp_path / "none.sock")]) == exits.CANNOT_CONNECT
     assert "emergency switching off" in capsys.readouterr().err
 
