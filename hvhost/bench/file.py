@@ -14,6 +14,7 @@ from hvhost.bench.document import BenchFile
 from hvhost.bench.model import Bench
 from hvhost.words.errors import FileFault, WireFault
 from hvhost.words.findings import Finding, Grade, refused
+from hvhost.words.sniff import other_kind
 from hvhost.words.textfile import Reading, read_model, read_text
 
 
@@ -52,6 +53,8 @@ def check_text(name: str, text: str, today: date | None = None) -> tuple[Finding
 
 
 def _read(name: str, text: str, today: date | None) -> tuple[Bench | None, tuple[Finding, ...]]:
+    if other := other_kind(name, text, "bench"):
+        return None, other
     reading = read_model(BenchFile, name, text)
     findings = list(reading.findings)
     if reading.root.entries:

@@ -10,9 +10,9 @@ from hvhost.bench.file import check_bench
 from hvhost.cli import exits
 from hvhost.plan.language import check_plan
 from hvhost.plan.sheet import check_sheet
-from hvhost.plan.sniff import sniff_kind
 from hvhost.words.errors import FileFault
 from hvhost.words.findings import Finding, Grade
+from hvhost.words.sniff import sniff_kind
 from hvhost.words.textfile import read_text
 
 ABOUT = """Checks each file by itself and says every fault with its line.  Given one bench, one plan and one run

@@ -130,6 +130,6 @@ def _whole(path: Path, fill: Callable[[BinaryIO], None]) -> None:
         temporary.replace(path)
         sync_folder(path.parent)
     except OSError as error:
-        raise folder_fault(error, path) from None
+        raise folder_fault(error, path, "file") from None
     finally:
         temporary.unlink(missing_ok=True)

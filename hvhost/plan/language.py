@@ -29,6 +29,7 @@ from hvhost.words.errors import FileFault, QuantityFault
 from hvhost.words.findings import Finding, refused
 from hvhost.words.modelpaths import Absent, partial_of
 from hvhost.words.quantities import Dimension, parse_quantity
+from hvhost.words.sniff import other_kind
 from hvhost.words.textfile import read_model, read_text
 
 # What a parameter may measure: the dimensions that a plan's values have.
@@ -60,6 +61,8 @@ def plan_schema() -> dict[str, Any]:
 
 def read_plan(file: str, text: str) -> tuple[Plan | None, tuple[Finding, ...]]:
     """Return the plan (None where anything refuses) and every finding, in the order of their lines."""
+    if other := other_kind(file, text, "plan"):
+        return None, other
     reading = read_model(PlanBlock, file, text)
     build = Builder(file, reading.root)
     plan = _plan(build, reading.partial, text) if reading.root.entries else None

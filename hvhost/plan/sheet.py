@@ -16,6 +16,7 @@ from hvhost.plan.steps import Builder
 from hvhost.words.errors import FileFault
 from hvhost.words.findings import Finding, refused
 from hvhost.words.modelpaths import Absent
+from hvhost.words.sniff import other_kind
 from hvhost.words.textfile import read_model, read_text
 
 SIGNS = {"positive": 1, "negative": -1}
@@ -52,6 +53,8 @@ def sheet_schema() -> dict[str, Any]:
 
 def read_sheet(file: str, text: str) -> tuple[RunSheet | None, tuple[Finding, ...]]:
     """Return the sheet (None where anything refuses) and every finding, in the order of their lines."""
+    if other := other_kind(file, text, "sheet"):
+        return None, other
     reading = read_model(SheetBlock, file, text)
     build = Builder(file, reading.root)
     if reading.root.entries:

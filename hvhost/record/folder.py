@@ -112,17 +112,18 @@ def _clear(folder: Path) -> None:
         folder.rmdir()
 
 
-def folder_fault(error: OSError, path: Path) -> RecordFault:
-    """Say an operating-system error on a run folder as a sentence with its remedy."""
+def folder_fault(error: OSError, path: Path, what: str = "run folder") -> RecordFault:
+    """Say an operating-system error on a run folder (or ``what`` else) as a sentence with its remedy."""
+    place = "runs folder" if what == "run folder" else what
     remedies = {
-        errno.EACCES: "give yourself write permission or choose another runs folder",
-        errno.EPERM: "give yourself write permission or choose another runs folder",
-        errno.EROFS: "the disk is read-only: choose another runs folder",
-        errno.ENOSPC: "make room or choose another runs folder",
-        errno.EDQUOT: "make room or choose another runs folder",
-        errno.ENOTDIR: "a part of the path is a file: choose another runs folder",
+        errno.EACCES: f"give yourself write permission or choose another {place}",
+        errno.EPERM: f"give yourself write permission or choose another {place}",
+        errno.EROFS: f"the disk is read-only: choose another {place}",
+        errno.ENOSPC: f"make room or choose another {place}",
+        errno.EDQUOT: f"make room or choose another {place}",
+        errno.ENOTDIR: f"a part of the path is a file: choose another {place}",
     }
-    return RecordFault("a run folder that can be written", error.strerror or str(error), str(path),
+    return RecordFault(f"a {what} that can be written", error.strerror or str(error), str(path),
                        remedies.get(error.errno or 0, "check the path and the disk"))
 
 

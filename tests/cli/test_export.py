@@ -79,7 +79,7 @@ def test_a_place_that_cannot_be_written_is_a_sentence_and_leaves_nothing(
         tmp_path: Path, folder: RunFolder, capsys: pytest.CaptureFixture[str]) -> None:
     """No traceback, no half file, exit code 7; a wrong form is refused with 5 before anything is opened."""
     runs = str(folder.path.parent)
-    with pytest.raises(RecordFault, match="can be written"):
+    with pytest.raises(RecordFault, match="expected a file that can be written"):
         run(["0007", "--runs", runs, "--csv", str(tmp_path / "absent" / "x.csv")])
     assert main(["export", "0007", "--runs", runs, "--csv", str(tmp_path / "y.csv"), "--zone", "Mars"]) == 5
     assert "a time zone" in capsys.readouterr().err

@@ -24,6 +24,7 @@ def test_blank_settings_and_commissioning() -> None:
         wait(lambda: scene.snapshot().get("link") == "observe only", "the link")
         scene.take_seat()
         assert "blank" in refused_to_open(scene)
+        assert "hvhost commission" in scene.snapshot()["next_acts"][0]
         daemon.end()
 
         arguments = ("commission", str(scene.bench_path), "--port", scene.device, "--runs", str(scene.runs), "--yes",
@@ -33,6 +34,9 @@ def test_blank_settings_and_commissioning() -> None:
         assert "interlock" in closed.err
         assert not (scene.folder / "eeprom.bin").exists() or "blank" in closed.out
         scene.control("interlock open")
+        unanswered = scene.command(*(word for word in arguments if word != "--yes"))
+        assert unanswered.process.returncode == 2, unanswered.err
+        assert "give --yes" in unanswered.err
         done = scene.command(*arguments)
         assert done.process.returncode == 0, done.err
         assert "written and read back" in done.out

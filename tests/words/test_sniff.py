@@ -2,7 +2,7 @@
 
 import pytest
 
-from hvhost.plan.sniff import sniff_kind
+from hvhost.words.sniff import other_kind, sniff_kind
 from tests.plan.conftest import CONFIGS
 
 
@@ -23,3 +23,12 @@ def test_anything_else_is_unknown(text: str) -> None:
 def test_a_byte_order_mark_hides_nothing() -> None:
     """Some editors put one before the first key."""
     assert sniff_kind("\ufeffplan: x\n") == "plan"
+
+
+@pytest.mark.parametrize("wanted", ["bench", "plan", "sheet"])
+def test_a_file_of_another_kind_is_one_finding(wanted: str) -> None:
+    """Not forty missing keys: which kind was expected, which was found."""
+    for kind in ("bench", "plan", "sheet"):
+        told = other_kind("f.yaml", f"# a comment\n{kind}: x\n", wanted)
+        assert [(f.what, f.line) for f in told] == ([] if kind == wanted else [("file", 1)])
+    assert other_kind("f.yaml", "x: y\n", wanted) == ()
