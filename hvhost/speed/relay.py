@@ -20,6 +20,7 @@ from hvhost.speed.child import set_fifo
 
 STOPS = (b"\ncut ", b"\nlower ")
 READ_MAX = 65_536
+ALONE_S = 1.0
 RELAY_FIFO = 35  # it only moves bytes and looks at the clock
 
 
@@ -74,13 +75,16 @@ def main(board: str) -> None:
         print(side, os.ttyname(slave), flush=True)
     daemon = next(iter(masters))
     unread = bytearray()
-    while True:
-        ready, _, _ = select.select([to_board, *masters], [], [], None)
+    parent = os.getppid()
+    while os.getppid() == parent:  # whoever asked for the times is still there
+        ready, _, _ = select.select([to_board, *masters], [], [], ALONE_S)
         now_ns = time.monotonic_ns()
         for fd in ready:
             try:
                 data = os.read(fd, READ_MAX)
             except OSError:
+                return
+            if not data:  # the board is gone: a process that never waits must not stay
                 return
             if fd == to_board:
                 with contextlib.suppress(BlockingIOError):
