@@ -14,6 +14,7 @@ from math import hypot, sqrt
 
 import numpy as np
 
+from hvhost.measure.cameoff import came_off
 from hvhost.measure.leakage import OWN_U, current_over, own_conductance
 from hvhost.measure.timeline import StepSpan, program_of
 from hvhost.measure.uncertainty import Value, difference
@@ -100,6 +101,9 @@ def proof_of(run: RunData, spans: tuple[StepSpan, ...], ramp: RampResult | None)
         parts.append(_current(run, spans, tuple(declared["current_a"])))
     if not parts:
         return Proof(seen=False, text="no specimen seen: the run sheet declares no window for it")
+    lost = came_off(run, spans)
+    if lost:
+        parts.append(Proof(seen=False, text=f"perhaps no specimen to the end: {lost}"))
     return Proof(seen=all(p.seen for p in parts), text="; ".join(p.text for p in parts))
 
 
