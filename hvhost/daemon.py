@@ -34,6 +34,7 @@ from hvhost.publish.notify import Notifier
 from hvhost.publish.outlet import Host, Outlet, Publisher
 from hvhost.publish.places import socket_path
 from hvhost.publish.readings import ReadingsFeed, figures_of
+from hvhost.publish.snapshot import Snapshot
 from hvhost.publish.station import CloseJob, Station, end_recording
 from hvhost.record.catalogue import unclosed
 from hvhost.record.folder import RunFolder
@@ -78,7 +79,7 @@ class Daemon:
         self.station.composer.listeners.append(self.readings.take)
         self.server = LocalServer(socket_path(bench.name, socket), gauge.timed("request", self._handle),
                                   peer_gone=self._peer_gone, note=self._client_note, readings=self.readings)
-        self._picture = gauge.timed("snapshot", self._publish_once)
+        self._picture = gauge.timed("snapshot", self._compose)
         self._read = gauge.timed("read", self._bytes)
         self._tick = gauge.timed("timer", self._time_passed)
         self.publisher.add(self.server)
@@ -247,13 +248,15 @@ class Daemon:
 
     async def _publish(self) -> None:
         while True:
-            self._picture()
+            snapshot = self._picture()
+            await asyncio.sleep(0)  # between two pieces of it the loop looks at the port
+            for _ in self.publisher.offers(snapshot):
+                await asyncio.sleep(0)
+            self.life.shown(snapshot)
             await asyncio.sleep(SNAPSHOT_S)
 
-    def _publish_once(self) -> None:
-        snapshot = self.station.snapshot(self.publisher.views())
-        self.publisher.publish_nowait(snapshot)
-        self.life.shown(snapshot)
+    def _compose(self) -> Snapshot:
+        return self.station.snapshot(self.publisher.views())
 
     def ask(self, method: str, params: dict[str, Any], who: str) -> dict[str, Any]:
         """Carry out one request of an outlet."""

@@ -32,6 +32,7 @@ Handle = Callable[[str, dict[str, Any], Peer], Any]
 # Changes that a watcher is told at once, whatever rate it asked for.
 URGENT = ("link", "permission", "latched", "voltage", "stop", "pause_s", "arm", "warning_s")
 RATE_MOST_HZ = 20.0
+TOLD_A_TURN = 8  # clients: half a millisecond; with fifty of them bytes from the port would wait for all
 TREND_EVERY_S = 1.0  # the one large field: a column of a wide plot stands for a second and more
 CLOSING_TURNS = 6  # turns of the loop in which an accepted transport opens, or an aborted one closes
 FIELDS = tuple(one.name for one in fields(Snapshot))
@@ -94,13 +95,18 @@ class LocalServer:
         await _turns()
 
     def offer_nowait(self, snapshot: Snapshot) -> None:
-        """Keep the snapshot and notify the subscribers that are due."""
+        """Keep the snapshot and notify the subscribers that are due, a few in each turn of the loop."""
         self._latest = snapshot
         if self.readings is not None:
             self._dropped += self.readings.spread()
-        for connection in tuple(self._connections.values()):
+        self._tell(snapshot, tuple(self._connections.values()))
+
+    def _tell(self, snapshot: Snapshot, connections: "tuple[_Connection, ...]") -> None:
+        for connection in connections[:TOLD_A_TURN]:
             connection.notify(snapshot, self._texts)
             connection.drain()
+        if rest := connections[TOLD_A_TURN:]:
+            asyncio.get_running_loop().call_soon(self._tell, snapshot, rest)
 
     def view(self) -> OutletView:
         """Return the notifications dropped, the faults met and the clients connected."""

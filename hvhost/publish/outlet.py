@@ -6,7 +6,7 @@ from the others and from the daemon; the protective path and the recorder never 
 """
 
 from collections import deque
-from collections.abc import Callable, Coroutine
+from collections.abc import Callable, Coroutine, Iterator
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -101,11 +101,17 @@ class Publisher:
 
     def publish_nowait(self, snapshot: Snapshot) -> None:
         """Offer the snapshot to every outlet, in order; never raises."""
-        for outlet in self._outlets:
+        for _ in self.offers(snapshot):
+            pass
+
+    def offers(self, snapshot: Snapshot) -> Iterator[str]:
+        """The same an outlet at a time: yields each one's name when it has been offered the snapshot."""
+        for outlet in tuple(self._outlets):
             try:
                 outlet.offer_nowait(snapshot)
             except Exception:
                 self._failed[outlet.name] = self._failed.get(outlet.name, 0) + 1
+            yield outlet.name
 
     def views(self) -> tuple[OutletView, ...]:
         """Return each outlet's losses, for the next snapshot."""
