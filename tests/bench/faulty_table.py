@@ -57,6 +57,11 @@ TABLE: dict[str, tuple[Row, ...]] = {
     "control-character.yaml": (
         (3, REFUSE, "text", "visible characters", "control character U+0007"),
     ),
+    "daemon.yaml": (
+        (130, REFUSE, "daemon.disk_floor", "a size such as '2 GB'", "'2 Gb'", "2 GB"),
+        (131, REFUSE, "daemon.disk_flor", "one of disk_floor", "'disk_flor'", "disk_floor"),
+        (132, REFUSE, "daemon.realtime", "one of disk_floor", "'realtime'"),
+    ),
     "decimal-comma-and-grouping.yaml": (
         (21, REFUSE, "cable.resistor", "a resistance such as '2.2 kΩ'", "'20,000 Ω'"),
         (113, REFUSE, "limits.overvoltage", "a voltage such as '25 kV'", "'24,8 kV'", "24.8 kV"),
