@@ -100,7 +100,7 @@ class Composer:
 
     def _fold(self) -> None:
         """Take the blocks that wait into trend and span: with each picture, not with each read."""
-        core, until_s = self.core, -math.inf
+        until_s = -math.inf
         v_low = v_high = i_low = i_high = 0
         before_s = 0.0
         for t_s, sample in self._waiting:
@@ -113,13 +113,34 @@ class Composer:
             else:
                 v_low, v_high = min(v_low, low), max(v_high, high)
                 i_low, i_high = min(i_low, least), max(i_high, most)
-            before_s, pairs = t_s, len(sample.v)
-            self._span.add(sample.index, pairs, gap=sample.gap, flagged=int(sample.flags) != 0,
-                           volts=(core.volts(low), core.volts(sum(sample.v) / pairs), core.volts(high)),
-                           amps=(core.amps(least), core.amps(sum(sample.i) / pairs), core.amps(most)))
+            before_s = t_s
         if until_s > -math.inf:
             self._draw(before_s, v_low, v_high, i_low, i_high)
+        self._span_of([sample for _, sample in self._waiting])
         self._waiting.clear()
+
+    def _span_of(self, samples: list[SampleBlock]) -> None:
+        """Add what came to the span, blocks that follow each other without a flag as one."""
+        row: list[SampleBlock] = []
+        after = -1
+        for sample in samples:
+            if row and (sample.index != after or sample.flags or sample.gap):
+                self._add_row(row)
+                row = []
+            row.append(sample)
+            after = -1 if sample.flags else sample.index + len(sample.v)
+        if row:
+            self._add_row(row)
+
+    def _add_row(self, row: list[SampleBlock]) -> None:
+        core, first = self.core, row[0]
+        pairs = sum([len(sample.v) for sample in row])
+        v_mean = sum([sum(sample.v) for sample in row]) / pairs
+        i_mean = sum([sum(sample.i) for sample in row]) / pairs
+        lows, highs, least, most = zip(*[sample.extremes for sample in row], strict=True)
+        self._span.add(first.index, pairs, gap=first.gap, flagged=int(first.flags) != 0,
+                       volts=(core.volts(min(lows)), core.volts(v_mean), core.volts(max(highs))),
+                       amps=(core.amps(min(least)), core.amps(i_mean), core.amps(max(most))))
 
     def _draw(self, t_s: float, v_low: int, v_high: int, i_low: int, i_high: int) -> None:
         """Add extreme codes over at most ``FOLD_S`` to both trends."""

@@ -5,6 +5,7 @@ and the lines that it sends must come again at the same samples; the first place
 """
 
 from collections.abc import Iterator, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -21,7 +22,6 @@ from hvhost.record.entries import (
     CommandEntry,
     Damage,
     Entry,
-    GarbledEntry,
     LineEntry,
     MetaEntry,
     NoteEntry,
@@ -126,23 +126,12 @@ def compare(core: Core, signs: str, memory: Memory, entries: Iterator[Entry | Da
     """Feed every input; keep the record's own verdicts and sent lines, and hold both against each other."""
     found = Replayed()
     expected: list[Told] = []
-    for entry in entries:
-        if isinstance(entry, Damage):
-            found.damage += 1
-            continue
-        content = entry.content
-        if isinstance(content, SentEntry):
-            expected += [("sent", line) for line in content.line.split(b"\n") if line]
-        elif isinstance(content, NoteEntry) and content.data.get("what") == "verdict":
-            expected.append(("verdict", tuple(content.data[key] for key in VERDICT_KEYS)))
-        elif isinstance(content, NoteEntry) and content.data.get("what") == "run closed":
-            found.interfering_recorded = dict(content.data.get("interfering", {}))
-        elif feed(core, content, signs, found):
-            found.inputs += 1
-            if not found.parted:
-                found.parted = _parting(memory.told, expected, found)
-            if found.parted:
-                break
+    for inputs in _reads(entries, expected, found):
+        feed(core, inputs[0], _lines(inputs, signs, found))
+        found.inputs += len(inputs)
+        found.parted = _parting(memory.told, expected, found)
+        if found.parted:
+            break
     if not found.parted:
         found.parted = _parting(memory.told, expected, found, at_end=True)
     found.verdicts = sum(kind == "verdict" for kind, _ in memory.told)
@@ -150,34 +139,74 @@ def compare(core: Core, signs: str, memory: Memory, entries: Iterator[Entry | Da
     return found
 
 
-def feed(core: Core, content: object, signs: str, found: Replayed) -> bool:
-    """Give one recorded input to the core; False where the entry is no input."""
-    if isinstance(content, BlockEntry):
-        found.blocks += 1
-        found.pairs += content.block.pairs
-        _drain(core, seal(encode_block(content.block, signs)), content.arrival_s)
-    elif isinstance(content, LineEntry):
-        _drain(core, seal(content.body), content.arrival_s)
-    elif isinstance(content, GarbledEntry):
-        return False
+Input = BlockEntry | LineEntry | TimerEntry | CommandEntry
+
+
+def _reads(entries: Iterator[Entry | Damage], expected: list[Told], found: Replayed) -> Iterator[list[Input]]:
+    """Yield the recorded inputs as the core was given them: the lines of one read together, anything else alone.
+
+    What the record says was judged and sent is put into ``expected`` on the way.
+    """
+    read: list[Input] = []
+    for entry in entries:
+        if isinstance(entry, Damage):
+            found.damage += 1
+            continue
+        content = entry.content
+        if isinstance(content, BlockEntry | LineEntry):
+            before = read[0] if read else None
+            if before is not None and isinstance(before, BlockEntry | LineEntry) \
+                    and before.arrival_s != content.arrival_s:
+                yield read
+                read = []
+            read.append(content)
+        elif isinstance(content, TimerEntry | CommandEntry):
+            if read:
+                yield read
+                read = []
+            yield [content]
+        elif isinstance(content, SentEntry):
+            expected += [("sent", line) for line in content.line.split(b"\n") if line]
+        elif isinstance(content, NoteEntry):
+            _noted(content, expected, found)
+    if read:
+        yield read
+
+
+def _noted(content: NoteEntry, expected: list[Told], found: Replayed) -> None:
+    what = content.data.get("what")
+    if what == "verdict":
+        expected.append(("verdict", tuple(content.data[key] for key in VERDICT_KEYS)))
+    elif what == "run closed":
+        found.interfering_recorded = dict(content.data.get("interfering", {}))
+
+
+def feed(core: Core, content: Input, lines: bytes) -> None:
+    """Give one input to the core: the lines of a read, a command, or the passing of time."""
+    if isinstance(content, BlockEntry | LineEntry):
+        for _ in core.receive(lines, content.arrival_s):
+            pass
     elif isinstance(content, TimerEntry):
         core.timer(content.t_s)
-    elif isinstance(content, CommandEntry):
+    else:
         data = content.data
         ticket = HOLDER if data.get("control", True) else ""
-        try:
+        with suppress(CommandRefused):
             core.command(content.t_s, str(data["name"]), {**data["args"], "ticket": ticket}, str(data["who"]))
-        except CommandRefused:
-            return True
-        core.take_output(content.t_s)
-    else:
-        return False
-    return True
+            core.take_output(content.t_s)
 
 
-def _drain(core: Core, line: bytes, now_s: float) -> None:
-    for _ in core.receive(line, now_s):
-        pass
+def _lines(read: list[Input], signs: str, found: Replayed) -> bytes:
+    """The lines of one read as they came over the wire."""
+    lines = b""
+    for content in read:
+        if isinstance(content, BlockEntry):
+            found.blocks += 1
+            found.pairs += content.block.pairs
+            lines += seal(encode_block(content.block, signs))
+        elif isinstance(content, LineEntry):
+            lines += seal(content.body)
+    return lines
 
 
 def _parting(told: list[Told], expected: list[Told], found: Replayed, *, at_end: bool = False) -> str:

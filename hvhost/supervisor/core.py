@@ -37,7 +37,7 @@ from hvhost.supervisor.states import (
     State,
 )
 from hvhost.supervisor.telling import Teller
-from hvhost.wire.events import BlockIn, LinkEvent
+from hvhost.wire.events import BlockIn, GarbledIn, LinkEvent
 from hvhost.wire.frames import Block
 from hvhost.wire.greeting import Greeting, McuInfo
 from hvhost.wire.link import Link
@@ -47,6 +47,7 @@ from hvhost.words.findings import Finding
 LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least this often
 ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
 FRESH_KEPT = 512  # judged blocks that nobody has looked at yet: more than one read can hold
+TOGETHER_MAX = 8  # blocks of one read that are followed as one: a hold's clock looks at least this often
 WRAP, HALF = 1 << 32, 1 << 31
 # members by names of this module: reading one through its class costs as much as a call, and here it is every block
 LOST, PAUSING = LinkState.LOST, int(McuState.PAUSING)
@@ -95,6 +96,7 @@ class Core(Teller):
         self.arcs_judged: deque[int] = deque(maxlen=ARCS_KEPT)  # sample indices, low 31 bits
         self.last_tick: int | None = None  # of the last block, as the wire counts
         self._t_s = 0.0  # ticks passed since the greeting, in seconds; runs on through wraps and runs
+        self._judged: list[SampleBlock] = []  # and not followed yet; empty between two reads
         self._v_gain = abs(bench.voltage.monitor.gain)
         self._i_gain = abs(bench.current.monitor.gain)
         self._v_zero = self._i_zero = 0.0
@@ -128,8 +130,12 @@ class Core(Teller):
         for event in link.receive(data, now_s):
             if type(event) is BlockIn:
                 yield from self._block(event.block, now_s)
+            elif type(event) is GarbledIn:
+                hearing.hear(self, event, now_s)
             else:
+                yield from self._catch_up(now_s)
                 yield from self._hear(event, now_s)
+        yield from self._catch_up(now_s)
 
     def timer(self, now_s: float) -> bytes:
         """Step by time alone; return what to write."""
@@ -230,11 +236,10 @@ class Core(Teller):
             self.journal.sent(now_s, data)
         if failed is not None:
             stopping.cut_for(self, HostRule.ASSERTION, now_s, f"the guard failed: {type(failed).__name__}: {failed}")
-        self._tell(verdicts, now_s)
-        self._follow(sample, now_s)
-        data = self.take_output(now_s)
-        if data:
-            yield data
+        self._judged.append(sample)
+        if verdicts or failed is not None or len(self._judged) >= TOGETHER_MAX:
+            self._tell(verdicts, now_s)
+            yield from self._catch_up(now_s)
 
     def _stop_by(self, verdicts: tuple[Verdict, ...], now_s: float) -> None:
         """Turn verdicts into stops on the wire, at once."""
@@ -274,11 +279,28 @@ class Core(Teller):
         if data:
             yield data
 
-    def _follow(self, sample: SampleBlock, now_s: float) -> None:
-        """Everything about a judged block that is not protective."""
+    def _catch_up(self, now_s: float) -> Iterator[bytes]:
+        """Follow the blocks that were judged and not followed yet; those that tell the same go together."""
+        judged = self._judged
+        if not judged:
+            return
+        self._judged = []
+        first = judged[0]
+        if len(judged) > 1 and all(_alike(first, sample) for sample in judged):
+            self._follow(judged, now_s)
+        else:
+            for sample in judged:
+                self._follow([sample], now_s)
+        data = self.take_output(now_s)
+        if data:
+            yield data
+
+    def _follow(self, judged: list[SampleBlock], now_s: float) -> None:
+        """Everything about judged blocks that is not protective; several are whole, alike and in a row."""
         if self.state.link is LOST:
             return  # the tail of a session that is over; nothing of it is shown or believed
-        self._measure(sample, now_s)
+        sample = judged[-1]
+        self._measure(judged, now_s)
         hearing.inputs_changed(self, sample.inputs, sample.tick, now_s)
         self.events.told(sample.event)
         if sample.event >= self.events.last and (sample.state, self.state.permission) not in STANDING:
@@ -294,20 +316,26 @@ class Core(Teller):
         self._voltage(now_s)
         self.settle(now_s)
 
-    def _measure(self, sample: SampleBlock, now_s: float) -> None:
-        """Take the block's figures and its time; time goes by the wire's ticks, through wraps."""
+    def _measure(self, judged: list[SampleBlock], now_s: float) -> None:
+        """Take the blocks' figures and their time; time goes by the wire's ticks, through wraps."""
+        sample, first = judged[-1], judged[0]
         tick = sample.raw.tick
         if self.last_tick is not None:
             self._t_s += ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
         self.last_tick = tick
         self.sample, self.block_s, self.sampled, self.silent = sample, now_s, True, False
-        self.fresh.append(sample)
-        v, i = sample.v, sample.i
-        pairs = len(v)
+        self.fresh.extend(judged)
+        pairs, v, i, top = 0, 0, 0, sample.extremes[1]
+        for block in judged:
+            pairs += len(block.v)
+            v += sum(block.v)
+            i += sum(block.i)
+            high = block.extremes[1]
+            top = high if high > top else top
         self.measured = Measured(
-            index=sample.index, tick=sample.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
-            volts=self._v_zero + self._v_gain * sum(v) / pairs, amps=self._i_zero + self._i_gain * sum(i) / pairs,
-            volts_max=self._v_zero + self._v_gain * sample.extremes[1])
+            index=first.index, tick=first.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
+            volts=self._v_zero + self._v_gain * v / pairs, amps=self._i_zero + self._i_gain * i / pairs,
+            volts_max=self._v_zero + self._v_gain * top)
 
     def _follow_run(self, run: ActiveRun, sample: SampleBlock, now_s: float) -> None:
         assert self.measured is not None
@@ -397,3 +425,10 @@ class Core(Teller):
         if self.last_tick is None:
             return self._t_s
         return self._t_s + ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
+
+
+def _alike(first: SampleBlock, sample: SampleBlock) -> bool:
+    """Whether a block tells nothing that the first one does not, and nothing is missing before it."""
+    a, b = first.raw, sample.raw
+    return (a.state == b.state and a.event == b.event and a.inputs == b.inputs and a.arc == b.arc
+            and a.latched == b.latched and not sample.flags and not first.flags)
