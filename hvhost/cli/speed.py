@@ -12,11 +12,11 @@ from pathlib import Path
 from hvhost.cli import exits
 from hvhost.cli.demo import examples
 
-ABOUT = """Measures the budgets on this machine: B1 path, B2 trip, B3 stops by every way in, B4 loop, B5
-processor, B6 memory, B7 guard, B8 record, B9 rehearsal, B11 start and cut, B14 restart.  Where a ratio can be had both sides are run in turn, by blocks, in one process, and
-medians are compared, so that other work on the machine weighs on both.  Nothing here is energised: MCU, supply and
-specimen are software.  B4, B5 and B6 watch a daemon for ten minutes (--minutes 60 judges them); with --quick everything
-is shorter, and the output says which figures that concerns.
+ABOUT = """Measures the budgets on this machine: B1 path, B2 trip, B3 stops by every way in, B4 loop, B5 processor,
+B6 memory, B7 guard, B8 record, B9 rehearsal, B11 start and cut, B14 restart.  Where a ratio can be had both sides are
+run in turn, by blocks, in one process, and medians are compared, so that other work on the machine weighs on both.
+Nothing here is energised: MCU, supply and specimen are software.  B4, B5 and B6 watch a daemon for ten minutes
+(--minutes 60 judges them); with --quick everything is shorter, and the output says which figures that concerns.
 The exit code is 0 when every bound holds, else 1."""
 MINUTES, QUICK_MINUTES = 10.0, 0.25
 QUICK_BLOCKS = 20

@@ -135,8 +135,8 @@ class Composer:
     def _add_row(self, row: list[SampleBlock]) -> None:
         core, first = self.core, row[0]
         pairs = sum([len(sample.v) for sample in row])
-        v_mean = sum([sum(sample.v) for sample in row]) / pairs
-        i_mean = sum([sum(sample.i) for sample in row]) / pairs
+        v_mean = sum([sample.sums[0] for sample in row]) / pairs
+        i_mean = sum([sample.sums[1] for sample in row]) / pairs
         lows, highs, least, most = zip(*[sample.extremes for sample in row], strict=True)
         self._span.add(first.index, pairs, gap=first.gap, flagged=int(first.flags) != 0,
                        volts=(core.volts(min(lows)), core.volts(v_mean), core.volts(max(highs))),

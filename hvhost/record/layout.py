@@ -97,7 +97,7 @@ class EntryPacker:
         codes = b.codes
         pairs = len(codes) >> 1
         try:
-            tail = self._codes[pairs](*codes)
+            tail = b.packed or self._codes[pairs](*codes)
             head = _BLOCK_HEAD.pack(MAGIC, 2, self._flags, self.mark, FIXED_SIZE + 4 * pairs, self.seq, arrival_s,
                                     b.index, b.tick, b.v_word, b.i_word, b.state, b.latched, b.inputs, b.missed,
                                     b.event, b.arc, pairs)
@@ -120,7 +120,7 @@ class EntryPacker:
 
 def block_text(arrival_s: float, block: Block) -> bytes:
     """Return a block as JSON: the form for numbers that no field holds."""
-    fields = {field.name: getattr(block, field.name) for field in dataclasses.fields(block)}
+    fields = {field.name: getattr(block, field.name) for field in dataclasses.fields(block) if field.init}
     return _TIME.pack(arrival_s) + json_bytes(fields)
 
 

@@ -256,9 +256,11 @@ class Recorder:
         if done:
             self._unsynced = True
             self._written += done
+        if done == len(data):
+            return True
         for end in accumulate(map(len, parts)):
             self._unwritten += end > done
-        return done == len(data)
+        return False
 
     def _sync(self) -> None:
         try:

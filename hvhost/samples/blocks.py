@@ -112,6 +112,16 @@ class SampleBlock:
     raw: Block
     sample_ticks: int
     _extremes: Extremes | None = field(default=None, init=False, compare=False, repr=False)
+    _sums: tuple[int, int] | None = field(default=None, init=False, compare=False, repr=False)
+
+    @property
+    def sums(self) -> tuple[int, int]:
+        """The sum of the voltage codes and of the current codes; added up once and then known."""
+        known = self._sums
+        if known is None:
+            known = (sum(self.v), sum(self.i))
+            object.__setattr__(self, "_sums", known)
+        return known
 
     @property
     def extremes(self) -> Extremes:

@@ -19,7 +19,7 @@ from hvhost.speed.scene import Given, Player
 from hvhost.speed.setting import Setting
 
 PIECE = 1000  # bytes
-POLL_S = 0.02  # waiting must cost next to nothing itself
+POLL_S = 0.06  # longer than the recorder waits: one look finds it done, and waiting costs next to nothing itself
 POUR_BLOCKS = 500  # sample blocks poured through the pseudo-terminal at a time: about 120 kB
 
 

@@ -227,8 +227,9 @@ class Core(Teller):
         except Exception as error:  # a guard that cannot judge must not keep the lease alive
             failed = error
             link.cut(HostRule.ASSERTION, now_s)
-        link.renew(sample.last_index & 0xFFFFFFFF, now_s)
-        data = link.take_output(now_s)
+        renewed = link.renew(sample.last_index & 0xFFFFFFFF, now_s)
+        # what else is due leaves when the read is followed: a block that neither stops nor renews asks for nothing
+        data = link.take_output(now_s) if renewed or verdicts or failed is not None else b""
         if data:
             yield data
         self.journal.block(now_s, block)
@@ -328,8 +329,9 @@ class Core(Teller):
         pairs, v, i, top = 0, 0, 0, sample.extremes[1]
         for block in judged:
             pairs += len(block.v)
-            v += sum(block.v)
-            i += sum(block.i)
+            v_sum, i_sum = block.sums
+            v += v_sum
+            i += i_sum
             high = block.extremes[1]
             top = high if high > top else top
         self.measured = Measured(

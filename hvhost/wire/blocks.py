@@ -8,6 +8,7 @@ import re
 import struct
 from binascii import Error as Base64Error
 from binascii import a2b_base64, b2a_base64
+from dataclasses import field
 from functools import lru_cache
 
 from hvhost.words.errors import WireFault
@@ -32,6 +33,8 @@ class Block:
     event: int  # number of the last event
     arc: int  # number of the last arc of this arm
     codes: tuple[int, ...]  # v0, i0, v1, i1, ...
+    # the codes as they came, little-endian 16-bit: a recorder need not pack them again; '' where they did not come so
+    packed: bytes = field(default=b"", init=False, compare=False, repr=False)
 
     @property
     def pairs(self) -> int:
@@ -97,7 +100,13 @@ def decode_block(body: bytes, signs: str) -> Block:
         fields = _status(status)
         index, tick = int(parts[1]), int(parts[2])
         if fields is not None and not (index | tick) >> 32:
-            return Block(index, tick, *fields[:8], unpack_codes(text, signs, fields[8]))
+            try:
+                packed = a2b_base64(text, strict_mode=True)
+                block = Block(index, tick, *fields[:8], _UNPACK[signs, fields[8]].unpack(packed))
+            except (Base64Error, struct.error, KeyError):
+                raise WireFault(f"base64 of {fields[8]} pairs", f"{len(text)} characters", "block") from None
+            block.packed = packed  # type: ignore[misc]
+            return block
     return _decode_any(body, signs)
 
 
