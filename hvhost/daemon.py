@@ -80,6 +80,7 @@ class Daemon:
         self.server = LocalServer(socket_path(bench.name, socket), gauge.timed("request", self._handle),
                                   peer_gone=self._peer_gone, note=self._client_note, readings=self.readings)
         self._picture = gauge.timed("snapshot", self._compose)
+        self._offer = gauge.timed("offer", lambda offers: next(offers, ""))
         self._read = gauge.timed("read", self._bytes)
         self._tick = gauge.timed("timer", self._time_passed)
         self.publisher.add(self.server)
@@ -250,7 +251,8 @@ class Daemon:
         while True:
             snapshot = self._picture()
             await asyncio.sleep(0)  # between two pieces of it the loop looks at the port
-            for _ in self.publisher.offers(snapshot):
+            offers = self.publisher.offers(snapshot)
+            while self._offer(offers):
                 await asyncio.sleep(0)
             self.life.shown(snapshot)
             await asyncio.sleep(SNAPSHOT_S)

@@ -248,7 +248,8 @@ class LoopView:
     ``longest_s`` and ``p999_s`` since it began, ``recent_s`` in about the last hour, ``run_s`` since the run was
     opened; ``own_s`` is the most of a lateness that this process itself can have caused; ``turn_s`` the longest turn
     and ``turn_own_s`` the one that took most processor time (``run_turn_own_s``: since the run was opened);
-    ``piece_s`` the longest single piece of work and ``piece`` its name; ``read_s`` the median of what one read costs,
+    ``piece_s`` the longest single piece of work and ``piece`` its name, ``run_piece_own_s`` and ``run_piece`` the one
+    that took most processor time since the run was opened; ``read_s`` the median of what one read costs,
     the protective path and all that follows it.
     """
 
@@ -260,6 +261,8 @@ class LoopView:
     turn_s: float = 0.0
     turn_own_s: float = 0.0
     run_turn_own_s: float = 0.0
+    run_piece: str = ""
+    run_piece_own_s: float = 0.0
     piece: str = ""
     piece_s: float = 0.0
     read_s: float = 0.0

@@ -8,7 +8,7 @@ Three figures, since one alone misleads:
 * *Own part of the lateness*: the processor time that this whole process used since the timer ran last, at most the
   lateness.  It bounds from above what we ourselves can have caused; the rest is the machine's.
 * *Turns and pieces*: wall and processor time of one turn of the loop (everything between two looks at the
-  descriptors), the longest of each by itself, and wall time of the named pieces of work in it, so that the longest
+  descriptors), the longest of each by itself, and both times of the named pieces of work in it, so that the longest
   single callback has a name.  Wall time holds what the machine did meanwhile; processor time is our own doing.
 
 A stall counts once: beats that fell into it are not made up for.  Percentiles come from counts in buckets a quarter
@@ -79,6 +79,7 @@ class StallGauge:
         self.own_s = 0.0  # the longest own part of a lateness
         self.turn_s = self.turn_processor_s = 0.0
         self.run_s = self.run_turn_own_s = 0.0  # the longest lateness, and turn, since a run was opened
+        self.run_piece = ("", 0.0)  # and the piece of work that took most processor time
         self._opening = False
         self.pieces: dict[str, Spread] = {}
         self._recent: deque[list[float]] = deque(maxlen=RECENT_SPANS)  # [begin, longest]
@@ -153,15 +154,17 @@ class StallGauge:
     def timed(self, name: str, call: Callable[P, R]) -> Callable[P, R]:
         """The same call, its time counted under this name."""
         spread = self.pieces.setdefault(name, Spread()) if len(self.pieces) < PIECES_MAX else Spread()
-        clock = time.perf_counter
+        clock, processor = time.perf_counter, time.thread_time
 
         @wraps(call)
         def measured(*args: P.args, **kwargs: P.kwargs) -> R:
-            begun = clock()
+            begun, used = clock(), processor()
             try:
                 return call(*args, **kwargs)
             finally:
                 spread.add(clock() - begun)
+                if (used := processor() - used) > self.run_piece[1] and not self._opening:
+                    self.run_piece = (name, used)
         return measured
 
     # ------------------------------------------------------------ telling
@@ -169,15 +172,16 @@ class StallGauge:
     def run_opened(self) -> None:
         """A run begins: its own worst stall counts from here; the turn that opens it is not yet the run's."""
         self.run_s = self.run_turn_own_s = 0.0
+        self.run_piece = ("", 0.0)
         self._opening = True
 
     def note(self) -> dict[str, Any]:
         """What a run's record keeps, in seconds."""
         view = self.view(float("inf"))
         return {"run_s": self.run_s, "run_turn_own_s": self.run_turn_own_s, "longest_s": view.longest_s,
-                "p999_s": view.p999_s, "own_s": view.own_s,
-                "turn_s": view.turn_s, "turn_own_s": view.turn_own_s, "piece": view.piece,
-                "piece_s": view.piece_s, "beats": self.late.count}
+                "p999_s": view.p999_s, "own_s": view.own_s, "turn_s": view.turn_s, "turn_own_s": view.turn_own_s,
+                "piece": view.piece, "piece_s": view.piece_s, "run_piece": view.run_piece,
+                "run_piece_own_s": view.run_piece_own_s, "beats": self.late.count}
 
     def view(self, now_s: float) -> LoopView:
         """What is shown; made anew at most once a second, so that watchers are not told of every microsecond."""
@@ -188,7 +192,8 @@ class StallGauge:
                         p999_s=round(self.late.quantile(0.999), 5), own_s=round(self.own_s, 5),
                         run_s=round(self.run_s, 5), turn_s=round(self.turn_s, 5),
                         turn_own_s=round(self.turn_processor_s, 5), run_turn_own_s=round(self.run_turn_own_s, 5),
-                        piece=piece, piece_s=round(spread.longest_s, 5),
+                        piece=piece, piece_s=round(spread.longest_s, 5), run_piece=self.run_piece[0],
+                        run_piece_own_s=round(self.run_piece[1], 6),
                         read_s=round(self.pieces[READ].quantile(0.5), 7) if READ in self.pieces else 0.0)
         self._view = (now_s, view)
         return view

@@ -8,14 +8,13 @@ from hvhost.speed.setting import Setting
 from hvhost.speed.standing import Seen
 from tests.speed.shape import check
 
-LOOP = {"longest_s": 0.09, "p999_s": 0.004, "own_s": 0.006, "run_turn_own_s": 0.001, "turn_own_s": 0.008,
-        "piece": "request", "piece_s": 0.01}
+LOOP = {"longest_s": 0.09, "run_s": 0.02, "p999_s": 0.004, "own_s": 0.006, "run_turn_own_s": 0.002, "turn_own_s": 0.008,
+        "run_piece": "snapshot", "run_piece_own_s": 0.001, "read_s": 0.0001}
 
 
 def test_a_loaded_daemon_is_watched(setting: Setting, monkeypatch: pytest.MonkeyPatch) -> None:
     """Everything is started, energised, watched for a second and ended; each budget has its lines."""
     monkeypatch.setattr(lasting, "SETTLE_S", 0.1)
-    monkeypatch.setattr(lasting, "CALLS", 3)
     lines = lasting.measure(setting)
     check(lines, "B4", "B5", "B6")
     assert [line.budget for line in lines] == ["B4", "B4", "B4", "B5", "B6", "B6", "B6"]
@@ -25,12 +24,12 @@ def test_a_loaded_daemon_is_watched(setting: Setting, monkeypatch: pytest.Monkey
 def test_a_machine_that_makes_a_bare_loop_wait_is_not_the_daemons_fault(bare_s: float, judged: bool) -> None:
     """The tail is judged where a bare loop's is better; the own part always, whatever the whole stall was."""
     watched = Watched(seen=[], loop=LOOP, bare={"longest_s": 0.08, "p999_s": bare_s}, ends=["the MCU is silent"])
-    tail, own, turn = lasting._stalls(watched, 100e-6, "an hour")
+    tail, own, piece = lasting._stalls(watched, "an hour")
     assert tail.judged is judged
     assert own.measured == pytest.approx(6.0)
     assert "the whole of it 90.0 ms" in own.note
     assert "the MCU is silent" in own.note
-    assert turn.measured == pytest.approx(10.0)
+    assert piece.measured == pytest.approx(10.0)
 
 
 def test_memory_that_grows_is_seen() -> None:
