@@ -4,8 +4,8 @@ The daemon's own gauge says how late its loop was; a bare loop in a process of i
 machine makes any loop wait.  So the longest stall is judged by the part that the daemon can have caused (its processor
 time since the beat before, which bounds it from above), and shown whole beside the bare loop's.  Work that holds the
 interpreter is judged by the processor time of the longest piece of it while a run is open, beside the median of a read
-in the same daemon under the same load.  A read with the protective path in it is what a trip is and less, so that is the
-stricter side; the same callback in a quiet process, its caches warm, costs half of it.
+in the same daemon under the same load.  A read with the protective path in it is what a trip is and less, so that is
+the stricter side; the same callback in a quiet process, its caches warm, costs half of it.
 """
 
 import time
@@ -83,8 +83,8 @@ def _why(shot: dict[str, Any]) -> str:
 
 def _stalls(watched: Watched, long: str) -> list[Line]:
     loop, bare = watched.loop, watched.bare
-    beside = (f"the whole of it {1e3 * loop['longest_s']:.1f} ms, in the run {1e3 * loop['run_s']:.1f} ms; a bare loop beside it: longest "
-              f"{1e3 * bare['longest_s']:.1f} ms, p99.9 {1e3 * bare['p999_s']:.1f} ms")
+    beside = (f"the whole of it {1e3 * loop['longest_s']:.1f} ms, in the run {1e3 * loop['run_s']:.1f} ms; a bare loop "
+              f"beside it: longest {1e3 * bare['longest_s']:.1f} ms, p99.9 {1e3 * bare['p999_s']:.1f} ms")
     ended = f"; runs that ended meanwhile: {' | '.join(watched.ends)}" if watched.ends else ""
     machine = bare["p999_s"] >= 0.02
     return [
@@ -96,8 +96,8 @@ def _stalls(watched: Watched, long: str) -> list[Line]:
         Line(budget="B4", what="longest piece of work while a run is open, processor time",
              measured=loop["run_piece_own_s"] / loop["read_s"], unit="x", bound=20.0, aim=10.0,
              against="the median of a read, the protective path in it, in the same daemon",
-             note=f"{loop['run_piece']}, {1e3 * loop['run_piece_own_s']:.2f} ms, against {1e6 * loop['read_s']:.0f} µs; a "
-                  f"whole turn of the loop {1e3 * loop['run_turn_own_s']:.2f} ms; the turn that opened the run, with "
+             note=f"{loop['run_piece']}, {1e3 * loop['run_piece_own_s']:.2f} ms, against {1e6 * loop['read_s']:.0f} µs; "
+                  f"a whole turn of the loop {1e3 * loop['run_turn_own_s']:.2f} ms; the turn that opened the run, with "
                   f"nothing energised, {1e3 * loop['turn_own_s']:.1f} ms"),
     ]
 
