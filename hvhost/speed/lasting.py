@@ -96,7 +96,7 @@ def _stalls(watched: Watched, long: str) -> list[Line]:
         Line(budget="B4", what="longest piece of work while a run is open, processor time",
              measured=loop["run_piece_own_s"] / loop["read_s"], unit="x", bound=20.0, aim=10.0,
              against="the median of a read, the protective path in it, in the same daemon",
-             note=f"{loop['run_piece']}, {1e3 * loop['run_piece_own_s']:.2f} ms, against {1e6 * loop['read_s']:.0f} µs; "
+             note=f"{loop['run_piece']} {1e3 * loop['run_piece_own_s']:.2f} ms, against {1e6 * loop['read_s']:.0f} µs; "
                   f"a whole turn of the loop {1e3 * loop['run_turn_own_s']:.2f} ms; the turn that opened the run, with "
                   f"nothing energised, {1e3 * loop['turn_own_s']:.1f} ms"),
     ]
