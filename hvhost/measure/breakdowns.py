@@ -10,6 +10,7 @@ import numpy as np
 
 from hvhost.measure.uncertainty import Value, scale_u
 from hvhost.record.data import RunData
+from hvhost.record.entries import Json
 from hvhost.wire.frames import McuEvent
 from hvhost.wire.vocabulary import Cause, EventKind, HostRule
 
@@ -60,20 +61,27 @@ def _seen(run: RunData) -> set[tuple[int, str, int]]:
     found: set[tuple[int, str, int]] = set()
     if not run.rows:
         return found
-    told = {int(note.get("arc", 0)): str(note.get("seen_by", "MCU")) for note in run.notes_of("arc")}
+    # a host's verdict that made the arc has no arc to merge with; one that came after the MCU's own has
+    merged = {event.a for event in run.events if event.kind == EventKind.MERGED}
+    judged = {int(note.get("index", 0)) & 0x7FFFFFFF for note in _host_verdicts(run)}
     for event in run.events:
         if event.kind == EventKind.PAUSING:
             if not _only_overcurrent(run, event):
-                found.add((run.row_of(event.b, 31), told.get(event.a, "MCU"), event.a))
+                by = "host" if event.a not in merged and event.b & 0x7FFFFFFF in judged else "MCU"
+                found.add((run.row_of(event.b, 31), by, event.a))
         elif event.kind == EventKind.CAUSE and event.a & DISCHARGES:
             found.add((run.row_of(event.b, 31), "MCU", 0))
         elif event.kind == EventKind.CAUSE and event.a == Cause.HOST_RULE and event.b == HostRule.BREAKDOWN:
             found.add((run.row_of_tick(event.tick), "host", 0))
-    for note in run.notes_of("verdict"):
-        if note.get("rule") == "breakdown" and note.get("severity") in ("trip", "arc"):
-            found.add((run.row_of(int(note.get("index", 0))), "host", 0))
+    for note in _host_verdicts(run):
+        found.add((run.row_of(int(note.get("index", 0))), "host", 0))
     last = run.rows - 1
     return {(min(row, last), who, arc) for row, who, arc in found}
+
+
+def _host_verdicts(run: RunData) -> list[Json]:
+    return [note for note in run.notes_of("verdict")
+            if note.get("rule") == "breakdown" and note.get("severity") in ("trip", "arc")]
 
 
 def _only_overcurrent(run: RunData, pausing: McuEvent) -> bool:
