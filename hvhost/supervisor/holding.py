@@ -13,6 +13,7 @@ from hvhost.supervisor.notes import Measured, Note, What
 
 ACCUMULATE = HoldClock.ACCUMULATE  # a name of this module: it is read for every block
 PEAK_BLOCKS = 6  # what stood before a collapse is the highest reading of so many blocks
+ADD_ANEW = 1000  # blocks between two additions of the whole window
 
 
 class Holding:
@@ -29,6 +30,10 @@ class Holding:
         self._pairs: deque[int] = deque()
         self._volts: deque[float] = deque()
         self._amps: deque[float] = deque()
+        # what the window holds in all: at ten thousand pairs a second adding it up anew for each block is most of the
+        # work; the totals are added anew now and then, so that rounding never gathers
+        self._total_pairs, self._added = 0, 0
+        self._total_volts = self._total_amps = 0.0
         self._spanned: Step | None = None  # the step whose window `_span` is, in ticks
         self._span = round(WINDOW_S * tick_hz)
         self._begun: int | None = None  # tick at which the clock started
@@ -45,9 +50,13 @@ class Holding:
         ticks, pairs = self._ticks, measured.pairs
         ticks.append(measured.tick)
         self._peaks.append(measured.volts_max)
+        volts, amps = measured.volts * pairs, measured.amps * pairs
         self._pairs.append(pairs)
-        self._volts.append(measured.volts * pairs)
-        self._amps.append(measured.amps * pairs)
+        self._volts.append(volts)
+        self._amps.append(amps)
+        self._total_pairs += pairs
+        self._total_volts += volts
+        self._total_amps += amps
         if step is not self._spanned:
             self._spanned = step
             self._span = round((step.window_s if isinstance(step, HoldStep) else WINDOW_S) * self._tick_hz)
@@ -56,14 +65,18 @@ class Holding:
             ticks.popleft()
             if len(self._peaks) > len(ticks):
                 self._peaks.popleft()
-            self._pairs.popleft()
-            self._volts.popleft()
-            self._amps.popleft()
+            self._total_pairs -= self._pairs.popleft()
+            self._total_volts -= self._volts.popleft()
+            self._total_amps -= self._amps.popleft()
+        self._added += 1
+        if self._added >= ADD_ANEW:
+            self._added = 0
+            self._total_volts, self._total_amps = sum(self._volts), sum(self._amps)
 
     def take(self, step: HoldStep, measured: Measured, origins: Mapping[str, int]) -> tuple[bool, str]:
         """Judge one block of a hold; returns whether the hold is done, and why it failed ('' where it has not)."""
-        pairs = sum(self._pairs)
-        volts, amps = sum(self._volts) / pairs, sum(self._amps) / pairs
+        pairs = self._total_pairs
+        volts, amps = self._total_volts / pairs, self._total_amps / pairs
         now = measured.tick + measured.ticks
         inside = abs(volts - step.v) <= step.tolerance * abs(step.v)
         if inside and self._begun is None:

@@ -149,6 +149,7 @@ class Link:
     def receive(self, data: bytes, now_s: float) -> list[LinkEvent]:
         """Take bytes from the port and return what they say, in order."""
         events = self._begin(now_s)
+        stops = self._stops
         for body in self._reader.feed(data):
             if isinstance(body, Garbled):
                 self._garbled += 1
@@ -156,8 +157,8 @@ class Link:
                 continue
             self._good += 1
             self._heard_s, self._silent = now_s, False
-            greeting = self.greeting
             if body[:2] == b"b ":
+                greeting = self.greeting
                 if greeting is None:
                     self._blocks_before += 1
                     continue
@@ -167,8 +168,8 @@ class Link:
                     events.append(Fault(str(fault)))
                     continue
                 events.append(BlockIn(block))
-                if self._stops.cut_state is CUT_ANSWERED and self._stops.look(block, self._fitted):
-                    events.append(CutConfirmed(self._stops.cut_number))
+                if stops.cut_state is CUT_ANSWERED and stops.look(block, self._fitted):
+                    events.append(CutConfirmed(stops.cut_number))
             else:
                 self._other(body, now_s, events)
         return events

@@ -1,10 +1,11 @@
 """The clock of a hold (IEC 60060-1: the duration counts while the mean is inside the tolerance)."""
 
+import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
 from hvhost.plan.program import HoldClock, HoldStep, WhenOut
-from hvhost.supervisor.holding import Holding
+from hvhost.supervisor.holding import ADD_ANEW, Holding
 from hvhost.supervisor.notes import Measured, Note, What
 from tests.supervisor.build import BLOCK, HZ, hold
 
@@ -110,3 +111,17 @@ def test_the_peak_is_that_of_the_last_blocks() -> None:
     """What stood before a collapse, not what stood a second ago."""
     clock = Clock(hold(1000.0, 50.0, window_s=2.0, when_out=WhenOut.RESTART)).see(1500.0, 0.5).see(1000.0, 1.0)
     assert clock.holding.peak_v == 1000.0
+
+
+def test_running_totals_equal_the_whole_window_added_anew() -> None:
+    """Over thousands of blocks of changing size the mean is that of the window, to rounding."""
+    holding = Holding(HZ, [])
+    step = hold(1000.0, 1e6)
+    for k in range(3 * ADD_ANEW + 7):
+        pairs = 8 + k % 25
+        holding.observe(Measured(index=k, tick=k * 320, ticks=320, pairs=pairs, volts=1000.0 + k % 7 * 0.1,
+                                 amps=1e-6 * (k % 11), volts_max=1001.0), step)
+        if k % 500 == 0:
+            assert holding._total_pairs == sum(holding._pairs)
+            assert holding._total_volts == pytest.approx(sum(holding._volts), rel=1e-12)
+            assert holding._total_amps == pytest.approx(sum(holding._amps), rel=1e-9, abs=1e-15)
