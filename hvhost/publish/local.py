@@ -32,10 +32,11 @@ Handle = Callable[[str, dict[str, Any], Peer], Any]
 # Changes that a watcher is told at once, whatever rate it asked for.
 URGENT = ("link", "permission", "latched", "voltage", "stop", "pause_s", "arm", "warning_s")
 RATE_MOST_HZ = 20.0
-TOLD_A_TURN = 8  # clients: half a millisecond; with fifty of them bytes from the port would wait for all
+TOLD_A_TURN = 3  # clients: the first also has the texts made; with fifty in one turn bytes from the port would wait
 TREND_EVERY_S = 1.0  # the one large field: a column of a wide plot stands for a second and more
 CLOSING_TURNS = 6  # turns of the loop in which an accepted transport opens, or an aborted one closes
 FIELDS = tuple(one.name for one in fields(Snapshot))
+POINTS = frozenset(("trend", "recent"))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -99,7 +100,8 @@ class LocalServer:
         self._latest = snapshot
         if self.readings is not None:
             self._dropped += self.readings.spread()
-        self._tell(snapshot, tuple(self._connections.values()))
+        if self._connections:
+            asyncio.get_running_loop().call_soon(self._tell, snapshot, tuple(self._connections.values()))
 
     def _tell(self, snapshot: Snapshot, connections: "tuple[_Connection, ...]") -> None:
         for connection in connections[:TOLD_A_TURN]:
@@ -315,8 +317,8 @@ class _FieldTexts:
         if known is not None and known[0] is value:
             return known[1]
         try:
-            # the trend is plain tuples of floats and by far the largest field: no need to walk it twice
-            text = json.dumps(value if name == "trend" else plain(value), allow_nan=False, separators=(",", ":"))
+            # points of plots are plain tuples of floats and by far the largest fields: no need to walk them twice
+            text = json.dumps(value if name in POINTS else plain(value), allow_nan=False, separators=(",", ":"))
         except ValueError:
             text = json.dumps(plain(value), allow_nan=False, separators=(",", ":"))
         self._texts[name] = (value, text)
