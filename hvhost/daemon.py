@@ -83,6 +83,7 @@ class Daemon:
         self._offer = gauge.timed("offer", lambda offers: next(offers, ""))
         self._read = gauge.timed("read", self._bytes)
         self._tick = gauge.timed("timer", self._time_passed)
+        self.server.tell = gauge.timed("tell", self.server.tell)
         self.publisher.add(self.server)
         self.ready = asyncio.Event()
         self._port: DescriptorPort | None = None

@@ -69,6 +69,7 @@ class LocalServer:
         self._number = self._dropped = self._faults = 0
         self._latest: Snapshot | None = None
         self._texts = _FieldTexts()
+        self.tell: Callable[[Snapshot, tuple[_Connection, ...]], None] = self._tell  # whoever times it may wrap it
         self._listening: ListeningSocket | None = None
         self._server: asyncio.Server | None = None
 
@@ -101,14 +102,14 @@ class LocalServer:
         if self.readings is not None:
             self._dropped += self.readings.spread()
         if self._connections:
-            asyncio.get_running_loop().call_soon(self._tell, snapshot, tuple(self._connections.values()))
+            asyncio.get_running_loop().call_soon(self.tell, snapshot, tuple(self._connections.values()))
 
     def _tell(self, snapshot: Snapshot, connections: "tuple[_Connection, ...]") -> None:
         for connection in connections[:TOLD_A_TURN]:
             connection.notify(snapshot, self._texts)
             connection.drain()
         if rest := connections[TOLD_A_TURN:]:
-            asyncio.get_running_loop().call_soon(self._tell, snapshot, rest)
+            asyncio.get_running_loop().call_soon(self.tell, snapshot, rest)
 
     def view(self) -> OutletView:
         """Return the notifications dropped, the faults met and the clients connected."""
