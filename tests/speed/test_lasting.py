@@ -17,7 +17,7 @@ def test_a_loaded_daemon_is_watched(setting: Setting, monkeypatch: pytest.Monkey
     monkeypatch.setattr(lasting, "SETTLE_S", 0.1)
     lines = lasting.measure(setting)
     check(lines, "B4", "B5", "B6")
-    assert [line.budget for line in lines] == ["B4", "B4", "B4", "B5", "B6", "B6", "B6"]
+    assert [line.budget for line in lines] == ["B4", "B4", "B4", "B4", "B5", "B6", "B6", "B6"]
 
 
 @pytest.mark.parametrize(("bare_s", "judged"), [(0.004, True), (0.03, False)])
@@ -25,12 +25,14 @@ def test_a_machine_that_makes_a_bare_loop_wait_is_not_the_daemons_fault(bare_s: 
     """The tail is judged where a bare loop's is better; the own part always, whatever the whole stall was."""
     bare = {"longest_s": 0.08, "p999_s": bare_s, "swelling": 2.0}
     watched = Watched(seen=[], loop=LOOP, bare=bare, ends=["the MCU is silent"])
-    tail, own, piece = lasting._stalls(watched, "an hour")
+    tail, own, piece, whole = lasting._stalls(watched, "an hour")
     assert tail.judged is judged
     assert own.measured == pytest.approx(6.0)
     assert "the whole of it 90.0 ms" in own.note
     assert "the MCU is silent" in own.note
     assert piece.measured == pytest.approx(5.0)
+    assert whole.measured == pytest.approx(10.0)
+    assert not whole.judged
 
 
 def test_memory_that_grows_is_seen() -> None:
