@@ -105,8 +105,8 @@ def _stalls(watched: Watched, long: str) -> list[Line]:
 
 def _piece(watched: Watched) -> str:
     loop = {name: 1e3 * value if isinstance(value, float) else value for name, value in watched.loop.items()}
-    return (f"{loop['run_piece']} {loop['run_piece_own_s']:.2f} ms against {loop['read_s']:.3f} ms; a whole turn of the "
-            f"loop {loop['run_turn_own_s']:.2f} ms; the turn that opened the run, with nothing energised, "
+    return (f"{loop['run_piece']} {loop['run_piece_own_s']:.2f} ms against {loop['read_s']:.3f} ms; a whole turn of "
+            f"the loop {loop['run_turn_own_s']:.2f} ms; the turn that opened the run, with nothing energised, "
             f"{loop['turn_own_s']:.1f} ms")
 
 
