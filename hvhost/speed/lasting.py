@@ -6,7 +6,7 @@ time since the beat before, which bounds it from above), and shown whole beside 
 interpreter is judged by the processor time of the longest piece of it while a run is open, beside the median of a read
 in the same daemon under the same load.  A read with the protective path in it is what a trip is and less, so that is
 the stricter side.  One and the same work takes several times its median at worst on a machine that is shared, also by
-processor time.  By how much is measured beside it and shown, but the bound is held against the piece as it was measured.
+processor time.  By how much is measured beside it and shown, but the bound is held against the piece as measured.
 """
 
 import time
@@ -99,7 +99,7 @@ def _stalls(watched: Watched, long: str) -> list[Line]:
         Line(budget="B4", what="longest piece of work in a run", measured=ratio, unit="x", bound=20.0, aim=10.0,
              against=READ, note=_piece(watched)),
         Line(budget="B4", what="the same less the swelling of a fixed work", measured=ratio / swelling, unit="x",
-             bound=20.0, against=READ, judged=False, note=f"it swelled {swelling:.1f} times at worst beside the daemon"),
+             bound=20.0, against=READ, judged=False, note=f"it swelled {swelling:.1f} times at worst beside it"),
     ]
 
 
