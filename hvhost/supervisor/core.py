@@ -5,14 +5,13 @@ cut before anything else is looked at.  The first half of `_block` is the protec
 everything after the yield - journal, runner, discharge, screens' figures - follows it.  Nothing here waits, logs to
 a file or reads a clock; the same core runs on a serial port, under a virtual clock, and on a recording.
 
-What belongs together lives beside this: `hearing` (events and answers), `linking` (greeting and losing an MCU),
-`arming` and `driving` (a run), `moving` and `settling` (the two tables), `stopping` (decided stops), `commands` (what
-people ask).
+What belongs together lives beside this: `following` (judged blocks), `hearing` (events and answers), `linking`
+(greeting and losing an MCU), `arming` and `driving` (a run), `moving` and `settling` (the two tables), `stopping`
+(decided stops), `commands` (what people ask).
 """
 
 from collections import deque
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import replace
 from typing import Any
 
 from hvhost.bench.model import Bench
@@ -20,7 +19,7 @@ from hvhost.guard.guard import Guard
 from hvhost.guard.verdicts import Severity, Verdict
 from hvhost.samples.assembler import Assembler
 from hvhost.samples.blocks import SampleBlock
-from hvhost.supervisor import arming, commands, driving, hearing, linking, moving, settling, stopping
+from hvhost.supervisor import commands, following, hearing, linking, moving, settling, stopping
 from hvhost.supervisor.aftermath import AftermathReader
 from hvhost.supervisor.catchup import EventBook
 from hvhost.supervisor.discharge import Chain, Discharge
@@ -29,8 +28,6 @@ from hvhost.supervisor.notes import Measured
 from hvhost.supervisor.runs import ActiveRun, Outcome, Stage, rule_word
 from hvhost.supervisor.seat import Seat
 from hvhost.supervisor.states import (
-    LIVE,
-    STANDING,
     LinkState,
     Move,
     Permission,
@@ -47,7 +44,6 @@ from hvhost.words.findings import Finding
 LOOK_S = 0.25  # while anything is permitted, time alone steps the core at least this often
 ARCS_KEPT = 16  # verdicts of breakdown whose sample is remembered, to tell who saw an arc
 FRESH_KEPT = 512  # judged blocks that nobody has looked at yet: more than one read can hold
-TOGETHER_MAX = 8  # blocks of one read that are followed as one: a hold's clock looks at least this often
 WRAP, HALF = 1 << 32, 1 << 31
 # members by names of this module: reading one through its class costs as much as a call, and here it is every block
 LOST, PAUSING = LinkState.LOST, int(McuState.PAUSING)
@@ -89,18 +85,19 @@ class Core(Teller):
         self.recorder_ready = True
         self.interlock_opened = True  # since the last run
         self.block_s = self.awake_s = self._stepped_s = now_s
+        self.fault = ""  # the last fault of ours that was told
         self.stop_decided_s: float | None = None  # of a cut that is not confirmed
         self.warning_ends_tick: int | None = None
         self.arm_open_s: float | None = None
         self.block_span_s = 0.0
         self.arcs_judged: deque[int] = deque(maxlen=ARCS_KEPT)  # sample indices, low 31 bits
         self.last_tick: int | None = None  # of the last block, as the wire counts
-        self._t_s = 0.0  # ticks passed since the greeting, in seconds; runs on through wraps and runs
-        self._judged: list[SampleBlock] = []  # and not followed yet; empty between two reads
-        self._v_gain = abs(bench.voltage.monitor.gain)
-        self._i_gain = abs(bench.current.monitor.gain)
-        self._v_zero = self._i_zero = 0.0
-        self._tells_ground = bool(bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH))
+        self.t_s = 0.0  # ticks passed since the greeting, in seconds; runs on through wraps and runs
+        self.judged: list[SampleBlock] = []  # and not followed yet; empty between two reads
+        self.v_gain = abs(bench.voltage.monitor.gain)
+        self.i_gain = abs(bench.current.monitor.gain)
+        self.v_zero = self.i_zero = 0.0
+        self.tells_ground = bool(bench.fitted & (Fitted.GROUND_STICK | Fitted.GROUND_SWITCH))
         self.settled: tuple[object, ...] = ()  # what the second table looked at when it last asked for nothing
         self.discharge = Discharge(Chain(
             touch_v=bench.touch_v, bleed_s=bench.bleed_s, bleeds=bench.bleeds,
@@ -122,7 +119,13 @@ class Core(Teller):
         linking.lose(self, now_s, f"port lost: {reason}")
 
     def receive(self, data: bytes, now_s: float) -> Iterator[bytes]:
-        """Take bytes; yield what to write, each piece as soon as it is due."""
+        """Take bytes; yield what to write, each piece as soon as it is due.  A fault of ours on the way cuts."""
+        try:
+            yield from self._receive(data, now_s)
+        except Exception as error:  # a core that cannot follow must not keep a bench energised by renewing its lease
+            yield self._failed(error, now_s)
+
+    def _receive(self, data: bytes, now_s: float) -> Iterator[bytes]:
         link = self.link
         if link is None:
             return
@@ -133,13 +136,19 @@ class Core(Teller):
             elif type(event) is GarbledIn:
                 hearing.hear(self, event, now_s)
             else:
-                yield from self._catch_up(now_s)
+                yield from following.catch_up(self, now_s)
                 yield from self._hear(event, now_s)
-        yield from self._catch_up(now_s)
+        yield from following.catch_up(self, now_s)
 
     def timer(self, now_s: float) -> bytes:
-        """Step by time alone; return what to write."""
+        """Step by time alone; return what to write.  A fault of ours on the way cuts."""
         self.journal.timer(now_s)
+        try:
+            return self._timer(now_s)
+        except Exception as error:
+            return self._failed(error, now_s)
+
+    def _timer(self, now_s: float) -> bytes:
         link = self.link
         if link is None:
             return b""
@@ -155,6 +164,17 @@ class Core(Teller):
             self._stop_by(verdicts, now_s)
             self._tell(verdicts, now_s)
         self.settle(now_s)
+        return self.take_output(now_s)
+
+    def _failed(self, error: Exception, now_s: float) -> bytes:
+        """A fault of ours behind the judgement: cut whatever is permitted, say it once, go on judging."""
+        self.judged.clear()
+        text = f"a fault of this program: {type(error).__name__}: {error}"
+        if self.state.permission is not Permission.IDLE and not self.link_stopping:
+            stopping.cut_for(self, HostRule.ASSERTION, now_s, text)
+        if text != self.fault:
+            self.fault = text
+            self.say(now_s, "trip", text)
         return self.take_output(now_s)
 
     def deadline(self, now_s: float) -> float | None:
@@ -235,12 +255,16 @@ class Core(Teller):
         self.journal.block(now_s, block)
         if data:
             self.journal.sent(now_s, data)
-        if failed is not None:
-            stopping.cut_for(self, HostRule.ASSERTION, now_s, f"the guard failed: {type(failed).__name__}: {failed}")
-        self._judged.append(sample)
-        if verdicts or failed is not None or len(self._judged) >= TOGETHER_MAX:
+        if verdicts or failed is not None:
+            # the stop is out: what came before it is followed first, while the run still stands as it stood then
+            yield from following.catch_up(self, now_s)
+            if failed is not None:
+                stopping.cut_for(self, HostRule.ASSERTION, now_s,
+                                 f"the guard failed: {type(failed).__name__}: {failed}")
             self._tell(verdicts, now_s)
-            yield from self._catch_up(now_s)
+        self.judged.append(sample)
+        if verdicts or failed is not None or len(self.judged) >= following.TOGETHER_MAX:
+            yield from following.catch_up(self, now_s)
 
     def _stop_by(self, verdicts: tuple[Verdict, ...], now_s: float) -> None:
         """Turn verdicts into stops on the wire, at once."""
@@ -279,90 +303,6 @@ class Core(Teller):
         data = self.take_output(now_s)
         if data:
             yield data
-
-    def _catch_up(self, now_s: float) -> Iterator[bytes]:
-        """Follow the blocks that were judged and not followed yet; those that tell the same go together."""
-        judged = self._judged
-        if not judged:
-            return
-        self._judged = []
-        first = judged[0]
-        if len(judged) > 1 and all(_alike(first, sample) for sample in judged):
-            self._follow(judged, now_s)
-        else:
-            for sample in judged:
-                self._follow([sample], now_s)
-        data = self.take_output(now_s)
-        if data:
-            yield data
-
-    def _follow(self, judged: list[SampleBlock], now_s: float) -> None:
-        """Everything about judged blocks that is not protective; several are whole, alike and in a row."""
-        if self.state.link is LOST:
-            return  # the tail of a session that is over; nothing of it is shown or believed
-        sample = judged[-1]
-        self._measure(judged, now_s)
-        hearing.inputs_changed(self, sample.inputs, sample.tick, now_s)
-        self.events.told(sample.event)
-        if sample.event >= self.events.last and (sample.state, self.state.permission) not in STANDING:
-            self.mcu_in(McuState(sample.state), sample.tick, now_s)
-        if self.events.waiting:
-            hearing.ask_events(self, now_s)
-        if sample.latched and not self.state.latched:
-            hearing.ask_causes(self)
-        self.aftermath.block()
-        run = self.run
-        if run is not None:
-            self._follow_run(run, sample, now_s)
-        self._voltage(now_s)
-        self.settle(now_s)
-
-    def _measure(self, judged: list[SampleBlock], now_s: float) -> None:
-        """Take the blocks' figures and their time; time goes by the wire's ticks, through wraps."""
-        sample, first = judged[-1], judged[0]
-        tick = sample.raw.tick
-        if self.last_tick is not None:
-            self._t_s += ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
-        self.last_tick = tick
-        self.sample, self.block_s, self.sampled, self.silent = sample, now_s, True, False
-        self.fresh.extend(judged)
-        pairs, v, i, top = 0, 0, 0, sample.extremes[1]
-        for block in judged:
-            pairs += len(block.v)
-            v_sum, i_sum = block.sums
-            v += v_sum
-            i += i_sum
-            high = block.extremes[1]
-            top = high if high > top else top
-        self.measured = Measured(
-            index=first.index, tick=first.tick, ticks=pairs * sample.sample_ticks, pairs=pairs,
-            volts=self._v_zero + self._v_gain * v / pairs, amps=self._i_zero + self._i_gain * i / pairs,
-            volts_max=self._v_zero + self._v_gain * top)
-
-    def _follow_run(self, run: ActiveRun, sample: SampleBlock, now_s: float) -> None:
-        assert self.measured is not None
-        stage = run.stage
-        if stage is ARMED:
-            arming.ask_again(self, run, now_s)
-        elif stage is RUN_LIVE and run.outcome is None:
-            if sample.state == PAUSING:
-                run.arcs = max(run.arcs, sample.arc)  # one that the host saw before the pause makes no event
-            run.runner.block(self.measured)
-            driving.drive(self, run, now_s)
-        elif stage is DISCHARGING:
-            arming.close_when_discharged(self, run, now_s)
-
-    def _voltage(self, now_s: float) -> None:
-        measured = self.measured
-        assert measured is not None
-        grounded = self._tells_ground and not self.inputs & GROUND_OPEN
-        live = self.state.permission in LIVE
-        # energised, nothing is claimed that an uncertainty would bound
-        u_volts = 0.0 if live else self.bench.voltage.monitor.u(max(0.0, measured.volts))
-        voltage = self.discharge.take(self._t_s, measured.volts, u_volts, live=live, grounded=grounded)
-        if voltage is not self.state.voltage:
-            self.state = replace(self.state, voltage=voltage)
-            self.note(now_s, "discharge", voltage=str(voltage), text=self.discharge.text)
 
     def mcu_in(self, mcu: McuState, tick: int, now_s: float) -> None:
         """The MCU reports this state, by an event or by a block at least as new as the last event."""
@@ -404,16 +344,16 @@ class Core(Teller):
 
     def zeros(self, v_code: int, i_code: int) -> None:
         """Take the raw codes above which the assembler counts, and so the SI value of its zero."""
-        self._v_zero = self.bench.voltage.monitor.value(v_code)
-        self._i_zero = self.bench.current.monitor.value(i_code)
+        self.v_zero = self.bench.voltage.monitor.value(v_code)
+        self.i_zero = self.bench.current.monitor.value(i_code)
 
     def volts(self, code: float) -> float:
         """Oriented volts of an oriented code above zero."""
-        return self._v_zero + self._v_gain * code
+        return self.v_zero + self.v_gain * code
 
     def amps(self, code: float) -> float:
         """Oriented amps of an oriented code above zero."""
-        return self._i_zero + self._i_gain * code
+        return self.i_zero + self.i_gain * code
 
     def index_at(self, tick: int) -> int:
         """The index of the first sample at or after an unwrapped tick, from the last block's beat."""
@@ -425,12 +365,5 @@ class Core(Teller):
     def time_at(self, tick: int) -> float:
         """Seconds of tick time at a tick, from the last block's."""
         if self.last_tick is None:
-            return self._t_s
-        return self._t_s + ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz
-
-
-def _alike(first: SampleBlock, sample: SampleBlock) -> bool:
-    """Whether a block tells nothing that the first one does not, and nothing is missing before it."""
-    a, b = first.raw, sample.raw
-    return (a.state == b.state and a.event == b.event and a.inputs == b.inputs and a.arc == b.arc
-            and a.latched == b.latched and not sample.flags and not first.flags)
+            return self.t_s
+        return self.t_s + ((tick - self.last_tick + HALF) % WRAP - HALF) / self.tick_hz

@@ -5,6 +5,7 @@ from dataclasses import replace
 from hypothesis import given
 from hypothesis import strategies as st
 
+from hvhost.supervisor import following
 from hvhost.supervisor.core import Core
 from hvhost.supervisor.states import LIVE, Permission
 from hvhost.wire.frames import Block, McuEvent
@@ -106,7 +107,7 @@ def test_a_block_of_a_lost_session_is_not_believed(lab: Lab) -> None:
     from hvhost.supervisor.linking import lose
 
     lose(lab.core, lab.now_s, "test")
-    lab.core._follow(replace(sample, index=sample.index + 32), lab.now_s)
+    following.follow(lab.core, [replace(sample, index=sample.index + 32)], lab.now_s)
     assert lab.core.sample is sample
 
 

@@ -76,5 +76,5 @@ def test_time_goes_on_through_the_wrap_of_the_ticks(lab: Lab) -> None:
     core = lab.core
     at = core.time_at(core.sample.tick)  # type: ignore[union-attr]
     assert core.last_tick is not None
-    core._t_s += ((core.last_tick + (1 << 32) - 5_000 - core.last_tick + (1 << 31)) % (1 << 32) - (1 << 31)) / 1e4
+    core.t_s += ((core.last_tick + (1 << 32) - 5_000 - core.last_tick + (1 << 31)) % (1 << 32) - (1 << 31)) / 1e4
     assert core.time_at(core.sample.tick) == pytest.approx(at - 0.5)  # type: ignore[union-attr]

@@ -60,4 +60,5 @@ def test_taking_an_empty_seat_forgets_the_last_holders_stop() -> None:
     seat.stopped("2", "b")
     seat.release("1", 1.0)
     seat.take("c", "3", 2.0)
-    seat.require("3")
+    assert seat.stopped_by == ""
+    seat.require("3")  # raises where a stop stands
