@@ -52,7 +52,7 @@ def test_a_stale_socket_is_replaced(tmp_path: Path) -> None:
     with socket.socket(socket.AF_UNIX) as dead:
         dead.bind(str(path))
     with ListeningSocket(str(path)), socket.socket(socket.AF_UNIX) as client:
-        client.connect(str(path))
+        assert client.connect_ex(str(path)) == 0
 
 
 def test_a_file_that_is_no_socket_is_left_alone(tmp_path: Path) -> None:

@@ -1,5 +1,6 @@
 """Manifest and revisions."""
 
+import os
 import shutil
 import subprocess
 from pathlib import Path
@@ -37,6 +38,7 @@ def test_sha256sum_agrees_with_the_manifest(folder: RunFolder) -> None:
     """Outside check: GNU coreutils' sha256sum reads the manifest and finds every file as it says."""
     tool = shutil.which("sha256sum")
     if tool is None:
+        assert not os.environ.get("HVHOST_CI"), "sha256sum is missing: install coreutils"
         pytest.skip("sha256sum is not on this machine")
     done = subprocess.run([tool, "--check", "--strict", folder.manifest.name], cwd=folder.path, capture_output=True,
                           text=True, check=False)

@@ -33,5 +33,6 @@ def test_an_example_that_changed_is_told(setting: Setting, tmp_path: Path) -> No
 
 def test_a_free_port_can_be_bound() -> None:
     """Nobody listens there."""
-    with socket.create_server(("127.0.0.1", loaded.free_port())):
-        pass
+    port = loaded.free_port()
+    with socket.create_server(("127.0.0.1", port)) as server:
+        assert server.getsockname()[1] == port

@@ -43,8 +43,9 @@ def fits(topic: topics.Topic, payload: dict[str, Any]) -> dict[str, Any]:
 def test_every_picture_gives_messages_that_fit(name: str) -> None:
     """State and telemetry of every state that a screen can show fit their schemas and are flat."""
     snapshot = SNAPSHOTS[name]
-    fits(topics.STATE, STAMP | state_of(snapshot))
-    fits(topics.TELEMETRY, STAMP | telemetry_of(snapshot, INTERVAL))
+    for topic, payload in ((topics.STATE, state_of(snapshot)), (topics.TELEMETRY, telemetry_of(snapshot, INTERVAL))):
+        arrived = fits(topic, STAMP | payload)
+        assert not [name for name, value in arrived.items() if isinstance(value, dict | list)], "flat"
 
 
 def test_a_bench_without_a_fresh_reading_is_unknown() -> None:

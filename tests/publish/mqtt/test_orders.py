@@ -134,4 +134,15 @@ def test_any_json_is_refused_or_fits_the_schema(value: Any) -> None:
 
 def test_the_schema_takes_what_the_parser_takes() -> None:
     """The printed schema and the parser agree on a good command."""
-    jsonschema.validate(json.loads(command(expires=time.time_ns())), CUT.schema())
+    good = json.loads(command(expires=time.time_ns()))
+    jsonschema.validate(good, CUT.schema())
+    assert parse(json.dumps(good).encode()) == good
+    for name in good:
+        less = {key: value for key, value in good.items() if key != name}
+        refused_by_schema = not jsonschema.Draft202012Validator(CUT.schema()).is_valid(less)
+        try:
+            parse(json.dumps(less).encode())
+        except CommandRefused:
+            assert refused_by_schema, name
+        else:
+            assert not refused_by_schema, name

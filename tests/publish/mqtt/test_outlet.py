@@ -435,6 +435,7 @@ def test_another_daemon_on_our_station_is_an_alarm(broker: Mosquitto, tmp_path: 
             async with two.serving():
                 two.offer()
                 await one.until(lambda: "station b1" in one.outlet.tell.standing)
+                assert one.outlet.tell.standing
     run(scene())
 
 
